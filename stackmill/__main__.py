@@ -1,0 +1,5 @@
+"""`python -m stackmill`."""
+
+from stackmill.cli.main import run
+
+run()

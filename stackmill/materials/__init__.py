@@ -1,0 +1,1 @@
+"""The materials library: what is known of each material, how well, and who says so."""

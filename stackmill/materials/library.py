@@ -1,0 +1,143 @@
+"""The library of materials: finds entries by name, parses only those asked for, lays a lab's own over them."""
+
+from __future__ import annotations
+
+import difflib
+from collections.abc import Mapping, Sequence
+from pathlib import Path
+from typing import Any, TypeVar
+
+from pydantic import BaseModel, ValidationError
+
+from stackmill.documents.marks import read_tree
+from stackmill.documents.material import AtomsFile, LabMaterial, LibraryEntry, SourcesFile
+from stackmill.errors import InputError, Place
+from stackmill.materials.lab import overlay
+from stackmill.materials.material import Atom, Material
+from stackmill.materials.reading import material_from_entry
+
+DATA = Path(__file__).parent / "data"
+_Model = TypeVar("_Model", bound=BaseModel)
+
+
+class UnknownMaterialError(InputError):
+    """No material of that name. near: the names most like it."""
+
+    def __init__(self, name: str, near: Sequence[str]) -> None:
+        listed = " or ".join(f"'{item}'" for item in near)
+        cure = f"did you mean {listed}?" if near else "`stackmill materials` lists the names"
+        super().__init__(f"no material is called '{name}'", cure=cure, key=name)
+        self.name = name
+        self.near = tuple(near)
+
+
+class Library:
+    """Materials by name or alias. `load` reads only the names; `get` parses the one entry asked for."""
+
+    def __init__(self, files: Mapping[str, Path], known: Mapping[str, str], folder: Path) -> None:
+        self._files = dict(files)
+        self._known = dict(known)
+        self._folder = folder
+        self._read: dict[str, Material] = {}
+        self._atoms: dict[str, Atom] | None = None
+        self._citations: dict[str, str] | None = None
+
+    @classmethod
+    def load(cls, overlays: Sequence[LabMaterial] = (), *, folder: Path = DATA) -> Library:
+        """The library in `folder` with a lab's materials over it, first to last.
+
+        Raises InputError when an overlay cannot be understood (unknown `like`, or neither like nor composition).
+        """
+        files: dict[str, Path] = {}
+        known: dict[str, str] = {}
+        for path in sorted(folder.glob("*.yaml")):
+            name, aliases = _head(path)
+            files[name] = path
+            known[name] = name
+            known.update(dict.fromkeys(aliases, name))
+        library = cls(files, known, folder)
+        for lab in overlays:
+            library._lay(lab)
+        return library
+
+    def names(self) -> tuple[str, ...]:
+        """The names of all materials, sorted."""
+        return tuple(sorted({*self._files, *self._read}, key=str.casefold))
+
+    def __contains__(self, name: object) -> bool:
+        return name in self._known
+
+    def near(self, name: str, most: int = 3) -> tuple[str, ...]:
+        """The names most like `name`, best first."""
+        folded = {key.casefold(): target for key, target in self._known.items()}
+        hits = difflib.get_close_matches(name.casefold(), list(folded), n=2 * most, cutoff=0.6)
+        return tuple(dict.fromkeys(folded[hit] for hit in hits))[:most]
+
+    def get(self, name: str) -> Material:
+        """The material of that name or alias. Raises UnknownMaterialError with the nearest names."""
+        if name not in self._known:
+            raise UnknownMaterialError(name, self.near(name))
+        name = self._known[name]
+        if name not in self._read:
+            entry = _read(LibraryEntry, self._files[name])
+            self._read[name] = material_from_entry(entry)
+        return self._read[name]
+
+    def atoms(self) -> Mapping[str, Atom]:
+        """Every element as a constituent, by symbol."""
+        if self._atoms is None:
+            table = _read(AtomsFile, self._folder / "tables" / "atoms.yaml").atoms
+            self._atoms = {
+                symbol: Atom(symbol, a.z, a.m_u, a.us_ev, a.q, a.w_ev, a.s, a.source, a.seen)
+                for symbol, a in table.items()
+            }
+        return self._atoms
+
+    def citation(self, key: str) -> str:
+        """The full citation behind a source key; the key itself for a lab's own file."""
+        if self._citations is None:
+            table = _read(SourcesFile, self._folder / "tables" / "sources.yaml").sources
+            self._citations = {name: source.citation for name, source in table.items()}
+        return self._citations.get(key, key)
+
+    def _lay(self, lab: LabMaterial) -> None:
+        base_name = lab.like if lab.like is not None else lab.name
+        base = self.get(base_name) if base_name in self._known else None
+        if base is None and lab.like is not None:
+            raise UnknownMaterialError(lab.like, self.near(lab.like))
+        if base is None and lab.composition is None:
+            raise UnknownMaterialError(lab.name, self.near(lab.name))
+        needs_atoms = lab.composition is not None
+        material = overlay(lab, base, self.atoms() if needs_atoms else {})
+        name = self._known.get(lab.name, lab.name) if lab.like is None else lab.name
+        self._read[name] = material
+        self._known[name] = name
+        self._known.update({alias: name for alias in lab.aliases})
+
+
+def _head(path: Path) -> tuple[str, tuple[str, ...]]:
+    """Name and aliases from the first two lines of an entry, without parsing the rest."""
+    with path.open(encoding="utf-8") as file:
+        first, second = file.readline(), file.readline()
+    if not first.startswith("name: ") or not second.startswith("aliases: ["):
+        raise InputError(
+            "a library entry begins with its name and its aliases",
+            cure="write `name: ...` in line 1 and `aliases: [...]` in line 2",
+            place=Place(str(path), 1, 1, first.rstrip()),
+        )
+    inside = second.split("[", 1)[1].rsplit("]", 1)[0]
+    return first[6:].strip(), tuple(alias.strip() for alias in inside.split(",") if alias.strip())
+
+
+def _read(model: type[_Model], path: Path) -> _Model:
+    tree = read_tree(path.read_bytes(), path.name)
+    try:
+        return model.model_validate(tree.plain())
+    except ValidationError as error:
+        first = error.errors()[0]
+        where: Any = first["loc"]
+        raise InputError(
+            f"{'.'.join(map(str, where))}: {first['msg']}",
+            cure="correct this entry of the library",
+            place=tree.place(tuple(where)),
+        ) from error

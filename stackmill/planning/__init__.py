@@ -1,0 +1,1 @@
+"""When to stop, which tilt, which recipe."""

@@ -1,0 +1,184 @@
+"""The stop table: when each layer is reached in every column, and the window in which to stop."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from stackmill.documents.recipe import Beam
+from stackmill.ensemble import DRAWS, SEED, Ensemble, run
+from stackmill.jobs import Job
+from stackmill.planning.shares import Share, variance_shares
+from stackmill.planning.windows import Window, find_window, quantiles
+from stackmill.slopes import shadow_multiple, slope_grid, speeds_of
+from stackmill.rates import angular_shape
+from stackmill.timing.flatness import SlopeSpeeds, flat_until
+
+Array = NDArray[np.float64]
+
+
+@dataclass(frozen=True)
+class Reach:
+    """One layer's top in one column: when the surface gets there, at best values, early and late.
+
+    Times in s on the clock, None where never; those of a later leg are counted from the moment its eye-stopped
+    step ends at best values. depth_nm is counted from the region's highest starting point, height_nm from
+    the substrate's top. present: whether the layer is there at all in this column. share: the column's area
+    share of its region. flat_ok: the column's centre is flat and lit until then.
+    """
+
+    region: str
+    column: str
+    layer: str
+    time_s: float | None
+    time_early_s: float | None
+    time_late_s: float | None
+    depth_nm: float
+    height_nm: float
+    step: str | None
+    flat_ok: bool
+    basis: str
+    present: bool
+    share: float
+    column_number: int
+    leg: int
+
+
+@dataclass(frozen=True)
+class StopTable:
+    """The answer of `stops`: rows, the goal's window (None without a goal), and what would narrow it most."""
+
+    ensemble: Ensemble
+    rows: tuple[Reach, ...]
+    window: Window | None
+    provisional: bool
+    shares: tuple[Share, ...]
+    confidence: float
+
+
+def stop_table(job: Job, *, draws: int = DRAWS, seed: int = SEED, jobs: int = 1) -> StopTable:
+    """Forecast a job by columns alone: every column falls as if flat and lit (`flat_ok` says if it is)."""
+    ensemble = run(job, draws=draws, seed=seed, jobs=jobs)
+    flat = _flat_until(ensemble)
+    window = find_window(ensemble, job.confidence) if job.goal else None
+    return StopTable(
+        ensemble=ensemble,
+        rows=tuple(_rows(ensemble, flat, job.confidence)),
+        window=window,
+        provisional=window is not None and _provisional(ensemble, window, flat),
+        shares=variance_shares(ensemble, window) if window else (),
+        confidence=job.confidence,
+    )
+
+
+def _flat_until(ensemble: Ensemble) -> list[Array]:
+    """For each region, the clock (C,) at which each column stops being flat and lit."""
+    job, best = ensemble.inputs.job, ensemble.best
+    speeds = _slope_speeds(ensemble)
+    return [
+        flat_until(
+            sloped=region.slope > 0,
+            distance_nm=region.edge_distance_nm,
+            columns=ensemble.best_ground.columns[r],
+            best=best,
+            region=r,
+            speeds=speeds,
+        )
+        for r, region in enumerate(job.column_map.regions)
+    ]
+
+
+def _slope_speeds(ensemble: Ensemble) -> list[SlopeSpeeds | None]:
+    """One for each step of the best fall, the last beam's once more for going on after the recipe's end."""
+    job, best = ensemble.inputs.job, ensemble.inputs.best()
+    speeds: list[SlopeSpeeds | None] = []
+    for i, step in enumerate(job.recipe.steps):
+        if not isinstance(step, Beam):
+            speeds.append(None)
+            continue
+        names = job.column_map.materials
+        shapes = {n: angular_shape(job.materials[n], energy_ev=step.energy, gas=job.mill.gas) for n in names}
+        flat = {name: float(best.rate_nm_per_s(i, name)[0]) for name in names}
+        speeds.append(
+            SlopeSpeeds(
+                slope_grid(),
+                speeds_of(shapes, flat, step),
+                shadow_multiple(step, job.mill.divergence),
+                any_slope=step.motion.kind != "rotating",
+            )
+        )
+    beams = [s for s in speeds if s is not None]
+    return speeds + ([beams[-1]] if beams else [None]) * (len(ensemble.best.spans) - len(speeds))
+
+
+def _rows(ensemble: Ensemble, flat: list[Array], confidence: float) -> list[Reach]:
+    job = ensemble.inputs.job
+    rows = []
+    for r, region in enumerate(job.column_map.regions):
+        best = ensemble.best_outcome.layer_s[r][..., 0]
+        leg, times = _from_leg(ensemble, ensemble.outcome.layer_s[r], best)
+        early, late = quantiles(times, ensemble.weights, [(1 - confidence) / 2, (1 + confidence) / 2])
+        highest = float(region.top_nm.max())
+        for c in range(len(region.area)):
+            count = int(region.segments[c])
+            for k, layer in enumerate(job.column_map.layers):
+                above = int(np.searchsorted(region.layer[c, :count], k))
+                height = float(region.top_nm[c] if above == 0 else region.floor_nm[c, above - 1])
+                time = float(best[c, k])
+                rows.append(
+                    Reach(
+                        region=region.name,
+                        column=region.label(c),
+                        layer=layer,
+                        time_s=_finite(time),
+                        time_early_s=_finite(float(early[c, k])),
+                        time_late_s=_finite(float(late[c, k])),
+                        depth_nm=highest - height,
+                        height_nm=height,
+                        step=step_at(ensemble, time),
+                        flat_ok=bool(time <= flat[r][c] or time == 0.0),
+                        basis="flat",
+                        present=bool((region.layer[c, :count] == k).any()),
+                        share=float(region.area[c]),
+                        column_number=c,
+                        leg=int(leg[c, k]),
+                    )
+                )
+    return rows
+
+
+def _from_leg(ensemble: Ensemble, times: Array, best: Array) -> tuple[NDArray[np.intp], Array]:
+    """The leg (...) in which each level is met at best values, and its times (..., D) counted from that leg."""
+    best_start = ensemble.best_outcome.leg_start_s[:, 0]
+    leg = np.sum(best[..., None] > best_start[1:], axis=-1)
+    shift = best_start[:, None] - ensemble.outcome.leg_start_s
+    return leg, times + shift[leg]
+
+
+def step_at(ensemble: Ensemble, time_s: float) -> str | None:
+    """The name of the step that is running (at best values) at a time on the clock; None at the end of time."""
+    if not np.isfinite(time_s):
+        return None
+    name = None
+    for span in ensemble.best.spans:
+        if span.start_s[0] <= time_s and (span.name or name is None):
+            name = span.name if span.end_s[0] > span.start_s[0] or name is None else name
+    return name
+
+
+def _finite(value: float) -> float | None:
+    return value if np.isfinite(value) else None
+
+
+def _provisional(ensemble: Ensemble, window: Window, flat: list[Array]) -> bool:
+    """Whether a column that decides the window stops being flat and lit before it does."""
+    best = ensemble.best_outcome
+    r, c = window.exposed_by
+    if best.exposed_s[0] > flat[r][c]:
+        return True
+    if window.lost_by is None:
+        return False
+    r, c = window.lost_by
+    return bool(best.lost_s[0] > flat[r][c])

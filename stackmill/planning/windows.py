@@ -1,0 +1,213 @@
+"""When to stop: the chance of every stop time, the window of good ones, and what ends it.
+
+A stop succeeds in a draw from the moment the goal is exposed until it, or something to keep, is lost. Stops are
+counted from the start of a leg: from the start of the run, or from the last time the eye stopped a step, for the
+stopwatch is started again there and what was uncertain before no longer matters.
+"""
+
+from __future__ import annotations
+
+from collections import Counter
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from stackmill.ensemble import Ensemble, Outcome
+
+Array = NDArray[np.float64]
+
+FIRST_LOOK_RISK = 0.05  # the first look comes no later than this chance of loss
+
+
+@dataclass(frozen=True)
+class ChanceCurve:
+    """The chance of a stop against time in one leg: chance[i] holds from time_s[i] until time_s[i + 1].
+
+    time_s (K,): s from the start of the leg, rising; chance (K,): shares 0..1; the last one holds for ever.
+    """
+
+    time_s: Array
+    chance: Array
+
+    def at(self, time_s: float) -> float:
+        """The chance of a stop at a time."""
+        k = int(np.searchsorted(self.time_s, time_s, side="right")) - 1
+        return float(self.chance[k]) if k >= 0 else 0.0
+
+
+@dataclass(frozen=True)
+class Window:
+    """When to stop. Times are on the clock at best values (s); see `leg` for where the stopwatch starts.
+
+    exposed_s, lost_s: ends of the window at `confidence`, None where there is none (lost_s is None too where
+    nothing is ever lost); stop_s: the stop with the greatest chance, None without a window; best_stop_s: that
+    stop in any case; chance: of stop_s; best_chance: the greatest there is; first_look_s: the last moment at
+    which the chance of loss is under 5 %; exposed_by, lost_by: the columns (region, column) that most often
+    decide, lost_keep: the number of the keep that does, -1 for the goal; left_standing: mean share of the
+    goal's area still covered at best_stop_s; leg: 0 from the start, n after the nth step stopped by eye;
+    leg_start_s: the clock at best values when the leg starts.
+    """
+
+    confidence: float
+    exposed_s: float | None
+    lost_s: float | None
+    stop_s: float | None
+    best_stop_s: float
+    chance: float | None
+    best_chance: float
+    first_look_s: float | None
+    exposed_by: tuple[int, int]
+    lost_by: tuple[int, int] | None
+    lost_keep: int
+    left_standing: float
+    leg: int
+    leg_start_s: float
+
+
+def success_spans(outcome: Outcome, leg: int) -> tuple[Array, Array]:
+    """From when and until when a stop succeeds in each draw (D,), in s from the start of a leg.
+
+    A leg that the eye ends holds later stops at its end: a success there lasts for ever. Draws in which no
+    stop of this leg succeeds get an empty span (inf, inf).
+    """
+    start = outcome.leg_start_s[leg]
+    last = leg + 1 == len(outcome.leg_start_s)
+    length = np.full(start.shape, np.inf) if last else outcome.leg_start_s[leg + 1] - start
+    begin = np.maximum(outcome.exposed_s - start, 0.0)
+    end = outcome.lost_s - start
+    end = np.where(end > length, np.inf, end)
+    empty = ~(begin < end) | (begin > length)
+    return np.where(empty, np.inf, begin), np.where(empty, np.inf, end)
+
+
+def chance_curve(begin_s: Array, end_s: Array, weights: Array) -> ChanceCurve:
+    """The share of draws, by weight, whose span [begin, end) holds a time. All (D,); exact at every time."""
+    times = np.concatenate([begin_s, end_s])
+    change = np.concatenate([weights, -weights])
+    met = np.isfinite(times)
+    times, change = times[met], change[met]
+    order = np.argsort(times, kind="stable")
+    time_s, first = np.unique(times[order], return_index=True)
+    running = np.cumsum(change[order])
+    after = np.append(first[1:], len(times)) - 1
+    return ChanceCurve(np.append(-np.inf, time_s), np.append(0.0, np.clip(running[after], 0.0, 1.0)))
+
+
+def find_window(ensemble: Ensemble, confidence: float) -> Window:
+    """The window of a job's goal in its most promising leg."""
+    outcome, weights = ensemble.outcome, ensemble.weights
+    curves = [chance_curve(*success_spans(outcome, leg), weights) for leg in range(len(outcome.leg_start_s))]
+    leg = max(range(len(curves)), key=lambda k: (float(curves[k].chance.max()), k))
+    curve = curves[leg]
+    stop = best_stop(curve)
+    ends = window_ends(curve, stop, confidence)
+    clock = float(ensemble.best_outcome.leg_start_s[leg][0])
+    chance = curve.at(stop)
+    lost_by, lost_keep = _lost_by(outcome, weights)
+    return Window(
+        confidence=confidence,
+        exposed_s=None if ends is None else clock + ends[0],
+        lost_s=None if ends is None or ends[1] is None else clock + ends[1],
+        stop_s=None if ends is None else clock + stop,
+        best_stop_s=clock + stop,
+        chance=None if ends is None else chance,
+        best_chance=chance,
+        first_look_s=_first_look(outcome, weights, leg, clock),
+        exposed_by=_exposed_by(outcome, weights),
+        lost_by=lost_by,
+        lost_keep=lost_keep,
+        left_standing=left_standing(outcome, weights, leg, stop),
+        leg=leg,
+        leg_start_s=clock,
+    )
+
+
+def best_stop(curve: ChanceCurve) -> float:
+    """The time of the greatest chance: the middle of the longest stretch that has it (its start, if endless)."""
+    best = float(curve.chance.max())
+    ends = np.append(curve.time_s[1:], np.inf)
+    stretches = [(start, end) for start, end in _runs(curve, ends, best - 1e-12) if np.isfinite(start)]
+    if not stretches:
+        return 0.0
+    start, end = max(stretches, key=lambda s: s[1] - s[0])
+    return float(start if np.isinf(end) else 0.5 * (start + end))
+
+
+def window_ends(curve: ChanceCurve, stop_s: float, confidence: float) -> tuple[float, float | None] | None:
+    """The stretch around a stop in which the chance is at least the confidence; None where there is none."""
+    ends = np.append(curve.time_s[1:], np.inf)
+    for start, end in _runs(curve, ends, confidence - 1e-12):
+        if start <= stop_s < end:
+            return float(start), None if np.isinf(end) else float(end)
+    return None
+
+
+def _runs(curve: ChanceCurve, ends: Array, least: float) -> list[tuple[float, float]]:
+    """Unbroken stretches in which the chance is at least `least`."""
+    good = np.concatenate([[False], curve.chance >= least, [False]])
+    starts = np.flatnonzero(good[1:-1] & ~good[:-2])
+    stops = np.flatnonzero(good[1:-1] & ~good[2:])
+    return [(float(curve.time_s[a]), float(ends[b])) for a, b in zip(starts, stops, strict=True)]
+
+
+def left_standing(outcome: Outcome, weights: Array, leg: int, stop_s: float) -> float:
+    """The mean share of the goal's area still covered when stopped at stop_s of a leg."""
+    start = outcome.leg_start_s[leg]
+    stop = start + stop_s
+    if leg + 1 < len(outcome.leg_start_s):
+        stop = np.minimum(stop, outcome.leg_start_s[leg + 1])
+    covered = outcome.upper_area @ (outcome.upper_s > stop * (1.0 + 1e-12)) / outcome.upper_area.sum()
+    return float(covered @ weights)
+
+
+def _first_look(outcome: Outcome, weights: Array, leg: int, clock_s: float) -> float | None:
+    """The last moment at which the chance of loss is under 5 %, None where it never gets there.
+
+    A loss before the leg began counts as a loss at its start: looking in this leg comes too late for it.
+    """
+    lost = np.maximum(outcome.lost_s - outcome.leg_start_s[leg], 0.0)
+    moment = weighted_quantile(lost, weights, FIRST_LOOK_RISK)
+    return clock_s + moment if np.isfinite(moment) else None
+
+
+def weighted_quantile(values: Array, weights: Array, share: float) -> float:
+    """The least value (of (D,)) at or under which lies at least this share of the weight."""
+    order = np.argsort(values)
+    total = np.cumsum(weights[order])
+    return float(values[order][np.searchsorted(total, share * total[-1] * (1.0 - 1e-12))])
+
+
+def _exposed_by(outcome: Outcome, weights: Array) -> tuple[int, int]:
+    """The wanted column that most often decides when the goal is exposed."""
+    deciding = np.argmax(outcome.upper_s == outcome.exposed_s, axis=0)
+    return outcome.wanted[_most(deciding, weights)]
+
+
+def _lost_by(outcome: Outcome, weights: Array) -> tuple[tuple[int, int] | None, int]:
+    """The column, and the number of the keep (-1: the goal), by which most often the window ends."""
+    lost = np.isfinite(outcome.lost_s)
+    if not lost.any():
+        return None, -1
+    keep, region, column = outcome.lost_at[_most(outcome.lost_by[lost], weights[lost])]
+    return (region, column), keep
+
+
+def _most(choices: NDArray[np.intp], weights: Array) -> int:
+    shares: Counter[int] = Counter()
+    for choice, weight in zip(choices.tolist(), weights.tolist(), strict=True):
+        shares[choice] += weight
+    return max(sorted(shares), key=lambda choice: shares[choice])
+
+
+def quantiles(times: Array, weights: Array, shares: Sequence[float]) -> list[Array]:
+    """For rows of draws (..., D): the least time at or under which lies each share of the weight (...)."""
+    order = np.argsort(times, axis=-1)
+    total = np.cumsum(weights[order], axis=-1)
+    found = []
+    for share in shares:
+        index = np.argmax(total >= share * (1.0 - 1e-12) * total[..., -1:], axis=-1)
+        pick = np.take_along_axis(order, index[..., None], axis=-1)
+        found.append(np.take_along_axis(times, pick, axis=-1)[..., 0])
+    return found

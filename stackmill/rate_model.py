@@ -1,0 +1,185 @@
+"""The rates of a job's recipe: one curve a step and material, and what is believed of its parameters.
+
+    rate = law(E, incidence + zero error) x exp(b + c + e u(E) + a g(incidence))
+
+c, e and a are one each for a material, b one for the mill; see materials/calibration.py. Doubly charged ions
+carry a share d of the current and mill as d/2 ions of twice the energy:
+rate = (1 - d) rate(E) + d/2 rate(2E), each as if all ions were singly charged.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from stackmill import rates
+from stackmill.documents.mill import Mill
+from stackmill.documents.recipe import Beam
+from stackmill.materials.calibration import RateBelief, RateEvidence, condition
+from stackmill.materials.material import Material, MeasuredRate
+
+Array = NDArray[np.float64]
+
+_NODES = 9  # Chebyshev nodes across the dial's error: ln rate is smooth there, 9 give about 1e-9
+_ZERO_ERROR_REACH_SD = 5.0
+_LEAST_REACH_DEG = 0.5
+_STEEPEST_DEG = 89.5
+_PER_MATERIAL = ("rate", "energy", "angle")
+
+
+@dataclass(frozen=True)
+class AngleCurve:
+    """ln of a milling rate (nm/s) near one setting of the dial, as a Chebyshev series in the zero error.
+
+    coefficients (9,); reach_deg: the series holds for zero errors up to this, and is clipped there.
+    """
+
+    coefficients: Array
+    reach_deg: float
+
+    def rate_nm_per_s(self, zero_error_deg: Array) -> Array:
+        """Milling rate (D,) in nm/s at zero errors (D,) in degrees."""
+        x = np.clip(zero_error_deg / self.reach_deg, -1.0, 1.0)
+        return np.exp(np.polynomial.chebyshev.chebval(x, self.coefficients))
+
+
+@dataclass(frozen=True)
+class BeamRates:
+    """The rate curves of one beam step.
+
+    single, double: material name -> curve, as if all current were carried by singly charged ions of the
+    step's energy and of twice that energy; basis: material name -> (u, g), the energy and angle terms.
+    """
+
+    single: Mapping[str, AngleCurve]
+    double: Mapping[str, AngleCurve]
+    basis: Mapping[str, tuple[float, float]]
+
+
+@dataclass(frozen=True)
+class RateModel:
+    """All beam steps' curves (None for steps without a beam), with the belief about their parameters.
+
+    The belief's parameters are `current density` (ln), `dial zero error` (deg), then for each material
+    `NAME: rate`, `NAME: energy`, `NAME: angle` (ln).
+    """
+
+    materials: tuple[str, ...]
+    steps: tuple[BeamRates | None, ...]
+    belief: RateBelief
+    evidence: tuple[RateEvidence, ...]
+
+    def rate_nm_per_s(self, step: int, material: str, *, parameters: Array, doubly_charged: Array) -> Array:
+        """Milling rate (D,) in nm/s of a material in a beam step, for parameters (P, D) and charge shares (D,)."""
+        beam = self.steps[step]
+        assert beam is not None
+        single = beam.single[material].rate_nm_per_s(parameters[1])
+        double = beam.double[material].rate_nm_per_s(parameters[1])
+        u, g = beam.basis[material]
+        k = 2 + len(_PER_MATERIAL) * self.materials.index(material)
+        ln_factor = parameters[0] + parameters[k] + u * parameters[k + 1] + g * parameters[k + 2]
+        return ((1.0 - doubly_charged) * single + 0.5 * doubly_charged * double) * np.exp(ln_factor)
+
+
+def rate_model(mill: Mill, steps: Sequence[object], materials: Mapping[str, Material]) -> RateModel:
+    """The rate model of a recipe on a mill, with every measured rate of the materials taken in."""
+    names = tuple(materials)
+    beams = tuple(_beam_rates(mill, step, materials) if isinstance(step, Beam) else None for step in steps)
+    prior = _prior(mill, materials)
+    evidence = tuple(
+        _evidence(mill, material, names, measured)
+        for material in materials.values()
+        for measured in material.measured_rate
+    )
+    return RateModel(names, beams, condition(prior, evidence), evidence)
+
+
+def parameter_names(materials: Sequence[str]) -> tuple[str, ...]:
+    """The names of the rate model's parameters, in their order."""
+    each = tuple(f"{name}: {what}" for name in materials for what in _PER_MATERIAL)
+    return ("current density", "dial zero error", *each)
+
+
+def angle_term(incidence_deg: float) -> float:
+    """How the angular unknown enters ln rate at an incidence in degrees: 0 straight down, 1 at 60 degrees."""
+    return float(np.sin(np.radians(incidence_deg)) ** 2 / 0.75)
+
+
+def energy_term(material: Material, energy_ev: float) -> float:
+    """How far (in ln E) an energy in eV lies outside the material's measured range: 0 inside, signed outside."""
+    low, high = material.energy_range_ev
+    ln_energy = float(np.log(energy_ev))
+    return min(ln_energy - float(np.log(low)), 0.0) + max(ln_energy - float(np.log(high)), 0.0)
+
+
+def _prior(mill: Mill, materials: Mapping[str, Material]) -> RateBelief:
+    sd = [mill.current_density.rel_sd, mill.stage.zero_error.sd]
+    for material in materials.values():
+        sd += [material.rel_sd, material.energy_sd_per_efold, material.angular_sd]
+    return RateBelief(parameter_names(tuple(materials)), np.zeros(len(sd)), np.diag(np.square(sd)))
+
+
+def _beam_rates(mill: Mill, step: Beam, materials: Mapping[str, Material]) -> BeamRates:
+    current = (step.current_density or mill.current_density).value
+    curves = [
+        {name: _curve(mill, step, material, energy_ev, current) for name, material in materials.items()}
+        for energy_ev in (step.energy, 2.0 * step.energy)
+    ]
+    basis = {
+        name: (energy_term(material, step.energy), angle_term(step.incidence))
+        for name, material in materials.items()
+    }
+    return BeamRates(curves[0], curves[1], basis)
+
+
+def _curve(mill: Mill, step: Beam, material: Material, energy_ev: float, current: float) -> AngleCurve:
+    reach = max(_ZERO_ERROR_REACH_SD * mill.stage.zero_error.sd, _LEAST_REACH_DEG)
+    angle = np.pi * (np.arange(_NODES) + 0.5) / _NODES
+    incidence_deg = np.clip(np.abs(step.incidence + reach * np.cos(angle)), 0.0, _STEEPEST_DEG)
+    rate = _law_rate(mill, material, energy_ev, incidence_deg, current, step.motion.half_angle)
+    # The Chebyshev transform, written out: chebfit would solve a least-squares problem for the same numbers.
+    transform = np.cos(np.outer(np.arange(_NODES), angle)) * (2.0 / _NODES)
+    transform[0] *= 0.5
+    return AngleCurve(transform @ np.log(rate), reach)
+
+
+def _law_rate(
+    mill: Mill, material: Material, energy_ev: float, incidence_deg: Array, current: float, rocking_deg: float = 0.0
+) -> Array:
+    """What the laws give with the library's best values, all ions singly charged, in nm/s."""
+    return rates.rate_nm_per_s(
+        material,
+        energy_ev=energy_ev,
+        incidence_rad=np.radians(incidence_deg),
+        current_density_ma_per_cm2=current,
+        doubly_charged=0.0,
+        divergence_rad=float(np.radians(mill.divergence)),
+        rocking_rad=float(np.radians(rocking_deg)),
+        gas=mill.gas,
+    )
+
+
+def _evidence(mill: Mill, material: Material, names: Sequence[str], measured: MeasuredRate) -> RateEvidence:
+    """A lab's own rate, as one row: it fixes b + c at its stated current.
+
+    The current's error (and the dial's) counts again on another day, so only a rate of the same day may tell
+    about them.
+    """
+    incidence = measured.incidence_deg + np.array([0.0, -0.5, 0.5])
+    current, charged = measured.current_density_ma_per_cm2, mill.doubly_charged.value
+    single, double = (
+        _law_rate(mill, material, energy, np.clip(np.abs(incidence), 0.0, _STEEPEST_DEG), current)
+        for energy in (measured.energy_ev, 2.0 * measured.energy_ev)
+    )
+    ln_rate = np.log((1.0 - charged) * single + 0.5 * charged * double)
+    design = np.zeros(2 + len(_PER_MATERIAL) * len(names))
+    k = 2 + len(_PER_MATERIAL) * names.index(material.name)
+    design[k : k + 3] = 1.0, energy_term(material, measured.energy_ev), angle_term(measured.incidence_deg)
+    if measured.same_day:
+        design[:2] = 1.0, ln_rate[2] - ln_rate[1]
+    rate = measured.rate_nm_per_s
+    what = f"{material.name}: measured {rate.value * 60:.3g} nm/min ± {100 * rate.rel_sd:.2g} %"
+    return RateEvidence(design, float(np.log(rate.value) - ln_rate[0]), rate.rel_sd, what)

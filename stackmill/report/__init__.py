@@ -1,0 +1,1 @@
+"""Results as rows for people and for machines."""

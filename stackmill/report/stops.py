@@ -1,0 +1,296 @@
+"""The stop table on paper: layers as rows, columns by region, and the window in words."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from typing import Any
+
+from stackmill.planning.stops import Reach, StopTable
+from stackmill.planning.windows import Window
+from stackmill.report.render import Grid, Paper, csv_text, json_text, wrapped
+from stackmill.units import clock, format_time
+
+ROW_NAMES = (
+    "region",
+    "column",
+    "layer",
+    "time_s",
+    "time_early_s",
+    "time_late_s",
+    "depth_nm",
+    "height_nm",
+    "step",
+    "flat_ok",
+    "basis",
+)
+_NARROW = 0.01  # columns under this share of a region are left out of the table for people, unless the goal's
+_CELL = 19  # characters of "12:30 (11:40-13:25)"
+
+
+def machine_rows(table: StopTable) -> list[dict[str, Any]]:
+    """One dict a column and layer, by the names that others build on."""
+    return [
+        {**{name: getattr(row, name) for name in ROW_NAMES}, "present": row.present, "area_share": row.share}
+        for row in table.rows
+    ]
+
+
+def machine_windows(table: StopTable) -> list[dict[str, Any]]:
+    """The goal's window as a list of one dict; empty without a goal."""
+    job, window = table.ensemble.inputs.job, table.window
+    if window is None or job.goal is None:
+        return []
+    return [
+        {
+            "goal": _goal_name(table),
+            "regions": list(_goal_regions(table)),
+            "exposed_s": window.exposed_s,
+            "lost_s": window.lost_s,
+            "stop_s": window.stop_s,
+            "chance": window.chance,
+            "best_chance": window.best_chance,
+            "confidence": window.confidence,
+            "first_look_s": window.first_look_s,
+            "lost_by": _lost_by(table, window),
+            "left_standing_share": window.left_standing,
+            "provisional": table.provisional,
+            "best_stop_s": window.best_stop_s,
+            "exposed_by": _column_name(table, *window.exposed_by),
+            "counted_from_s": window.leg_start_s,
+            "counted_from": _leg_name(table, window.leg),
+        }
+    ]
+
+
+def as_json(table: StopTable, warnings: Sequence[str]) -> str:
+    """The whole answer for machines."""
+    job = table.ensemble.inputs.job
+    envelope = {
+        "inputs_sha256": job.inputs_sha256,
+        "seed": table.ensemble.seed,
+        "draws": len(table.ensemble.weights),
+        "warnings": list(warnings),
+        "windows": machine_windows(table),
+        "variance_shares": [{"input": s.name, "share": s.share} for s in table.shares],
+    }
+    return json_text(machine_rows(table), envelope)
+
+
+def as_csv(table: StopTable) -> str:
+    """The rows as CSV."""
+    return csv_text(machine_rows(table), [*ROW_NAMES, "present", "area_share"])
+
+
+def as_text(table: StopTable, paper: Paper, *, markdown: bool = False) -> str:
+    """The answer for people, as wide as the paper."""
+    parts = [_heading(table, paper)]
+    parts += _grids(table, paper, "github" if markdown else "simple")
+    parts.append("\n".join(wrapped(line, paper.width, "  ") for line in _notes(table)))
+    if table.window is not None:
+        parts.append("\n".join(wrapped(line, paper.width, "  ") for line in window_in_words(table, table.window)))
+    return paper.plain("\n\n".join(part for part in parts if part))
+
+
+def _heading(table: StopTable, paper: Paper) -> str:
+    job = table.ensemble.inputs.job
+    lines = [job.title, f"Mill: {job.mill.title}"]
+    lines += [f"{n}. {step.in_words(job.mill.stage)}" for n, step in enumerate(job.recipe.steps, 1)]
+    return "\n".join(wrapped(line, paper.width, "   ") for line in lines)
+
+
+def _grids(table: StopTable, paper: Paper, style: str) -> list[str]:
+    job = table.ensemble.inputs.job
+    layers = _shown_layers(table)
+    first = max([len("layer"), *(len(layer) for layer in layers)])
+    per_grid = max(1, (paper.width - first) // (_CELL + 4))
+    grids = []
+    for region in job.column_map.regions:
+        columns = _shown_columns(table, region.name)
+        for k in range(0, len(columns), per_grid):
+            grids.append(_grid(table, region.name, columns[k : k + per_grid], layers, style))
+    return grids
+
+
+def _grid(table: StopTable, region: str, columns: Sequence[Sequence[int]], layers: Sequence[str], style: str) -> str:
+    rows = {(row.column_number, row.layer): row for row in table.rows if row.region == region}
+    headers = [f"{region}\n"]
+    for group in columns:
+        label = rows[group[0], layers[0]].column
+        share = sum(rows[c, layers[0]].share for c in group)
+        headers.append("\n".join([*_folded(label, _CELL + 1), f"{100 * share:.3g} % of area"]))
+    depth = max(header.count("\n") for header in headers)
+    headers = [header + "\n" * (depth - header.count("\n")) if k else region for k, header in enumerate(headers)]
+    cells = [[layer, *(_cell(rows[group[0], layer]) for group in columns)] for layer in layers]
+    return Grid(headers, cells).text(style)
+
+
+def _folded(label: str, width: int) -> list[str]:
+    import textwrap
+
+    return textwrap.wrap(label, width, break_long_words=True) or [""]
+
+
+def _cell(row: Reach) -> str:
+    """One time with its bounds, `*` where the column alone is not to be trusted, blank where no layer is."""
+    if not row.present:
+        return "·"
+    if row.time_s is None:
+        return "not reached"
+    if row.time_s == 0.0 and row.time_late_s == 0.0:
+        return "0:00"
+    early = "never" if row.time_early_s is None else clock(row.time_early_s)
+    late = "never" if row.time_late_s is None else clock(row.time_late_s)
+    return f"{clock(row.time_s)} ({early}–{late}){'' if row.flat_ok else '*'}"
+
+
+def _shown_layers(table: StopTable) -> list[str]:
+    """All layers down to the one below the goal; all of them without a goal."""
+    job = table.ensemble.inputs.job
+    layers = list(job.column_map.layers)
+    if job.goal is None:
+        return layers
+    return layers[: layers.index(job.goal.layer) + 2]
+
+
+def _shown_columns(table: StopTable, region: str) -> list[list[int]]:
+    """Column numbers to show, those that read the same grouped; narrow ones that decide nothing are left out."""
+    shown = _shown_layers(table)
+    window = table.window
+    deciding = {window.exposed_by, window.lost_by} if window else set()
+    number = [r.name for r in table.ensemble.inputs.job.column_map.regions].index(region)
+    groups: dict[tuple[str, ...], list[int]] = {}
+    for row in table.rows:
+        if row.region != region or row.layer != shown[0]:
+            continue
+        c = row.column_number
+        if row.share < _NARROW and (number, c) not in deciding:
+            continue
+        cells = tuple(_cell(r) for r in table.rows if r.region == region and r.column_number == c and r.layer in shown)
+        groups.setdefault(cells, []).append(c)
+    return list(groups.values())
+
+
+def _notes(table: StopTable) -> list[str]:
+    q = table.confidence
+    notes = [
+        f"Times are beam-on (min:s), best value (early–late): {50 * (1 - q):.3g} % of draws come before the early"
+        f" one and {50 * (1 - q):.3g} % after the late one. A dot: the layer is not in this column."
+    ]
+    if any(not row.flat_ok for row in table.rows):
+        notes.append(
+            "* by the column alone: a facet or a shadow from a neighbour gets to the column's centre before,"
+            " so the true time may differ."
+        )
+    for leg in range(1, len(table.ensemble.best_outcome.leg_start_s)):
+        at = float(table.ensemble.best_outcome.leg_start_s[leg][0])
+        notes.append(
+            f"Times after {clock(at)} count from the end of {_leg_name(table, leg)!r}, stopped by eye at about"
+            f" {clock(at)}: start the stopwatch again there."
+        )
+    hidden = sum(row.share < _NARROW for row in table.rows if row.layer == _shown_layers(table)[0])
+    if hidden:
+        notes.append(f"Columns under {100 * _NARROW:.2g} % of their region are left out where they decide nothing (-f json has all).")
+    return notes
+
+
+def window_in_words(table: StopTable, window: Window) -> list[str]:
+    """The window, line by line."""
+    job = table.ensemble.inputs.job
+    assert job.goal is not None
+    sure = f"{100 * window.confidence:.3g} %"
+    since = _since(table, window)
+    lines = [f"Goal: {_goal_name(table)} in {', '.join(_goal_regions(table))}, {_goal_level(table)}."]
+    if window.exposed_s is None:
+        lines.append(
+            f"NO SAFE WINDOW at {sure}: the best stop, {clock(window.best_stop_s)}{since(window.best_stop_s)}, has a chance of"
+            f" {window.best_chance:.2f}."
+        )
+        lines.append(
+            f"  In conflict: {_column_name(table, *window.exposed_by)} is exposed last,"
+            f" {_lost_by(table, window) or 'nothing'} is lost first."
+        )
+    else:
+        assert window.stop_s is not None
+        assert window.chance is not None
+        lines.append(f"STOP AT {clock(window.stop_s)}{since(window.stop_s)}: chance {window.chance:.2f}.")
+        if window.lost_s is None:
+            lines.append(f"  Window at {sure}: from {clock(window.exposed_s)} on; nothing is lost after it.")
+        else:
+            lines.append(
+                f"  Window at {sure}: {clock(window.exposed_s)} to {clock(window.lost_s)}"
+                f" ({format_time(window.lost_s - window.exposed_s)}). Latest stop {clock(window.lost_s)}{since(window.lost_s)}."
+            )
+        lines.append(f"  Exposed last: {_column_name(table, *window.exposed_by)}. Lost first: {_lost_by(table, window) or 'nothing'}.")
+    if window.first_look_s is not None:
+        lines.append(f"  First look no later than {clock(window.first_look_s)}{since(window.first_look_s)}: until then the chance of loss is under 5 %.")
+    lines.append(f"  Left standing at the stop: {100 * window.left_standing:.2g} % of the goal's area.")
+    lines += _planned_end(table, window)
+    if table.provisional:
+        lines.append("  PROVISIONAL: a facet or a shadow gets to the centre of a deciding column before; see *.")
+    return lines
+
+
+def _planned_end(table: StopTable, window: Window) -> list[str]:
+    """What the stop means for the recipe: steps left unused, or staying beyond its end."""
+    best = table.ensemble.best
+    recipe = table.ensemble.inputs.job.recipe
+    spans = best.spans[: len(recipe.steps)]
+    unused = [
+        span.name for span in spans if span.start_s[0] >= window.best_stop_s and span.length_s[0] > 0.0
+    ]
+    if unused:
+        return [f"  The stop leaves unused: {', '.join(unused)}."]
+    end = float(spans[-1].end_s[0])
+    if window.best_stop_s > end * (1 + 1e-9):
+        return [f"  The recipe itself ends at {clock(end)}: stay on in its last step."]
+    return []
+
+
+def _since(table: StopTable, window: Window):  # type: ignore[no-untyped-def]
+    def text(time_s: float) -> str:
+        if not window.leg:
+            return ""
+        return f" ({clock(max(time_s - window.leg_start_s, 0.0))} after {_leg_name(table, window.leg)!r} is stopped)"
+
+    return text
+
+
+def _leg_name(table: StopTable, leg: int) -> str:
+    if not leg:
+        return "start"
+    by_eye = [step.name for step in table.ensemble.inputs.job.recipe.steps if getattr(step, "seen", None)]
+    return by_eye[leg - 1]
+
+
+def _goal_name(table: StopTable) -> str:
+    goal = table.ensemble.inputs.job.goal
+    assert goal is not None
+    return goal.layer if goal.feature is None else f"{goal.layer} / {goal.feature}"
+
+
+def _goal_regions(table: StopTable) -> list[str]:
+    regions = table.ensemble.inputs.job.column_map.regions
+    return list(dict.fromkeys(regions[r].name for r, _ in table.ensemble.best_outcome.wanted))
+
+
+def _goal_level(table: StopTable) -> str:
+    goal = table.ensemble.inputs.job.goal
+    assert goal is not None
+    where = "its top" if goal.at.top else f"at {100 * goal.at.fraction:.3g} % ± {goal.at.half_width:.3g} nm"
+    return f"{where} clear over {100 * goal.clear:.3g} % of its area"
+
+
+def _column_name(table: StopTable, region: int, column: int) -> str:
+    found = table.ensemble.inputs.job.column_map.regions[region]
+    return f"{found.name}: {found.label(column)}"
+
+
+def _lost_by(table: StopTable, window: Window) -> str | None:
+    if window.lost_by is None:
+        return None
+    name = _column_name(table, *window.lost_by)
+    if window.lost_keep < 0:
+        return name
+    keep = table.ensemble.inputs.job.keeps[window.lost_keep]
+    what = keep.layer if keep.feature is None else f"{keep.layer} / {keep.feature}"
+    return f"{what} to keep at {name}"

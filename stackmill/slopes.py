@@ -1,0 +1,76 @@
+"""How fast sloped ground comes down under the beam: the vertical speed of a facet, averaged over rotation.
+
+A facet tilted by b from the sample's plane, facing azimuth p, meets the beam at g with
+cos g = cos b cos th + sin b sin th cos p. It recedes along its normal at J Y(g) cos g / (e n), which is
+1 / cos b times as much straight down. Facets turned away from the beam do not mill.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+
+import numpy as np
+from numpy.typing import NDArray
+
+from stackmill.documents.recipe import Beam
+from stackmill.rates import AngularShape
+
+Array = NDArray[np.float64]
+
+_AZIMUTHS = 48
+_ROCKING_NODES = 9
+_SLOPES = 160
+_STEEPEST_DEG = 89.8
+
+
+def slope_grid() -> Array:
+    """Tangents (Q,) of slope angles from 0 to 89.8 degrees, even in q/(1+q), where steep walls stay resolved."""
+    steepest = np.tan(np.radians(_STEEPEST_DEG))
+    t = np.linspace(0.0, steepest / (1.0 + steepest), _SLOPES)
+    return t / (1.0 - t)
+
+
+def vertical_speed_ratio(shape: AngularShape, step: Beam, slope: Array) -> Array:
+    """Vertical speed of slopes (Q,) in one step, as a multiple of flat ground's (which is 1).
+
+    Rotating: the average over azimuth. Still or rocking: the faster of the sides that face to and from the
+    beam; rocking is averaged over the swing.
+    """
+    incidence = _incidences(step)
+    if step.motion.kind == "rotating":
+        azimuth = np.pi * (np.arange(_AZIMUTHS) + 0.5) / _AZIMUTHS
+        speed = _vertical(shape, incidence[:, None, None], azimuth[:, None], slope).mean(axis=(0, 1))
+    else:
+        sides = np.array([0.0, np.pi])
+        speed = _vertical(shape, incidence[:, None, None], sides[:, None], slope).mean(axis=0).max(axis=0)
+    return np.asarray(speed / speed[0])
+
+
+def _incidences(step: Beam) -> Array:
+    swing = step.motion.half_angle if step.motion.kind == "rocking" else 0.0
+    if not swing:
+        return np.radians([step.incidence])
+    nodes, _ = np.polynomial.legendre.leggauss(_ROCKING_NODES)
+    return np.radians(step.incidence + swing * nodes)
+
+
+def _vertical(shape: AngularShape, incidence: Array, azimuth: Array, slope: Array) -> Array:
+    """Y(g) cos g / cos b over Y(0), for slopes against azimuths and incidences."""
+    cos_b = 1.0 / np.sqrt(1.0 + slope**2)
+    sin_b = slope * cos_b
+    cos_g = cos_b * np.cos(incidence) + sin_b * np.sin(incidence) * np.cos(azimuth)
+    lit = np.clip(cos_g, 0.0, 1.0)
+    return np.where(cos_g > 0.0, shape.ratio(np.arccos(lit)) * lit / cos_b, 0.0)
+
+
+def shadow_multiple(step: Beam, divergence_deg: float) -> float:
+    """How far a shadow reaches in one step, as a multiple of the height that throws it."""
+    swing = step.motion.half_angle if step.motion.kind == "rocking" else 0.0
+    lowest = abs(step.incidence) + swing + divergence_deg
+    return float(np.tan(np.radians(min(lowest, 89.0)))) if abs(step.incidence) + swing > 0.0 else 0.0
+
+
+def speeds_of(shapes: Mapping[str, AngularShape], flat_nm_per_s: Mapping[str, float], step: Beam) -> Array:
+    """Vertical speeds (M, Q) in nm/s of each material's slopes, in the order of `shapes`."""
+    slope = slope_grid()
+    return np.stack([flat_nm_per_s[name] * vertical_speed_ratio(shape, step, slope) for name, shape in shapes.items()])

@@ -1,0 +1,1 @@
+"""Down: when the surface of each column gets to each level, and how long that can be trusted."""

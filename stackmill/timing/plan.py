@@ -1,0 +1,236 @@
+"""A job as something to fall through: its columns cut at every level asked for, and its steps."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from stackmill.columns.columns import RegionColumns
+from stackmill.documents.job import Goal, Keep
+from stackmill.documents.recipe import Beam, Process, Seen, Target
+from stackmill.documents.recipe import Cover as CoverStep
+from stackmill.documents.recipe import Strip as StripStep
+from stackmill.documents.recipe import Uncover as UncoverStep
+from stackmill.jobs import Job
+from stackmill.timing.fall import Column, Cover, Lowering, Step, Strip, Until
+from stackmill.timing.levels import CutColumn
+
+Array = NDArray[np.float64]
+Index = NDArray[np.intp]
+
+DEFAULT_SHARE = 0.95  # of the area that must be down for a `to` step, where no goal says otherwise
+LOST_SHARE = 0.01  # the goal or a keep is lost when this much of its area is
+
+
+@dataclass(frozen=True)
+class Spot:
+    """A level in one column: region, column, boundary (one number, or one a draw (D,)), area."""
+
+    region: int
+    column: int
+    above: int | Index
+    area: float
+
+
+@dataclass(frozen=True)
+class KeepSpots:
+    """Where a keep is spoilt: its spots, and in which draws (D,) each is too thin from the start."""
+
+    spots: tuple[Spot, ...]
+    too_thin: tuple[NDArray[np.bool_], ...]
+
+
+@dataclass(frozen=True)
+class Ground:
+    """The columns of all regions, ready to fall, and the levels asked for.
+
+    columns[r][c]; boundary[r][c] (S + 1,): where the boundaries of the column map's segments now lie;
+    layer_above[r] (C, layers): the boundary above each layer's top (of the next present one below where it is
+    absent); goal_upper, goal_lower: the goal's levels in its wanted columns.
+    """
+
+    columns: tuple[tuple[Column, ...], ...]
+    boundary: tuple[tuple[Index, ...], ...]
+    layer_above: tuple[Index, ...]
+    goal_upper: tuple[Spot, ...]
+    goal_lower: tuple[Spot, ...]
+    keeps: tuple[KeepSpots, ...]
+
+
+def ground(job: Job, deltas_nm: Sequence[Array]) -> Ground:
+    """Prepare the columns for draws whose thickness inputs are off by deltas_nm[r] (L, D) in region r."""
+    cut = [_cut_columns(region, deltas) for region, deltas in zip(job.column_map.regions, deltas_nm, strict=True)]
+    upper, lower = _goal_cuts(job, cut) if job.goal else ([], [])
+    keeps = [_keep_cuts(job, keep, cut) for keep in job.keeps]
+    return Ground(
+        columns=tuple(tuple(c.done() for c in region) for region in cut),
+        boundary=tuple(tuple(c.boundary for c in region) for region in cut),
+        layer_above=tuple(_layer_above(job, r, region) for r, region in enumerate(cut)),
+        goal_upper=tuple(_spot(cut, where) for where in upper),
+        goal_lower=tuple(_spot(cut, where) for where in lower),
+        keeps=tuple(KeepSpots(tuple(_spot(cut, w) for w in where), thin) for where, thin in keeps),
+    )
+
+
+def _cut_columns(region: RegionColumns, deltas_nm: Array) -> list[CutColumn]:
+    cut = []
+    for c, count in enumerate(region.segments):
+        thickness = region.thickness_nm[c, :count, None] + region.dthickness[c, :count] @ deltas_nm
+        material = region.material[c, :count].tolist()
+        cut.append(CutColumn(material, list(np.clip(thickness, 0.0, None)), float(region.area[c])))
+    return cut
+
+
+# A place to be turned into a Spot once all cuts are made: region, column, and which of its levels or boundaries.
+_Where = tuple[int, int, int, bool]
+
+
+def _spot(cut: Sequence[Sequence[CutColumn]], where: _Where) -> Spot:
+    r, c, index, is_level = where
+    column = cut[r][c]
+    return Spot(r, c, column.levels[index] if is_level else int(column.boundary[index]), column.area)
+
+
+def _layer_above(job: Job, r: int, cut: Sequence[CutColumn]) -> Index:
+    region = job.column_map.regions[r]
+    layers = np.arange(len(job.column_map.layers))
+    rows = []
+    for c, count in enumerate(region.segments):
+        first = np.searchsorted(region.layer[c, :count], layers, side="left")
+        rows.append(cut[c].boundary[first])
+    return np.stack(rows)
+
+
+def segments_of(job: Job, r: int, c: int, layer: str, feature: str | None) -> tuple[int, int] | None:
+    """The first and last segment of a layer, or of a feature in it, in a column; None where it is not there."""
+    region, count = job.column_map.regions[r], int(job.column_map.regions[r].segments[c])
+    inside = region.layer[c, :count] == job.column_map.layers.index(layer)
+    if feature is not None:
+        inside &= region.feature[c, :count] == job.feature_index(layer, feature)
+    found = np.flatnonzero(inside)
+    return (int(found[0]), int(found[-1])) if found.size else None
+
+
+def wanted_columns(job: Job, goal: Goal | Keep) -> list[tuple[int, int, int, int]]:
+    """The columns of a goal's or keep's wanted area: (region, column, first segment, last segment)."""
+    wanted = []
+    for r, region in enumerate(job.column_map.regions):
+        if goal.in_ and region.name not in goal.in_:
+            continue
+        for c in range(len(region.area)):
+            found = segments_of(job, r, c, goal.layer, goal.feature)
+            if found:
+                wanted.append((r, c, *found))
+    return wanted
+
+
+def _goal_cuts(job: Job, cut: Sequence[Sequence[CutColumn]]) -> tuple[list[_Where], list[_Where]]:
+    assert job.goal is not None
+    upper: list[_Where] = []
+    lower: list[_Where] = []
+    level = job.goal.at
+    for r, c, first, last in wanted_columns(job, job.goal):
+        if level.top:
+            upper.append((r, c, first, False))
+            lower.append((r, c, last + 1, False))
+            continue
+        column = cut[r][c]
+        middle = level.fraction * _thickness(column, first, last)
+        upper.append((r, c, column.cut(first, last, middle + level.half_width), True))
+        lower.append((r, c, column.cut(first, last, middle - level.half_width), True))
+    return upper, lower
+
+
+def _keep_cuts(
+    job: Job, keep: Keep, cut: Sequence[Sequence[CutColumn]]
+) -> tuple[list[_Where], tuple[NDArray[np.bool_], ...]]:
+    where: list[_Where] = []
+    thin = []
+    for r, c, first, last in wanted_columns(job, keep):
+        thickness = _thickness(cut[r][c], first, last)
+        thin.append(thickness < keep.at_least)
+        where.append((r, c, cut[r][c].cut(first, last, np.full_like(thickness, keep.at_least)), True))
+    return where, tuple(thin)
+
+
+def _thickness(column: CutColumn, first: int, last: int) -> Array:
+    top, floor = int(column.boundary[first]), int(column.boundary[last + 1])
+    return np.sum(column.thickness_nm[top:floor], axis=0)
+
+
+RateOf = Callable[[int, str], Array]
+"""Gives the milling rate (D,) in nm/s of (step number, material)."""
+
+
+def fall_steps(
+    job: Job,
+    where: Ground,
+    rate_of: RateOf,
+    *,
+    durations_s: Mapping[int, float],
+    late_s: Mapping[int, Array],
+) -> list[Step]:
+    """The recipe as steps to fall by, and after its end the last beam going on.
+
+    durations_s: the lengths of `to` steps, once known (a `to` that is not there ends by reaching); late_s (D,):
+    how much too late each `seen` step is stopped. The extra last step, named "", lets the forecast say what
+    happens to someone who stays longer than the recipe.
+    """
+    draws = where.columns[0][0].thickness_nm.shape[1]
+    has_beam = any(isinstance(step, Beam) for step in job.recipe.steps)
+    regions = [region.name for region in job.column_map.regions]
+    steps: list[Step] = []
+    for i, step in enumerate(job.recipe.steps):
+        if isinstance(step, CoverStep):
+            steps.append(Cover(frozenset(map(regions.index, step.cover)), True, step.name))
+        elif isinstance(step, UncoverStep):
+            steps.append(Cover(frozenset(map(regions.index, step.uncover)), False, step.name))
+        elif isinstance(step, StripStep):
+            known = job.column_map.materials
+            steps.append(Strip(frozenset(known.index(m) for m in step.strips if m in known), step.name))
+        else:
+            rate = np.stack([rate_of(i, name) for name in job.column_map.materials])
+            duration, until = None, None
+            if step.for_ is not None:
+                duration = np.full(draws, step.for_)
+            elif i in durations_s:
+                duration = np.full(draws, durations_s[i])
+            else:
+                until = _until(job, where, step, late_s.get(i, np.zeros(draws)))
+            counts = isinstance(step, Beam) or not has_beam
+            steps.append(Lowering(rate, duration, until, counts, step.name))
+    return steps + _going_on(steps, draws)
+
+
+def _going_on(steps: Sequence[Step], draws: int) -> list[Step]:
+    lowering = [step for step in steps if not isinstance(step, Cover)]
+    if not lowering or not isinstance(lowering[-1], Lowering) or not lowering[-1].counts:
+        return []
+    return [Lowering(lowering[-1].rate_nm_per_s, np.full(draws, np.inf))]
+
+
+def _until(job: Job, where: Ground, step: Beam | Process, late_s: Array) -> Until:
+    target: Target | Seen | None = step.to or step.seen
+    assert target is not None
+    columns, area = [], []
+    wanted = target.in_ or (job.goal.in_ if job.goal else ())
+    for r, region in enumerate(job.column_map.regions):
+        if wanted and region.name not in wanted:
+            continue
+        for c in range(len(region.area)):
+            above = _target_above(job, where, r, c, target)
+            if above is not None:
+                columns.append((r, c, above))
+                area.append(float(region.area[c]))
+    share = target.area if target.area is not None else (job.goal.clear if job.goal else DEFAULT_SHARE)
+    return Until(tuple(columns), np.array(area), share, late_s)
+
+
+def _target_above(job: Job, where: Ground, r: int, c: int, target: Target | Seen) -> int | None:
+    if target.feature is None:
+        return int(where.layer_above[r][c, job.column_map.layers.index(target.layer)])
+    found = segments_of(job, r, c, target.layer, target.feature)
+    return None if found is None else int(where.boundary[r][c][found[0]])
