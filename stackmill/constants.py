@@ -40,9 +40,11 @@ class Gas:
 # Standard atomic weights: IUPAC 2021 (Prohaska et al., Pure Appl. Chem. 94, 573 (2022)), abridged;
 # argon is given there as 39.95 and used with the older conventional value 39.948 (IUPAC 2007),
 # the one behind every argon yield table held here.
-GASES: Mapping[str, Gas] = MappingProxyType({
-    "neon": Gas("neon", "Ne", 10, 20.1797),
-    "argon": Gas("argon", "Ar", 18, 39.948),
-    "krypton": Gas("krypton", "Kr", 36, 83.798),
-    "xenon": Gas("xenon", "Xe", 54, 131.293),
-})
+GASES: Mapping[str, Gas] = MappingProxyType(
+    {
+        "neon": Gas("neon", "Ne", 10, 20.1797),
+        "argon": Gas("argon", "Ar", 18, 39.948),
+        "krypton": Gas("krypton", "Kr", 36, 83.798),
+        "xenon": Gas("xenon", "Xe", 54, 131.293),
+    }
+)

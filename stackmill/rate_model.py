@@ -19,7 +19,7 @@ from stackmill import rates
 from stackmill.documents.mill import Mill
 from stackmill.documents.recipe import Beam
 from stackmill.materials.calibration import RateBelief, RateEvidence, condition
-from stackmill.materials.material import Material, MeasuredRate
+from stackmill.materials.material import LabRate, Material
 
 Array = NDArray[np.float64]
 
@@ -51,12 +51,12 @@ class BeamRates:
     """The rate curves of one beam step.
 
     single, double: material name -> curve, as if all current were carried by singly charged ions of the
-    step's energy and of twice that energy; basis: material name -> (u, g), the energy and angle terms.
+    step's energy and of twice that energy; terms: material name -> how ln rate moves with its unknowns.
     """
 
     single: Mapping[str, AngleCurve]
     double: Mapping[str, AngleCurve]
-    basis: Mapping[str, tuple[float, float]]
+    terms: Mapping[str, tuple[float, float, float]]
 
 
 @dataclass(frozen=True)
@@ -78,10 +78,27 @@ class RateModel:
         assert beam is not None
         single = beam.single[material].rate_nm_per_s(parameters[1])
         double = beam.double[material].rate_nm_per_s(parameters[1])
-        u, g = beam.basis[material]
         k = 2 + len(_PER_MATERIAL) * self.materials.index(material)
-        ln_factor = parameters[0] + parameters[k] + u * parameters[k + 1] + g * parameters[k + 2]
+        ln_factor = parameters[0] + np.array(beam.terms[material]) @ parameters[k : k + 3]
         return ((1.0 - doubly_charged) * single + 0.5 * doubly_charged * double) * np.exp(ln_factor)
+
+    def best_nm_per_s(self, step: int, material: str, doubly_charged: float) -> float:
+        """The best value of a material's milling rate in a beam step, in nm/s."""
+        best = self.belief.mean[:, None]
+        return float(
+            self.rate_nm_per_s(step, material, parameters=best, doubly_charged=np.array([doubly_charged]))[0]
+        )
+
+    def ln_rate_sd(self, step: int, material: str) -> float:
+        """sd of ln rate of a material in a beam step, everything that is believed of the mill included."""
+        beam = self.steps[step]
+        assert beam is not None
+        zero = self.belief.mean[1] + np.array([-0.5, 0.5])
+        k = 2 + len(_PER_MATERIAL) * self.materials.index(material)
+        design = np.zeros(len(self.belief.names))
+        design[:2] = 1.0, float(np.diff(np.log(beam.single[material].rate_nm_per_s(zero)))[0])
+        design[k : k + 3] = beam.terms[material]
+        return float(np.sqrt(design @ self.belief.cov @ design))
 
 
 def rate_model(mill: Mill, steps: Sequence[object], materials: Mapping[str, Material]) -> RateModel:
@@ -92,7 +109,7 @@ def rate_model(mill: Mill, steps: Sequence[object], materials: Mapping[str, Mate
     evidence = tuple(
         _evidence(mill, material, names, measured)
         for material in materials.values()
-        for measured in material.measured_rate
+        for measured in material.measured_rates
     )
     return RateModel(names, beams, condition(prior, evidence), evidence)
 
@@ -103,23 +120,32 @@ def parameter_names(materials: Sequence[str]) -> tuple[str, ...]:
     return ("current density", "dial zero error", *each)
 
 
-def angle_term(incidence_deg: float) -> float:
-    """How the angular unknown enters ln rate at an incidence in degrees: 0 straight down, 1 at 60 degrees."""
-    return float(np.sin(np.radians(incidence_deg)) ** 2 / 0.75)
+def energy_term(material: Material, energy_ev: float, gas: str) -> float:
+    """How far ln rate may be off for leaving the material's measured energies, signed: 0 inside them."""
+    outside = float(rates.outside_ln_sd(material, energy_ev=energy_ev, gas=gas))
+    higher = float(rates.outside_ln_sd(material, energy_ev=1.01 * energy_ev, gas=gas)) > outside
+    return outside if higher else -outside
 
 
-def energy_term(material: Material, energy_ev: float) -> float:
-    """How far (in ln E) an energy in eV lies outside the material's measured range: 0 inside, signed outside."""
-    low, high = material.energy_range_ev
-    ln_energy = float(np.log(energy_ev))
-    return min(ln_energy - float(np.log(low)), 0.0) + max(ln_energy - float(np.log(high)), 0.0)
+def _terms(material: Material, energy_ev: float, incidence_deg: float, gas: str) -> tuple[float, float, float]:
+    """How ln rate moves with the material's three unknowns at one setting."""
+    angle = float(rates.angular_leverage(np.radians(incidence_deg)))
+    return 1.0, energy_term(material, energy_ev, gas), angle
 
 
 def _prior(mill: Mill, materials: Mapping[str, Material]) -> RateBelief:
     sd = [mill.current_density.rel_sd, mill.stage.zero_error.sd]
     for material in materials.values():
-        sd += [material.rel_sd, material.energy_sd_per_efold, material.angular_sd]
+        # The energy term carries its own size, so that its unknown has an sd of one.
+        sd += [_rate_sd(material, mill.gas), 1.0, material.angular_sd]
     return RateBelief(parameter_names(tuple(materials)), np.zeros(len(sd)), np.diag(np.square(sd)))
+
+
+def _rate_sd(material: Material, gas: str) -> float:
+    """sd of ln rate straight down, at the energies where the material was measured."""
+    anywhere = {"energy_ev": 1000.0, "gas": gas}
+    inside = rates.ln_yield_sd(material, **anywhere) ** 2 - rates.outside_ln_sd(material, **anywhere) ** 2
+    return float(np.sqrt(inside + material.density_rel_sd**2))
 
 
 def _beam_rates(mill: Mill, step: Beam, materials: Mapping[str, Material]) -> BeamRates:
@@ -128,11 +154,11 @@ def _beam_rates(mill: Mill, step: Beam, materials: Mapping[str, Material]) -> Be
         {name: _curve(mill, step, material, energy_ev, current) for name, material in materials.items()}
         for energy_ev in (step.energy, 2.0 * step.energy)
     ]
-    basis = {
-        name: (energy_term(material, step.energy), angle_term(step.incidence))
+    terms = {
+        name: _terms(material, step.energy, step.incidence, mill.gas)
         for name, material in materials.items()
     }
-    return BeamRates(curves[0], curves[1], basis)
+    return BeamRates(curves[0], curves[1], terms)
 
 
 def _curve(mill: Mill, step: Beam, material: Material, energy_ev: float, current: float) -> AngleCurve:
@@ -162,14 +188,14 @@ def _law_rate(
     )
 
 
-def _evidence(mill: Mill, material: Material, names: Sequence[str], measured: MeasuredRate) -> RateEvidence:
+def _evidence(mill: Mill, material: Material, names: Sequence[str], measured: LabRate) -> RateEvidence:
     """A lab's own rate, as one row: it fixes b + c at its stated current.
 
     The current's error (and the dial's) counts again on another day, so only a rate of the same day may tell
     about them.
     """
     incidence = measured.incidence_deg + np.array([0.0, -0.5, 0.5])
-    current, charged = measured.current_density_ma_per_cm2, mill.doubly_charged.value
+    current, charged = measured.current_density.value, mill.doubly_charged.value
     single, double = (
         _law_rate(mill, material, energy, np.clip(np.abs(incidence), 0.0, _STEEPEST_DEG), current)
         for energy in (measured.energy_ev, 2.0 * measured.energy_ev)
@@ -177,9 +203,9 @@ def _evidence(mill: Mill, material: Material, names: Sequence[str], measured: Me
     ln_rate = np.log((1.0 - charged) * single + 0.5 * charged * double)
     design = np.zeros(2 + len(_PER_MATERIAL) * len(names))
     k = 2 + len(_PER_MATERIAL) * names.index(material.name)
-    design[k : k + 3] = 1.0, energy_term(material, measured.energy_ev), angle_term(measured.incidence_deg)
+    design[k : k + 3] = _terms(material, measured.energy_ev, measured.incidence_deg, mill.gas)
     if measured.same_day:
         design[:2] = 1.0, ln_rate[2] - ln_rate[1]
-    rate = measured.rate_nm_per_s
+    rate = measured.rate
     what = f"{material.name}: measured {rate.value * 60:.3g} nm/min ± {100 * rate.rel_sd:.2g} %"
     return RateEvidence(design, float(np.log(rate.value) - ln_rate[0]), rate.rel_sd, what)

@@ -1,7 +1,7 @@
 """The only place where a law meets a material: yields, shapes, milling rates, their sd and their trail.
 
-Energies in eV, incidence in rad from the surface normal, current density in mA/cm2 through a plane normal to the
-beam, milling rates in nm/s. `gas` is a name in constants.GASES.
+Energies in eV, incidence in rad from the surface normal, current density in mA/cm2 through a plane normal to
+the beam, milling rates in nm/s. `gas` is a name in constants.GASES.
 """
 
 from __future__ import annotations
@@ -18,6 +18,18 @@ from stackmill.laws.compounds import effective_target, tie_of_unmeasured
 from stackmill.laws.incidence import AngularShape, ep_constants, incidence_nodes, root_of_closeness
 from stackmill.laws.sputtering import LAWS, YieldLaw
 from stackmill.materials.material import Material
+
+__all__ = [
+    "AngularShape",
+    "angular_leverage",
+    "angular_shape",
+    "ln_yield_sd",
+    "normal_yield",
+    "outside_ln_sd",
+    "rate_nm_per_s",
+    "threshold_ev",
+    "trail",
+]
 
 Array = NDArray[np.float64]
 
@@ -82,12 +94,14 @@ def angular_shape(material: Material, *, energy_ev: ArrayLike, gas: str = REFERE
     if gas != REFERENCE_GAS:
         argon = _mass_rule(material, energy, REFERENCE_GAS)
         f, b, c = f + rule.f - argon.f, b + rule.b - argon.b, c + rule.c - argon.c
-    return AngularShape(f=f, b=np.maximum(b, SMALLEST_B), c=c)
+    return AngularShape(f=np.asarray(f, float), b=np.maximum(b, SMALLEST_B), c=np.asarray(c, float))
 
 
 def ln_yield_sd(material: Material, *, energy_ev: ArrayLike, gas: str = REFERENCE_GAS) -> Array:
-    """sd of ln(yield at normal incidence); shape of energy_ev. The density's sd is not in it."""
-    return np.asarray(np.hypot(_tied(material, gas).ln_sd, outside_ln_sd(material, energy_ev=energy_ev, gas=gas)))
+    """Sd of ln(yield at normal incidence); shape of energy_ev. The density's sd is not in it."""
+    return np.asarray(
+        np.hypot(_tied(material, gas).ln_sd, outside_ln_sd(material, energy_ev=energy_ev, gas=gas))
+    )
 
 
 def outside_ln_sd(material: Material, *, energy_ev: ArrayLike, gas: str = REFERENCE_GAS) -> Array:
@@ -100,7 +114,7 @@ def outside_ln_sd(material: Material, *, energy_ev: ArrayLike, gas: str = REFERE
 
 
 def angular_leverage(incidence_rad: ArrayLike) -> Array:
-    """g(incidence) = sin^2(incidence)/sin^2(60 deg): how the shape's sd at 60 degrees acts elsewhere [no unit]."""
+    """sin^2(incidence)/sin^2(60 deg): how the shape's sd at 60 degrees acts elsewhere [no unit]."""
     return np.asarray((np.sin(np.asarray(incidence_rad)) / np.sin(REFERENCE_ANGLE_RAD)) ** 2)
 
 
@@ -122,11 +136,13 @@ def rate_nm_per_s(
 
     doubly_charged: share of the current, d: (1 - d) J/e ions arrive at E and d/2 J/e at 2 E. divergence_rad:
     half-angle that holds 63 % of the current. rocking_rad: half-angle of the stage's swing.
-    angular_deviation: sds by which the angular shape is off; ln(Y/Y0) moves by that times the material's sd at
-    60 degrees times `angular_leverage`.
+    angular_deviation: sds by which the angular shape is off; ln(Y/Y0) moves by that times the material's sd
+    at 60 degrees times `angular_leverage`.
     """
     if not 0.0 <= doubly_charged < 1.0:
-        raise ValueError(f"doubly_charged must be a share of the current from 0 to below 1, not {doubly_charged:g}")
+        raise ValueError(
+            f"doubly_charged must be a share of the current from 0 to below 1, not {doubly_charged:g}"
+        )
     incidence = np.asarray(incidence_rad, dtype=np.float64)
     charges = ((energy_ev, 1.0 - doubly_charged), (2.0 * energy_ev, 0.5 * doubly_charged))
     total = np.zeros(incidence.size)
@@ -137,8 +153,12 @@ def rate_nm_per_s(
         shape = _deviated(angular_shape(material, energy_ev=energy, gas=gas), material, angular_deviation)
         averages = [
             np.sum(nodes.weight * shape(nodes.incidence_rad))
-            for nodes in (incidence_nodes(incidence_rad=float(angle), divergence_rad=divergence_rad, rocking_rad=rocking_rad)
-                          for angle in incidence.ravel())
+            for nodes in (
+                incidence_nodes(
+                    incidence_rad=float(angle), divergence_rad=divergence_rad, rocking_rad=rocking_rad
+                )
+                for angle in incidence.ravel()
+            )
         ]
         total += ions_per_charge * y0 * np.array(averages)
     speed = NM_PER_S_PER_MA_CM2 * current_density_ma_per_cm2 / material.atom_density_1e22
@@ -168,16 +188,20 @@ def trail(
         f"yield at {energy_ev:g} eV {gas}: {float(normal_yield(material, energy_ev=energy_ev, gas=gas)):.3g}"
         f" atoms/ion ± {100 * sd:.0f} %",
         f"law: {tied.law.name}, {tied.law.citation}",
-        "constants: " + ", ".join(f"{k} {v:g}" for k, v in tied.constants.items())
+        "constants: "
+        + ", ".join(f"{k} {v:g}" for k, v in tied.constants.items())
         + f" ({_told(material.constants_source, material.constants_seen, citation)})",
-        f"tie: factor {tied.factor:.3g}, exponent {tied.exponent:+.3f} in E/{tied.at_ev:g} eV, measured"
-        f" {tied.range_ev[0]:g} to {tied.range_ev[1]:g} eV ({material.tie.basis if material.tie else 'compound rule'})",
+        f"tie: factor {tied.factor:.3g}, exponent {tied.exponent:+.3f} in E/{tied.at_ev:g} eV, known"
+        f" from {tied.range_ev[0]:g} to {tied.range_ev[1]:g} eV"
+        f" ({material.tie.basis if material.tie else 'compound rule'})",
         f"density: {density.value:g} ± {density.sd:.2g} g/cm3, {density.conditions}"
         f" ({_told(density.source, density.seen, citation)})",
         f"angular shape: {material.angular.conditions}, sd {100 * material.angular_sd:.0f} % at 60 deg"
         f" ({_told(material.angular.source, material.angular.seen, citation)})",
-        *(f"sources differ on {clash.what}: {clash.taken} taken, not {clash.other}: {clash.why}"
-          for clash in material.disagreements),
+        *(
+            f"sources differ on {clash.what}: {clash.taken} taken, not {clash.other}: {clash.why}"
+            for clash in material.disagreements
+        ),
         *(f"caution: {material.toxicity.note}" for _ in [0] if material.toxicity),
     ]
 
@@ -220,8 +244,15 @@ def _tied(material: Material, gas: str) -> _Tied:
         other = material.other_gases
         law, constants, factor, gas_sd = LAWS["yamamura_tawara"], other.constants, other.factor, other.ln_sd
     return _Tied(
-        law, constants, factor, tie.exponent, tie.at_ev, tie.range_ev,
-        float(np.hypot(tie.ln_sd, gas_sd)), tie.below_per_efold, tie.above_per_efold,
+        law,
+        constants,
+        factor,
+        tie.exponent,
+        tie.at_ev,
+        tie.range_ev,
+        float(np.hypot(tie.ln_sd, gas_sd)),
+        tie.below_per_efold,
+        tie.above_per_efold,
     )
 
 
@@ -229,8 +260,15 @@ def _estimated(material: Material, gas: str) -> _Tied:
     factor = float(tie_of_unmeasured(mean_mass_u=material.mean_mass_u))
     gas_sd = 0.0 if gas == REFERENCE_GAS else OTHER_GAS_LN_SD
     return _Tied(
-        LAWS["yamamura_tawara"], _effective_constants(material), factor, 0.0, 1000.0, ESTIMATE_RANGE_EV,
-        float(np.hypot(ESTIMATE_LN_SD, gas_sd)), ESTIMATE_BELOW, ESTIMATE_ABOVE,
+        LAWS["yamamura_tawara"],
+        _effective_constants(material),
+        factor,
+        0.0,
+        1000.0,
+        ESTIMATE_RANGE_EV,
+        float(np.hypot(ESTIMATE_LN_SD, gas_sd)),
+        ESTIMATE_BELOW,
+        ESTIMATE_ABOVE,
     )
 
 
@@ -251,5 +289,11 @@ def _averaged(
     target = effective_target(
         share=shares, z=z, m_u=m_u, us_ev=us_ev, q=q, w_ev=w_ev, s=s, formation_ev_per_atom=formation
     )
-    return {"z2": target.z2, "m2_u": target.m2_u, "us_ev": target.us_ev, "q": target.q, "w_ev": target.w_ev,
-            "s": target.s}
+    return {
+        "z2": target.z2,
+        "m2_u": target.m2_u,
+        "us_ev": target.us_ev,
+        "q": target.q,
+        "w_ev": target.w_ev,
+        "s": target.s,
+    }

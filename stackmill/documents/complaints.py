@@ -76,6 +76,10 @@ def _sentences(item: Any, model: type[BaseModel], tree: Tree) -> Iterator[tuple[
     elif kind == "literal_error":
         choices = list(typing.get_args(_annotation(model_at(model, item["loc"][:-1]), key)))
         yield wording.not_a_choice(key.replace("_", " "), str(item["input"]), choices), path
+    elif kind == "no_kind":
+        yield Sentence(item["msg"], item["ctx"]["cure"]), path
+    elif kind == "too_short":
+        yield wording.nothing_in(key), path
     elif kind in _SHAPES:
         yield wording.wrong_shape(key, _SHAPES[kind], shape_of(item["input"])), path
     else:

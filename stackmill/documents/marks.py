@@ -34,10 +34,14 @@ _TAB_BEFORE_COMMENT = re.compile(r"^[^#\n]*?\t", re.MULTILINE)
 
 @dataclass(slots=True)
 class Node:
-    """A value in the file: where it begins, line and column from 1."""
+    """A value in the file: where it begins, line and column from 1.
+
+    source: the tree it came from, where that is not the one it stands in (a value given on the command line).
+    """
 
     line: int
     column: int
+    source: Tree | None = field(default=None, kw_only=True)
 
 
 @dataclass(slots=True)
@@ -81,12 +85,13 @@ class Tree:
 
     def place(self, path: KeyPath) -> Place:
         """Where the value at a key path stands; its nearest parent where it is missing."""
-        return self._place_of(self._walk(path)[0])
+        node, _, home = self._walk(path)
+        return home.place_of(node)
 
     def key_place(self, path: KeyPath) -> Place:
         """Where the last key of a path stands; as `place` where there is no such key."""
-        node, key = self._walk(path)
-        return self._place_of(key or node)
+        node, key, home = self._walk(path)
+        return home.place_of(key or node)
 
     def has(self, path: KeyPath) -> bool:
         """Whether the path leads all the way to a value."""
@@ -98,18 +103,22 @@ class Tree:
             node = found
         return True
 
-    def _walk(self, path: KeyPath) -> tuple[Node, Scalar | None]:
-        node, key = self.root, None
+    def _walk(self, path: KeyPath) -> tuple[Node, Scalar | None, Tree]:
+        node, key, home = self.root, None, self
         for step in path:
             found = _child(node, step)
             if found is None:
                 continue  # a step of the model that the file does not spell out, such as a list of one
             key = node.keys[str(step)] if isinstance(node, Block) else None
             node = found
-        return node, key
+            home = found.source or home
+        return node, key, home
 
-    def _place_of(self, node: Node) -> Place:
-        return Place(self.file, node.line, node.column, self.lines[node.line - 1] if self.lines else "")
+    def place_of(self, node: Node) -> Place:
+        """Where a value of this tree stands."""
+        if not self.lines:
+            return Place(self.file)
+        return Place(self.file, node.line, node.column, self.lines[node.line - 1])
 
 
 def _child(node: Node, step: str | int) -> Node | None:
@@ -198,9 +207,8 @@ class _Reader:
         try:
             return self._document()
         except yaml.MarkedYAMLError as error:
-            mark: Any
-            start: Any
-            mark, start = error.problem_mark, error.context_mark
+            marks: tuple[Any, Any] = (error.problem_mark, error.context_mark)
+            mark, start = marks
             opened = start.line + 1 if start is not None else 0
             line = mark.line if mark is not None else 0
             says = wording.yaml_problem(error.problem or "", self._line(line), opened)
@@ -227,11 +235,12 @@ class _Reader:
 
     def _node(self, event: Any, depth: int) -> Node:
         mark: Any = event.start_mark
+        end: Any = event.end_mark
         line, column = mark.line + 1, mark.column + 1
         self._check(event, depth)
         if isinstance(event, yaml.ScalarEvent):
             plain = event.style is None
-            if plain and event.end_mark.line > mark.line and event.value:
+            if plain and end.line > mark.line and event.value:
                 self._complain(mark, wording.SEVERAL_LINES)
             return Scalar(line, column, event.value, not plain)
         if isinstance(event, yaml.SequenceStartEvent):

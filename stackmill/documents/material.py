@@ -5,59 +5,80 @@ Every text with a unit is read on entry; the records hold inside units (eV, g/cm
 
 from __future__ import annotations
 
-from typing import Annotated, Any, Literal
+import math
+from typing import Annotated, Any, ClassVar, Literal
 
-from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, model_validator
+from pydantic import BeforeValidator, Field, PlainValidator, WithJsonSchema, model_validator
 
-from stackmill.documents.wording import Refusal, Sentence
-from stackmill.units import Measure, UnitsError, read_measure, read_number
+from stackmill.documents.fields import CurrentDensity, Energy, Incidence, Label, Rate, one_or_more
+from stackmill.documents.reading import Record
+from stackmill.documents.wording import refuse
+from stackmill.units import Measure, UnitsError, quoted, read_measure, read_number
 
 MaterialKind = Literal["metal", "semiconductor", "dielectric", "organic", "carbon", "composite"]
 
 
-def _quantity(kind: str) -> BeforeValidator:
+def _quantity(kind: str, *, above_zero: bool = False) -> PlainValidator:
     """Reads text such as `2.2 g/cm3 ± 1 %` into a Measure; a Measure passes as it is."""
 
-    def read(value: Any) -> Any:
-        return read_measure(value, kind) if isinstance(value, str) else value
+    def read(value: Any) -> Measure:
+        measure = value if isinstance(value, Measure) else read_measure(_text(value), kind)
+        if above_zero and measure.value <= 0.0:
+            raise UnitsError(f"{quoted(str(value))} is not above zero", "check its sign and unit")
+        return measure
 
-    return BeforeValidator(read)
-
-
-def _exact(kind: str) -> BeforeValidator:
-    """Reads text such as `500 eV` into a float; a float passes as it is."""
-
-    def read(value: Any) -> Any:
-        return read_number(value, kind) if isinstance(value, str) else value
-
-    return BeforeValidator(read)
+    return PlainValidator(read)
 
 
-def _yes_no(value: Any) -> Any:
-    """`yes` and `no` as the only words for a truth value."""
-    if isinstance(value, str):
-        if value not in ("yes", "no"):
-            raise UnitsError(f"'{value}' is neither yes nor no", "write yes or no")
-        return value == "yes"
+def _exact(kind: str) -> PlainValidator:
+    """Reads text such as `500 eV` into a float; a number passes as it is."""
+
+    def read(value: Any) -> float:
+        return float(value) if isinstance(value, int | float) else read_number(_text(value), kind)
+
+    return PlainValidator(read)
+
+
+def _text(value: Any) -> str:
+    if not isinstance(value, str):
+        raise UnitsError(
+            "something else stands where a number with its unit belongs", "write it like 2.2 g/cm3"
+        )
     return value
 
 
-YesNo = Annotated[bool, BeforeValidator(_yes_no)]
-Density = Annotated[Measure, _quantity("density")]
-BindingEnergy = Annotated[Measure, _quantity("binding_energy")]
-Temperature = Annotated[Measure, _quantity("temperature")]
-MillingRate = Annotated[Measure, _quantity("rate")]
-CurrentDensity = Annotated[Measure, _quantity("current_density")]
-EnergyEv = Annotated[float, _exact("energy")]
-AngleDeg = Annotated[float, _exact("angle")]
+def _written_as(form: str) -> WithJsonSchema:
+    return WithJsonSchema({"type": "string", "description": f"written as {form}"})
+
+
+def _yes_no(value: Any) -> bool:
+    """`yes` and `no` as the only words for a truth value."""
+    if isinstance(value, bool):
+        return value
+    if value not in ("yes", "no"):
+        raise UnitsError(f"{quoted(str(value))} is neither yes nor no", "write yes or no")
+    return bool(value == "yes")
+
+
+def _share(value: Any) -> float:
+    """The atoms of one element in a formula: a plain number above zero."""
+    try:
+        number = float(value)
+    except (TypeError, ValueError):
+        number = math.nan
+    if not 0.0 < number < math.inf:
+        raise UnitsError(f"{quoted(str(value))} is no number of atoms", "write it like {Si: 1, O: 2}")
+    return number
+
+
+YesNo = Annotated[bool, PlainValidator(_yes_no), WithJsonSchema({"enum": ["yes", "no"]})]
+Share = Annotated[float, PlainValidator(_share), WithJsonSchema({"type": ["number", "string"]})]
+Density = Annotated[Measure, _quantity("density", above_zero=True), _written_as("2.2 g/cm3 ± 2 %")]
+BindingEnergy = Annotated[Measure, _quantity("binding_energy"), _written_as("910.7 kJ/mol ± 1 %")]
+Temperature = Annotated[Measure, _quantity("temperature"), _written_as("1358 K")]
+EnergyEv = Annotated[float, _exact("energy"), _written_as("500 eV")]
 Finite = Annotated[float, Field(allow_inf_nan=False)]
 Positive = Annotated[float, Field(gt=0.0, allow_inf_nan=False)]
-
-
-class Record(BaseModel):
-    """Base of all records here: frozen, unknown keys refused."""
-
-    model_config = ConfigDict(frozen=True, extra="forbid", arbitrary_types_allowed=True)
 
 
 class DensityEntry(Record):
@@ -88,7 +109,7 @@ class ConstantsEntry(Record):
 
 
 class RowEntry(Record):
-    """One measured yield the law was tied to: ln is ln(measured/law) before the tie, sd that of the row's ln."""
+    """One measured yield the law was tied to: ln is ln(measured/law) before the tie, sd that of this ln."""
 
     ev: Positive
     atoms_per_ion: Positive
@@ -101,8 +122,8 @@ class RowEntry(Record):
 class FitEntry(Record):
     """How the law was tied to measured yields: yield = law x factor x (E/at)^exponent.
 
-    ln_sd: of ln yield between the ends of `range`; outside them it grows with the distance in ln E, by `below`
-    or `above` a factor e. rms: of the rows about the tie.
+    ln_sd: of ln yield between the ends of `range`; outside them it grows with the distance in ln E, by
+    `below` or `above` for each factor e. rms: of the rows about the tie.
     """
 
     factor: Positive
@@ -147,9 +168,7 @@ class AngularEntry(Record):
     @model_validator(mode="after")
     def _all_or_none(self) -> AngularEntry:
         if len({bool(self.f), bool(self.b), bool(self.c)}) != 1:
-            raise Refusal(
-                Sentence("an angular shape needs all of f, b and c, or none of them", "add the missing ones")
-            )
+            raise refuse("an angular shape needs all of f, b and c, or none of them", "add the missing ones")
         return self
 
 
@@ -186,7 +205,7 @@ class LibraryEntry(Record):
     aliases: tuple[str, ...] = ()
     title: str
     kind: MaterialKind
-    composition: dict[str, Positive]
+    composition: dict[str, Share]
     density: DensityEntry
     law: str
     constants: ConstantsEntry
@@ -239,35 +258,20 @@ class MeasuredRate(Record):
     same_day: measured with the current density the job states, so that the mill's current error is shared.
     """
 
-    rate: MillingRate
-    energy: EnergyEv
-    incidence: AngleDeg
-    current_density: CurrentDensity
+    what: ClassVar[str] = "measured rate"
+    rate: Rate = Field(examples=["41 nm/min ± 4 %"])
+    energy: Energy = Field(examples=["1 keV"])
+    incidence: Incidence = Field(examples=["45 deg"])
+    current_density: CurrentDensity = Field(examples=["0.5 mA/cm2"])
     same_day: YesNo = False
 
     @model_validator(mode="after")
-    def _plausible(self) -> MeasuredRate:
-        if self.rate.value <= 0.0 or self.energy <= 0.0 or self.current_density.value <= 0.0:
-            raise Refusal(
-                Sentence(
-                    "a measured rate needs a rate, an energy and a current density above zero",
-                    "write it like {rate: 41 nm/min ± 4 %, energy: 1 keV, incidence: 45 deg,"
-                    " current_density: 0.5 mA/cm2}",
-                )
-            )
-        if not 0.0 <= self.incidence < 90.0:
-            raise Refusal(
-                Sentence(
-                    f"an incidence of {self.incidence:g} deg is not from the surface normal",
-                    "give the angle from the normal, 0 deg to below 90 deg",
-                ),
-                "incidence",
-            )
+    def _above_zero(self) -> MeasuredRate:
+        if self.rate.value <= 0.0:
+            raise refuse("a measured rate has to be above zero", "write it like 41 nm/min ± 4 %", "rate")
+        if self.rate.sd == 0.0:
+            raise refuse("a measured rate needs its error", "write it like 41 nm/min ± 4 %", "rate")
         return self
-
-
-def _as_list(value: Any) -> Any:
-    return [value] if isinstance(value, dict) else value
 
 
 class LabMaterial(Record):
@@ -277,41 +281,37 @@ class LabMaterial(Record):
     then an estimate. density in g/cm3; formation: heat of formation per formula unit of composition, eV.
     """
 
-    name: str
-    like: str | None = None
-    title: str | None = None
+    what: ClassVar[str] = "material"
+    name: Label = Field(examples=["SiO2 PECVD"])
+    like: Label | None = None
+    title: Label | None = None
     kind: MaterialKind | None = None
-    aliases: tuple[str, ...] = ()
-    composition: dict[str, Positive] | None = None
+    aliases: Annotated[tuple[Label, ...], BeforeValidator(one_or_more)] = ()
+    composition: dict[str, Share] | None = None
     density: Density | None = None
     formation: BindingEnergy | None = None
-    measured_rate: Annotated[tuple[MeasuredRate, ...], BeforeValidator(_as_list)] = ()
-    toxicity: str | None = None
+    measured_rate: Annotated[tuple[MeasuredRate, ...], BeforeValidator(one_or_more)] = ()
+    toxicity: Label | None = None
 
     @model_validator(mode="after")
     def _complete(self) -> LabMaterial:
-        if self.density is not None and self.density.value <= 0.0:
-            raise Refusal(
-                Sentence("a density has to be above zero", "write it like 2.2 g/cm3 ± 2 %"), "density"
-            )
-        if self.composition is not None and self.density is None and self.like is None:
-            raise Refusal(
-                Sentence("a composition needs a density beside it", "add density: 2.2 g/cm3 ± 5 %"),
+        if not self.name:
+            raise refuse("this material has no name", "give it one", "name")
+        if self.composition is not None and self.like is not None:
+            raise refuse(
+                "like and composition stand together; one of them would be ignored",
+                "keep one of the two",
                 "composition",
+            )
+        if self.composition is not None and self.density is None:
+            raise refuse(
+                "a composition needs a density beside it", "add density: 2.2 g/cm3 ± 5 %", "composition"
             )
         if self.formation is not None and self.composition is None:
-            raise Refusal(
-                Sentence(
-                    "a formation heat needs the composition it belongs to", "add composition: {Si: 1, O: 2}"
-                ),
+            raise refuse(
+                "a formation heat needs the composition it belongs to",
+                "add composition: {Si: 1, O: 2}",
                 "formation",
-            )
-        if self.like is not None and self.composition is not None:
-            raise Refusal(
-                Sentence(
-                    "like and composition together: one of them would be ignored", "keep one of the two"
-                ),
-                "composition",
             )
         return self
 
@@ -319,4 +319,7 @@ class LabMaterial(Record):
 class MaterialsFile(Record):
     """A lab's materials file."""
 
-    materials: tuple[LabMaterial, ...]
+    what: ClassVar[str] = "materials file"
+    materials: Annotated[tuple[LabMaterial, ...], BeforeValidator(one_or_more)] = Field(
+        examples=["[{name: my oxide, like: SiO2 PECVD, density: 2.1 g/cm3 ± 3 %}]"]
+    )

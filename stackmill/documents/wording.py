@@ -1,4 +1,4 @@
-"""Every sentence an error about a file can say, and how a list of errors is laid out.
+"""Every sentence an error about a file can say.
 
 A complaint is one sentence as a colleague would say it, and a cure: what to write instead.
 """
@@ -10,11 +10,10 @@ import unicodedata
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 
-from stackmill.errors import InputError, InputErrors
+from stackmill.documents.showing import in_order, report
 from stackmill.units import quoted
 
-MOST_PRINTED = 20
-_WIDEST_EXCERPT = 100
+__all__ = ["in_order", "report"]  # so that one import serves to word and to lay out
 
 
 @dataclass(frozen=True, slots=True)
@@ -177,13 +176,14 @@ _YAML_PROBLEMS = (
 
 # --- files themselves ---------------------------------------------------------------------------------------
 
+NO_SUCH_FILE = "there is no such file"
 IS_A_FOLDER = Sentence("this is a folder, not a file", "name a file in it")
 
 
 def no_such_file(name: str, neighbours: Sequence[str]) -> Sentence:
     """A file that is not there."""
     near = nearest(name, neighbours)
-    return Sentence("there is no such file", f"did you mean {near}?" if near else "check its name and folder")
+    return Sentence(NO_SUCH_FILE, f"did you mean {near}?" if near else "check its name and folder")
 
 
 def cannot_open(reason: str) -> Sentence:
@@ -250,6 +250,11 @@ def empty(key: str) -> Sentence:
     return Sentence(f"nothing stands after '{key}:'", "write its value, or leave the key out")
 
 
+def nothing_in(key: str) -> Sentence:
+    """An empty list where something is needed."""
+    return Sentence(f"the list of '{key}' is empty", "name at least one")
+
+
 def wrong_shape(key: str, wanted: str, found: str) -> Sentence:
     """A list where a text belongs, and the like."""
     return Sentence(f"{key} has to be {wanted}, and this is {found}", f"write {wanted}")
@@ -262,41 +267,139 @@ def not_a_choice(key: str, text: str, choices: Sequence[str]) -> Sentence:
     return Sentence(f"{quoted(text)} is no {key}", cure)
 
 
-# --- laying errors out --------------------------------------------------------------------------------------
+def no_such(what: str, name: str, known: Sequence[str]) -> Sentence:
+    """A name that points to nothing. what: `layer`, `region`, `feature of metal 1`."""
+    return Sentence(f"there is no {what} called {quoted(name)}", choose(name, known, nothing="leave it out"))
 
 
-def in_order(errors: Iterable[InputError]) -> list[InputError]:
-    """Errors by file (in the order the files were first met), line and column, without repeats."""
-    flat = [e for error in errors for e in (error.errors if isinstance(error, InputErrors) else (error,))]
-    files = {e.file or "": 0 for e in flat}
-    rank = {file: k for k, file in enumerate(files)}
-    unique = list({e.headline(): e for e in flat}.values())
-    return sorted(unique, key=lambda e: (rank[e.file or ""], e.line or 0, e.column or 0))
+# --- values given on the command line -----------------------------------------------------------------------
+
+SET_EXAMPLE = "write --set 'mill.current_density=0.4 mA/cm2'"
 
 
-def report(error: InputError | Iterable[InputError], most: int = MOST_PRINTED) -> str:
-    """Errors as the command line prints them: headline, the line at fault, a caret; then how many more."""
-    errors = in_order([error] if isinstance(error, InputError) else error)
-    blocks = [_block(e) for e in errors[:most]]
-    if len(errors) > most:
-        blocks.append(f"and {len(errors) - most} more")
-    return "\n".join(blocks)
+def leads_nowhere(before: str, key: str) -> Sentence:
+    """A key path that goes on below a text."""
+    return Sentence(f"{before} is a single value and has no {quoted(key)}", "end the path there")
 
 
-def _block(error: InputError) -> str:
-    place = error.place
-    if place is None or not place.line or not place.excerpt.strip():
-        return error.headline()
-    line = "".join(c if c.isprintable() else " " for c in place.excerpt)
-    column = max(place.column - 1, 0)
-    start = max(0, column - _WIDEST_EXCERPT * 2 // 3) if len(line) > _WIDEST_EXCERPT else 0
-    shown = line[start : start + _WIDEST_EXCERPT]
-    # A wide character takes two cells of a terminal, a combining one none.
-    before = "".join(" " * _cells(c) for c in line[start:column])
-    return f"{error.headline()}\n    {shown}\n    {before}^"
+def no_such_item(key: str, count: int, names: Sequence[str]) -> Sentence:
+    """A list item that is not there."""
+    known = f", or a name: {listed(names)}" if names else ""
+    return Sentence(f"there is no item {quoted(key)} in this list", f"count from 1 to {count}{known}")
 
 
-def _cells(character: str) -> int:
-    if unicodedata.combining(character):
-        return 0
-    return 2 if unicodedata.east_asian_width(character) in "WF" else 1
+# --- one file against another -------------------------------------------------------------------------------
+
+
+def needs_a_job(kind: str) -> Sentence:
+    """A file of another kind where a job is asked for."""
+    return Sentence(f"this is a {kind} file", f"give a job file that names it as '{kind}:', or a stack file")
+
+
+def wrong_kind(path: str, found: str, wanted: str) -> Sentence:
+    """A path that leads to another kind of file."""
+    return Sentence(f"{path} is a {found} file, not a {wanted} file", f"name a {wanted} file")
+
+
+def binds_back(path: str) -> Sentence:
+    """A path that leads back to the file it stands in."""
+    return Sentence(f"{path} is this job file itself", "name the other file")
+
+
+def cannot_bind(path: str, why: str, cure: str) -> Sentence:
+    """A bound file that cannot be read. why: as where it is opened by itself."""
+    if why == NO_SUCH_FILE:
+        return Sentence(
+            f"there is no file {quoted(path)}", cure or "its path counts from the folder of this file"
+        )
+    return Sentence(f"{quoted(path)} cannot be read: {why}", cure)
+
+
+def unknown_material(name: str, near: Sequence[str]) -> Sentence:
+    """A material neither the library nor the lab's overlay knows."""
+    cure = (
+        f"did you mean {listed(near)}?"
+        if near
+        else "'stackmill materials' lists them; a lab's own go in a materials file"
+    )
+    return Sentence(f"no material is called {quoted(name)}", cure)
+
+
+def absent_from(what: str, region: str, where: Sequence[str]) -> Sentence:
+    """A layer or feature that a region lacks."""
+    cure = f"it is in {listed(where, last='and')}" if where else "no region has it"
+    return Sentence(f"region {quoted(region)} has no {what}", cure)
+
+
+def nowhere(what: str) -> Sentence:
+    """A layer or feature that no region has."""
+    return Sentence(f"no region has {what}", "check what the regions leave out")
+
+
+def too_slow(energy: str, gas: str, material: str, threshold: str) -> Sentence:
+    """An energy that sputters nothing."""
+    return Sentence(
+        f"{energy} {gas} is below the {threshold} it takes to sputter {material}", "use more energy"
+    )
+
+
+def never_reached(step: str, target: str) -> Sentence:
+    """A step that would go on for ever."""
+    return Sentence(
+        f"step {quoted(step)} never reaches {target}", "is it covered, or is something in its way not milled?"
+    )
+
+
+def already_passed(step: str, target: str) -> Sentence:
+    """A step whose end lies behind it."""
+    return Sentence(
+        f"{target} has been reached before step {quoted(step)} begins", "aim deeper, or leave the step out"
+    )
+
+
+def no_rate(step: str, materials: Sequence[str]) -> Sentence:
+    """A process that does not say what it does to some of the stack."""
+    what = listed(materials, last="and")
+    return Sentence(f"step {quoted(step)} gives no rate for {what}", "add it, or other: 0 nm/min")
+
+
+def touches_nothing(step: str) -> Sentence:
+    """A strip or process whose materials the stack does not have."""
+    return Sentence(
+        f"step {quoted(step)} names no material of this stack", "check the names, or leave the step out"
+    )
+
+
+def covered_already(region: str, step: str) -> Sentence:
+    """A region covered twice."""
+    return Sentence(f"region {quoted(region)} is covered already, by step {quoted(step)}", "uncover it first")
+
+
+def not_covered(region: str) -> Sentence:
+    """A region uncovered that is bare."""
+    return Sentence(
+        f"region {quoted(region)} is not covered here", "cover it in an earlier step, or leave it out"
+    )
+
+
+def keeps_more_than_there_is(what: str, thickness: str) -> Sentence:
+    """A keep thicker than what it keeps."""
+    return Sentence(f"{what} is only {thickness} thick to begin with", "ask for less")
+
+
+def overlapping(first: str, second: str) -> Sentence:
+    """Two features of one layer in one place."""
+    return Sentence(
+        f"features {quoted(first)} and {quoted(second)} overlap",
+        "move one, or give both the same material and films",
+    )
+
+
+def outside_cell(feature: str) -> Sentence:
+    """A feature with its centre outside the cell."""
+    return Sentence(f"feature {quoted(feature)} lies outside the cell", "move it, or make the cell larger")
+
+
+def films_too_thick(feature: str, why: str) -> Sentence:
+    """Films that do not fit inside their feature."""
+    return Sentence(f"the films of feature {quoted(feature)} do not fit in it: {why}", "make them thinner")

@@ -28,8 +28,9 @@ def positive(name: str, value: ArrayLike) -> Array:
     return array
 
 
-def warn_outside(law: str, name: str, value: Array, low: float, high: float, source: str) -> None:
-    """One StackmillWarning when any of `value` lies outside low..high; nothing is changed."""
+def warn_outside(law: str, value: Array, *, name: str, allowed: tuple[float, float], source: str) -> None:
+    """One StackmillWarning when any of `value` lies outside `allowed`; nothing is changed."""
+    low, high = allowed
     outside = (value < low) | (value > high)
     if np.any(outside):
         worst = float(np.asarray(value)[outside].flat[0])

@@ -90,13 +90,15 @@ def component_steady_state(*, share: ArrayLike, component_yield: ArrayLike) -> S
     """
     c, Y = _normalised(share), positive("component_yield", component_yield)
     if c.shape != Y.shape:
-        raise ValueError(f"share and component_yield must have one value an element, not {c.shape} and {Y.shape}")
+        raise ValueError(
+            f"share and component_yield must have one value an element, not {c.shape} and {Y.shape}"
+        )
     weight = c / Y
     return SteadyState(surface_share=weight / weight.sum(), total_yield=float(1.0 / weight.sum()))
 
 
-LIGHT_COMPOUND_LN_FACTOR = 0.36
-LIGHT_COMPOUND_SLOPE = -0.60
+LIGHT_COMPOUND_LN_FACTOR = 0.30
+LIGHT_COMPOUND_SLOPE = -0.70
 
 
 def tie_of_unmeasured(*, mean_mass_u: ArrayLike, ion_mass_u: float = 39.948) -> Array:
@@ -114,4 +116,4 @@ def tie_of_unmeasured(*, mean_mass_u: ArrayLike, ion_mass_u: float = 39.948) -> 
 
 def _normalised(share: ArrayLike) -> Array:
     c = positive("share", share)
-    return c / c.sum()
+    return np.asarray(c / c.sum())

@@ -20,8 +20,8 @@ SMALLEST_COSINE = 1e-9
 def yamamura_angular(*, incidence_rad: ArrayLike, f: ArrayLike, theta_opt_rad: ArrayLike) -> Array:
     """Y(th)/Y(0) of Yamamura, Itikawa & Itoh 1983 [no unit].
 
-    incidence_rad: th [rad], 0 to pi/2. f: exponent, about 1.5 to 3 for heavy ions. theta_opt_rad: incidence of
-    greatest yield [rad].
+    incidence_rad: th [rad], 0 to pi/2. f: exponent, about 1.5 to 3 for heavy ions. theta_opt_rad:
+    incidence of greatest yield [rad].
 
         Y/Y0 = t^f exp(-Sigma (t - 1)),   t = 1/cos th,   Sigma = f cos(theta_opt)
 
@@ -77,8 +77,8 @@ def yamamura_optimum_rad(
 def eckstein_angular(*, incidence_rad: ArrayLike, f: ArrayLike, b: ArrayLike, c: ArrayLike) -> Array:
     """Y(th)/Y(0) of Eckstein & Preuss 2003 for noble-gas ions [no unit].
 
-    incidence_rad: th [rad]. f, b, c: fitted constants of the pair at one energy, usually f 1 to 7, b 0.4 to 1.5,
-    c 0.4 to 0.8.
+    incidence_rad: th [rad]. f, b, c: fitted constants of the pair at one energy, usually f 1 to 7,
+    b 0.4 to 1.5, c 0.4 to 0.8.
 
         ln(Y/Y0) = -f ln C + b (1 - 1/C),   C = cos[(2 th/pi)^c pi/2]
 
@@ -112,11 +112,13 @@ class AngularShape:
 NEAR_THRESHOLD = 0.85
 MASS_RATIO_POWER = 0.714
 # rows f, b, c; columns: A, B (times sqrt(Eth/E)), C, D (times sqrt(Eth/E)), see ep_constants
-MASS_RULE = np.array([
-    [0.685, 1.769, 0.244, 2.105],
-    [0.117, 1.844, 0.060, -0.153],
-    [0.767, -0.068, -0.049, -0.074],
-])
+MASS_RULE = np.array(
+    [
+        [0.685, 1.769, 0.244, 2.105],
+        [0.117, 1.844, 0.060, -0.153],
+        [0.767, -0.068, -0.049, -0.074],
+    ]
+)
 
 
 def ep_constants(*, mass_ratio: ArrayLike, eth_over_e: ArrayLike) -> AngularShape:
@@ -129,8 +131,8 @@ def ep_constants(*, mass_ratio: ArrayLike, eth_over_e: ArrayLike) -> AngularShap
 
     Range: W to C under argon, 200 eV to 1 keV, where it comes back to 6 % and 13 % rms of ln(Y/Y0) over
     15 to 75 degrees; elsewhere it is an interpolation. Real roughness lowers the rise.
-    Source: our own fit (tests/published/fit_angular.py) to the computed yields of Ar on W and C in W. Eckstein,
-    IPP-Report 9/117 (1998), and to the recalled maxima of Cu, Au, Si, Al and Ti near 1 keV.
+    Source: our own fit (tests/published/fit_angular.py) to the computed yields of Ar on W and C in
+    W. Eckstein, IPP-Report 9/117 (1998), and to the recalled maxima of Cu, Au, Si, Al and Ti near 1 keV.
     """
     r = np.clip(positive("mass_ratio", mass_ratio), 0.1, 5.0) ** MASS_RATIO_POWER
     s = root_of_closeness(eth_over_e=eth_over_e)
@@ -139,7 +141,7 @@ def ep_constants(*, mass_ratio: ArrayLike, eth_over_e: ArrayLike) -> AngularShap
 
 
 def root_of_closeness(*, eth_over_e: ArrayLike) -> Array:
-    """s = sqrt(Eth/E), held to 0.85: how close to threshold the beam is [no unit]."""
+    """S = sqrt(Eth/E), held to 0.85: how close to threshold the beam is [no unit]."""
     return np.minimum(np.sqrt(positive("eth_over_e", eth_over_e)), NEAR_THRESHOLD)
 
 

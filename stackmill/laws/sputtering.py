@@ -17,12 +17,8 @@ from numpy.typing import ArrayLike
 from stackmill.constants import BOHR_RADIUS_A, COULOMB_EV_A
 from stackmill.laws.checks import Array, finite, positive, warn_outside
 
-YT_CITATION = (
-    "Yamamura & Tawara, At. Data Nucl. Data Tables 62, 149 (1996), with erratum 63, 353 (1996)"
-)
-EP_CITATION = (
-    "Eckstein & Preuss, J. Nucl. Mater. 320, 209 (2003); Eckstein, Topics Appl. Phys. 110 (2007)"
-)
+YT_CITATION = "Yamamura & Tawara, At. Data Nucl. Data Tables 62, 149 (1996), with erratum 63, 353 (1996)"
+EP_CITATION = "Eckstein & Preuss, J. Nucl. Mater. 320, 209 (2003); Eckstein, Topics Appl. Phys. 110 (2007)"
 YT_RANGE_EV = (50.0, 1e5)
 EP_RANGE_EV = (50.0, 1e5)
 
@@ -41,17 +37,17 @@ def yamamura_tawara(
 ) -> Array:
     """Yield of an element at normal incidence, Yamamura & Tawara 1996 [atoms/ion].
 
-    energy_ev: ion energy E [eV], usually 100 to 10000. z1, m1_u: ion's atomic number and mass [u]. z2, m2_u: the
-    target's (z2 may be a mean, not whole). us_ev: surface binding energy Us [eV], usually 2 to 9. q, w_ev, s:
-    the paper's Q, W [eV] and s of the target; for targets it does not list the authors advise Q = 1,
+    energy_ev: ion energy E [eV], usually 100 to 10000. z1, m1_u: ion's atomic number and mass [u]. z2, m2_u:
+    the target's (z2 may be a mean, not whole). us_ev: surface binding energy Us [eV], usually 2 to 9. q, w_ev,
+    s: the paper's Q, W [eV] and s of the target; for targets it does not list the authors advise Q = 1,
     W = 0.35 Us, s = 2.5.
 
         Y = 0.042 Q a*/Us  Sn / (1 + Gamma ke eps^0.3)  (1 - sqrt(Eth/E))^s,   0 for E <= Eth
         Sn = 84.78 z1 z2/sqrt(L)  m1/(m1 + m2)  sn(eps)          [eV Angstrom^2]
         eps = 0.03255/(z1 z2 sqrt(L))  m2/(m1 + m2)  E,   Gamma = W/(1 + (m1/7)^3)
 
-    Range: 50 eV to 100 keV (from memory); outside it computes and warns once. Below about 200 eV the law is poor (measured yields
-    scatter about it by a factor 1.4 at 100 eV: docs/accuracy.md).
+    Range: 50 eV to 100 keV (from memory); outside it computes and warns once. Below about 200 eV the law is
+    poor (measured yields scatter about it by a factor 1.4 at 100 eV: docs/accuracy.md).
     Differs from the paper: its 8.478 in Sn is 84.78 here, as its erratum says for these units.
     Checked: against an independent evaluation (tests/published), all digits given.
     Source: At. Data Nucl. Data Tables 62, 149 (1996); erratum 63, 353 (1996).
@@ -60,7 +56,7 @@ def yamamura_tawara(
     z1, m1 = positive("z1", z1), positive("m1_u", m1_u)
     z2, m2 = positive("z2", z2), positive("m2_u", m2_u)
     Us, Q, W, s = positive("us_ev", us_ev), positive("q", q), finite("w_ev", w_ev), positive("s", s)
-    warn_outside("Yamamura-Tawara yield", "energy_ev", E, *YT_RANGE_EV, YT_CITATION)
+    warn_outside("Yamamura-Tawara yield", E, name="energy_ev", allowed=YT_RANGE_EV, source=YT_CITATION)
     L = z1 ** (2 / 3) + z2 ** (2 / 3)
     eps = 0.03255 / (z1 * z2 * np.sqrt(L)) * m2 / (m1 + m2) * E
     Sn = 84.78 * z1 * z2 / np.sqrt(L) * m1 / (m1 + m2) * thomas_fermi_stopping(eps=eps)
@@ -78,9 +74,7 @@ def thomas_fermi_stopping(*, eps: ArrayLike) -> Array:
     """
     e = positive("eps", eps)
     root = np.sqrt(e)
-    return np.asarray(
-        3.441 * root * np.log(e + 2.718) / (1.0 + 6.355 * root + e * (6.882 * root - 1.708))
-    )
+    return np.asarray(3.441 * root * np.log(e + 2.718) / (1.0 + 6.355 * root + e * (6.882 * root - 1.708)))
 
 
 def _alpha(mu: Array) -> Array:
@@ -129,13 +123,13 @@ def eckstein_preuss(
     Differs from the 2007 chapter: its eq. (2) prints a bare lambda, which misses the tables by up to a
     factor 35 near threshold; lambda/w brings them back to 4 digits.
     Checked: against the tabulated yields of Ar on W and Ta (tests/published), 4 digits.
-    Source: J. Nucl. Mater. 320, 209 (2003); data base of the IAEA, db-amdis.org/pwidb, sets 304, 443, 455, 521.
+    Source: J. Nucl. Mater. 320, 209 (2003); data base of the IAEA, db-amdis.org/pwidb, sets 304, 443, 455.
     """
     E, Eth = positive("energy_ev", energy_ev), positive("eth_ev", eth_ev)
     z1, m1 = positive("z1", z1), positive("m1_u", m1_u)
     z2, m2 = positive("z2", z2), positive("m2_u", m2_u)
     lam, q, mu = positive("lam", lam), positive("q", q), positive("mu", mu)
-    warn_outside("Eckstein-Preuss yield", "energy_ev", E, *EP_RANGE_EV, EP_CITATION)
+    warn_outside("Eckstein-Preuss yield", E, name="energy_ev", allowed=EP_RANGE_EV, source=EP_CITATION)
     L = z1 ** (2 / 3) + z2 ** (2 / 3)
     screening = (9.0 * np.pi**2 / 128.0) ** (1 / 3) * BOHR_RADIUS_A / np.sqrt(L)
     eps = E * m2 / (m1 + m2) * screening / (z1 * z2 * COULOMB_EV_A)
@@ -169,30 +163,32 @@ class YieldLaw:
     checked: str
 
 
-LAWS: Mapping[str, YieldLaw] = MappingProxyType({
-    law.name: law
-    for law in (
-        YieldLaw(
-            name="yamamura_tawara",
-            function=yamamura_tawara,
-            needs=("z2", "m2_u", "us_ev", "q", "w_ev", "s"),
-            threshold=threshold_yamamura_tawara,
-            threshold_needs=("m1_u", "m2_u", "us_ev"),
-            gases=("neon", "argon", "krypton", "xenon"),
-            range_ev=YT_RANGE_EV,
-            citation=YT_CITATION,
-            checked="independent evaluation, 7 elements, 500 eV to 5 keV",
-        ),
-        YieldLaw(
-            name="eckstein_preuss",
-            function=eckstein_preuss,
-            needs=("z2", "m2_u", "lam", "q", "mu", "eth_ev"),
-            threshold=threshold_eckstein_preuss,
-            threshold_needs=("eth_ev",),
-            gases=("argon",),
-            range_ev=EP_RANGE_EV,
-            citation=EP_CITATION,
-            checked="published tables of Ar on W and Ta, 145 eV to 10 keV, 4 digits",
-        ),
-    )
-})
+LAWS: Mapping[str, YieldLaw] = MappingProxyType(
+    {
+        law.name: law
+        for law in (
+            YieldLaw(
+                name="yamamura_tawara",
+                function=yamamura_tawara,
+                needs=("z2", "m2_u", "us_ev", "q", "w_ev", "s"),
+                threshold=threshold_yamamura_tawara,
+                threshold_needs=("m1_u", "m2_u", "us_ev"),
+                gases=("neon", "argon", "krypton", "xenon"),
+                range_ev=YT_RANGE_EV,
+                citation=YT_CITATION,
+                checked="independent evaluation, 7 elements, 500 eV to 5 keV",
+            ),
+            YieldLaw(
+                name="eckstein_preuss",
+                function=eckstein_preuss,
+                needs=("z2", "m2_u", "lam", "q", "mu", "eth_ev"),
+                threshold=threshold_eckstein_preuss,
+                threshold_needs=("eth_ev",),
+                gases=("argon",),
+                range_ev=EP_RANGE_EV,
+                citation=EP_CITATION,
+                checked="published tables of Ar on W and Ta, 145 eV to 10 keV, 4 digits",
+            ),
+        )
+    }
+)

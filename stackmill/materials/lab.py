@@ -1,4 +1,4 @@
-"""A lab's own materials: laid over an entry of the library, copied from one, or estimated from a composition."""
+"""A lab's own materials: laid over an entry of the library, copied from one, or estimated from atoms."""
 
 from __future__ import annotations
 
@@ -20,7 +20,10 @@ def overlay(lab: LabMaterial, base: Material | None, atoms: Mapping[str, Atom]) 
 
     Raises InputError when the composition names something that is no element of the table.
     """
-    changes: dict[str, Any] = {"origin": LAB_SOURCE, "measured_rates": tuple(map(_lab_rate, lab.measured_rate))}
+    changes: dict[str, Any] = {
+        "origin": LAB_SOURCE,
+        "measured_rates": tuple(map(_lab_rate, lab.measured_rate)),
+    }
     if lab.title is not None:
         changes["title"] = lab.title
     if lab.kind is not None:
@@ -80,12 +83,16 @@ def _estimated(lab: LabMaterial, atoms: Mapping[str, Atom]) -> Material:
         mean_mass_u=mean_mass,
         law="yamamura_tawara",
         constants=MappingProxyType({}),
-        constants_source=used[0].source,
+        constants_source="effective-target",
         constants_seen=all(atom.seen for atom in used),
         tie=None,
-        angular=AngularData((), (), (), 0.4, "rule in the mass ratio; compound not measured", "angular-rule", True),
+        angular=AngularData(
+            (), (), (), 0.4, "rule in the mass ratio; compound not measured", "angular-rule", True
+        ),
         estimate=True,
-        formation=None if formation is None else Sourced(
+        formation=None
+        if formation is None
+        else Sourced(
             formation.value, formation.sd, "eV per formula unit", "as the lab states it", LAB_SOURCE, True
         ),
         atoms=used,

@@ -1,16 +1,16 @@
-"""The library of materials: finds entries by name, parses only those asked for, lays a lab's own over them."""
+"""The library of materials: finds entries by name, parses only those asked for, lays a lab's own over."""
 
 from __future__ import annotations
 
 import difflib
 from collections.abc import Mapping, Sequence
 from pathlib import Path
-from typing import Any, TypeVar
+from typing import TypeVar
 
-from pydantic import BaseModel, ValidationError
+from pydantic import BaseModel
 
-from stackmill.documents.marks import read_tree
 from stackmill.documents.material import AtomsFile, LabMaterial, LibraryEntry, SourcesFile
+from stackmill.documents.reading import read_document
 from stackmill.errors import InputError, Place
 from stackmill.materials.lab import overlay
 from stackmill.materials.material import Atom, Material
@@ -46,7 +46,8 @@ class Library:
     def load(cls, overlays: Sequence[LabMaterial] = (), *, folder: Path = DATA) -> Library:
         """The library in `folder` with a lab's materials over it, first to last.
 
-        Raises InputError when an overlay cannot be understood (unknown `like`, or neither like nor composition).
+        Raises UnknownMaterialError for a lab material that is neither known, nor `like` a known one, nor given
+        by a composition; InputError for a composition of unknown elements.
         """
         files: dict[str, Path] = {}
         known: dict[str, str] = {}
@@ -112,7 +113,7 @@ class Library:
         name = self._known.get(lab.name, lab.name) if lab.like is None else lab.name
         self._read[name] = material
         self._known[name] = name
-        self._known.update({alias: name for alias in lab.aliases})
+        self._known.update(dict.fromkeys(lab.aliases, name))
 
 
 def _head(path: Path) -> tuple[str, tuple[str, ...]]:
@@ -130,14 +131,4 @@ def _head(path: Path) -> tuple[str, tuple[str, ...]]:
 
 
 def _read(model: type[_Model], path: Path) -> _Model:
-    tree = read_tree(path.read_bytes(), path.name)
-    try:
-        return model.model_validate(tree.plain())
-    except ValidationError as error:
-        first = error.errors()[0]
-        where: Any = first["loc"]
-        raise InputError(
-            f"{'.'.join(map(str, where))}: {first['msg']}",
-            cure="correct this entry of the library",
-            place=tree.place(tuple(where)),
-        ) from error
+    return read_document(model, path, file=path.name).model

@@ -13,8 +13,8 @@ from stackmill.units import Measure
 class Sourced:
     """A number with everything it must not travel without.
 
-    value and sd in `unit`; conditions: what it is true of; source: a key of the library's sources; seen: whether
-    a copy of the source was seen, or the number is from memory.
+    value and sd in `unit`; conditions: what it is true of; source: a key of the library's sources; seen:
+    whether a copy of the source was seen, or the number is from memory.
     """
 
     value: float
@@ -183,7 +183,7 @@ class Material:
 
     @property
     def angular_sd(self) -> float:
-        """sd of ln(Y/Y0) at 60 degrees."""
+        """Sd of ln(Y/Y0) at 60 degrees."""
         return self.angular.ln_sd_60
 
     @property

@@ -27,8 +27,12 @@ def material_from_entry(entry: LibraryEntry) -> Material:
         aliases=entry.aliases,
         composition=MappingProxyType(dict(entry.composition)),
         density=Sourced(
-            density.value.value, density.value.sd, "g/cm3", f"{density.form}; {density.conditions}",
-            density.source, density.seen,
+            density.value.value,
+            density.value.sd,
+            "g/cm3",
+            f"{density.form}; {density.conditions}",
+            density.source,
+            density.seen,
         ),
         mean_mass_u=entry.constants.values["m2_u"],
         law=entry.law,
@@ -55,15 +59,21 @@ def _tie(fit: FitEntry) -> YieldTie:
         YieldRow(row.ev, row.atoms_per_ion, row.ln, row.sd, row.source, row.seen) for row in fit.rows
     )
     return YieldTie(
-        factor=fit.factor, exponent=fit.exponent, at_ev=fit.at, ln_sd=fit.ln_sd, range_ev=fit.range,
-        below_per_efold=fit.below, above_per_efold=fit.above, rms=fit.rms, basis=fit.basis, rows=rows,
+        factor=fit.factor,
+        exponent=fit.exponent,
+        at_ev=fit.at,
+        ln_sd=fit.ln_sd,
+        range_ev=fit.range,
+        below_per_efold=fit.below,
+        above_per_efold=fit.above,
+        rms=fit.rms,
+        basis=fit.basis,
+        rows=rows,
     )
 
 
 def _angular(entry: AngularEntry) -> AngularData:
-    return AngularData(
-        entry.f, entry.b, entry.c, entry.ln_sd_60, entry.conditions, entry.source, entry.seen
-    )
+    return AngularData(entry.f, entry.b, entry.c, entry.ln_sd_60, entry.conditions, entry.source, entry.seen)
 
 
 def _other_gases(entry: LibraryEntry) -> OtherGases | None:
@@ -79,7 +89,9 @@ def _formation(entry: LibraryEntry) -> Sourced | None:
     heat = entry.formation
     if heat is None:
         return None
-    return Sourced(heat.value.value, heat.value.sd, "eV per formula unit", heat.conditions, heat.source, heat.seen)
+    return Sourced(
+        heat.value.value, heat.value.sd, "eV per formula unit", heat.conditions, heat.source, heat.seen
+    )
 
 
 def _melting(entry: LibraryEntry) -> Sourced | None:

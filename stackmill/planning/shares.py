@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from stackmill.ensemble import Ensemble
+from stackmill.ensemble.run import Ensemble
 from stackmill.planning.windows import Window
 
 

@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from stackmill.documents.recipe import Beam
-from stackmill.ensemble import DRAWS, SEED, Ensemble, run
+from stackmill.ensemble.run import DRAWS, SEED, Ensemble, run
 from stackmill.jobs import Job
 from stackmill.planning.shares import Share, variance_shares
 from stackmill.planning.windows import Window, find_window, quantiles

@@ -14,7 +14,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from stackmill.ensemble import Ensemble, Outcome
+from stackmill.ensemble.run import Ensemble, Outcome
 
 Array = NDArray[np.float64]
 
@@ -87,6 +87,8 @@ def chance_curve(begin_s: Array, end_s: Array, weights: Array) -> ChanceCurve:
     times = np.concatenate([begin_s, end_s])
     change = np.concatenate([weights, -weights])
     met = np.isfinite(times)
+    if not met.any():
+        return ChanceCurve(np.array([-np.inf]), np.array([0.0]))
     times, change = times[met], change[met]
     order = np.argsort(times, kind="stable")
     time_s, first = np.unique(times[order], return_index=True)

@@ -8,6 +8,7 @@ from typing import Any
 from stackmill.planning.stops import Reach, StopTable
 from stackmill.planning.windows import Window
 from stackmill.report.render import Grid, Paper, csv_text, json_text, wrapped
+from stackmill.report.words import step_in_words
 from stackmill.units import clock, format_time
 
 ROW_NAMES = (
@@ -94,7 +95,7 @@ def as_text(table: StopTable, paper: Paper, *, markdown: bool = False) -> str:
 def _heading(table: StopTable, paper: Paper) -> str:
     job = table.ensemble.inputs.job
     lines = [job.title, f"Mill: {job.mill.title}"]
-    lines += [f"{n}. {step.in_words(job.mill.stage)}" for n, step in enumerate(job.recipe.steps, 1)]
+    lines += [f"{n}. {step_in_words(step, job.mill.stage)}" for n, step in enumerate(job.recipe.steps, 1)]
     return "\n".join(wrapped(line, paper.width, "   ") for line in lines)
 
 

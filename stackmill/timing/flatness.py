@@ -93,8 +93,9 @@ class _Pairs:
         own = np.broadcast_to(material[:, None], self.slope.shape)
         steepest = np.where(slower, speeds.slope_index(own, other), 0)
         last = len(speeds.slope) - 1
-        self.slope = np.maximum(self.slope, np.where(self.wall, last, steepest))
         below = self.height_nm[:, None] < self.height_nm[None, :]
+        # A wall's top sends its kink into the side that stands; the side below gets the wall's foot.
+        self.slope = np.maximum(self.slope, np.where(self.wall & ~below, last, steepest))
         kink = speeds.kink_nm_per_s[own, self.slope]
         foot = np.where(self.wall & below, speeds.foot_nm_per_s[own], 0.0)
         pace = np.maximum(kink, foot)

@@ -7,7 +7,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from stackmill.ensemble import Outcome
+from stackmill.ensemble.run import Outcome
 from stackmill.planning.windows import (
     best_stop,
     chance_curve,

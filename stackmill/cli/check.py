@@ -1,0 +1,33 @@
+"""stackmill check: is everything in order, and what does it say?"""
+
+from __future__ import annotations
+
+import typer
+
+from stackmill.cli.options import Ascii, Debug, File, Output, Force, Quiet, Set, Strict
+
+
+def check(
+    file: File,
+    output: Output = "-",
+    force: Force = False,
+    set_: Set = None,
+    ascii_only: Ascii = False,
+    quiet: Quiet = False,
+    strict: Strict = False,
+    debug: Debug = False,
+) -> None:
+    """Check a job or stack file and every file it binds; report every mistake, or describe what it says.
+
+    Example: stackmill check job.yaml
+    """
+    from stackmill.cli.output import gathered_warnings, paper, write
+    from stackmill.jobs import load_job, overrides
+    from stackmill.report.describe import describe
+
+    with gathered_warnings(quiet=quiet, strict=strict):
+        job = load_job(file, overrides=overrides(set_ or []))
+        text = describe(job, paper(output, ascii_only))
+    write(text, output, force=force)
+    if not quiet:
+        typer.echo("in order", err=True)

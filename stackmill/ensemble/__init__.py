@@ -1,0 +1,1 @@
+"""Many dies and mills that may be true, and what share of them succeeds."""

@@ -1,0 +1,114 @@
+"""The uncertain inputs of a job, and how draws of them become dies and mills."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from stackmill.documents.recipe import OTHER, Beam, Process
+from stackmill.jobs import Job
+from stackmill.rate_model import RateModel, rate_model
+
+Array = NDArray[np.float64]
+
+
+@dataclass(frozen=True)
+class Inputs:
+    """The uncertain inputs of a job, by name: the rows (N,) of every draw."""
+
+    job: Job
+    model: RateModel
+    names: tuple[str, ...]
+    rate_root: Array
+
+    @classmethod
+    def of(cls, job: Job) -> Inputs:
+        """All inputs of a job that can differ from their best values."""
+        model = rate_model(job.mill, job.recipe.steps, job.milled_materials)
+        return cls(job, model, tuple(_names(job, model)), model.belief.root())
+
+    def sample(self, z: Array) -> Sample:
+        """Dies and mills from standard normal draws (N, D)."""
+        rows = dict(zip(self.names, z, strict=True))
+        belief = self.model.belief
+        free = np.stack([rows[name] for name in belief.names])
+        return Sample(self, rows, belief.mean[:, None] + self.rate_root @ free)
+
+    def best(self) -> Sample:
+        """The one die and mill in which every input has its best value."""
+        return self.sample(np.zeros((len(self.names), 1)))
+
+
+@dataclass(frozen=True)
+class Sample:
+    """D dies and mills that may be true. rows: name -> (D,); parameters (P, D) of the rate model."""
+
+    inputs: Inputs
+    rows: Mapping[str, Array]
+    parameters: Array
+
+    @property
+    def draws(self) -> int:
+        """How many dies and mills there are."""
+        return self.parameters.shape[1]
+
+    def thickness_deltas_nm(self) -> list[Array]:
+        """How far off each thickness input is, for each region: a list of (L, D), in nm."""
+        column_map = self.inputs.job.column_map
+        shared = np.zeros((len(column_map.inputs), self.draws))
+        for k, i in enumerate(column_map.inputs):
+            if i.thickness.sd:
+                shared[k] = i.thickness.sd * self.rows[f"thickness of {i.name}"]
+        regions = []
+        for region in column_map.regions:
+            deltas = shared.copy()
+            for k, i in enumerate(column_map.inputs):
+                if i.thickness.across_sd:
+                    deltas[k] += i.thickness.across_sd * self.rows[f"thickness of {i.name} at {region.name}"]
+            regions.append(deltas)
+        return regions
+
+    def rate_nm_per_s(self, step: int, material: str) -> Array:
+        """Milling rate (D,) of a material in a step of the recipe."""
+        what = self.inputs.job.recipe.steps[step]
+        if isinstance(what, Process):
+            return self._process_rate(what, material)
+        charged = self.inputs.job.mill.doubly_charged
+        share = np.full(self.draws, charged.value)
+        if charged.sd:
+            share = np.clip(share + charged.sd * self.rows["doubly charged share"], 0.0, 1.0)
+        return self.inputs.model.rate_nm_per_s(step, material, parameters=self.parameters, doubly_charged=share)
+
+    def _process_rate(self, step: Process, material: str) -> Array:
+        name = material if material in step.rates else OTHER
+        rate = step.rates[name]
+        if not rate.sd:
+            return np.full(self.draws, rate.value)
+        return rate.value * np.exp(rate.rel_sd * self.rows[f"{step.name}: rate of {name}"])
+
+    def late_s(self) -> dict[int, Array]:
+        """How much too late each step that is stopped by eye ends (D,), in s."""
+        return {
+            i: step.seen.within.sd * self.rows[f"eye in {step.name}"]
+            for i, step in enumerate(self.inputs.job.recipe.steps)
+            if isinstance(step, Beam | Process) and step.seen and step.seen.within.sd
+        }
+
+
+def _names(job: Job, model: RateModel) -> Iterator[str]:
+    yield from model.belief.names
+    if job.mill.doubly_charged.sd:
+        yield "doubly charged share"
+    for i in job.column_map.inputs:
+        if i.thickness.sd:
+            yield f"thickness of {i.name}"
+        if i.thickness.across_sd:
+            yield from (f"thickness of {i.name} at {region.name}" for region in job.column_map.regions)
+    for step in job.recipe.steps:
+        if isinstance(step, Beam | Process) and step.seen and step.seen.within.sd:
+            yield f"eye in {step.name}"
+        if isinstance(step, Process):
+            yield from (f"{step.name}: rate of {name}" for name, rate in step.rates.items() if rate.sd)

@@ -1,0 +1,204 @@
+"""Checks of a job's files against each other, each complaint with its line."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Sequence
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+from stackmill.documents import wording
+from stackmill.documents.job import Goal, Keep
+from stackmill.documents.marks import KeyPath
+from stackmill.documents.recipe import OTHER, Beam, Cover, Process, Recipe, Seen, Strip, Target, Uncover
+from stackmill.documents.stack import NO_FILL, Layer, Region, Stack
+from stackmill.documents.wording import Sentence
+from stackmill.errors import InputError
+from stackmill.job_files import JobDocuments
+from stackmill.job_materials import Found, in_stack
+from stackmill.units import plain, quoted
+
+if TYPE_CHECKING:
+    from stackmill.columns.columns import ColumnMap
+
+Complaint = tuple[Sentence, KeyPath]
+
+
+@dataclass(frozen=True)
+class Fit:
+    """How the files of a job fit together. column_map: None where the stack has errors."""
+
+    column_map: ColumnMap | None
+    notes: tuple[str, ...]
+    errors: tuple[InputError, ...]
+
+
+def check_fit(documents: JobDocuments, stack: Stack, recipe: Recipe, found: Found) -> Fit:
+    """Check goal, keeps and steps against the stack, and the stack's features against each other."""
+    errors = [documents.stack.error(says, *path) for says, path in _geometry(stack)]
+    errors += [documents.job.error(says, *path) for says, path in _wants(documents, stack)]
+    errors += [documents.recipe.error(says, *path) for says, path in _covers(stack, recipe)]
+    errors += [documents.recipe.error(says, *path) for says, path in _ends(stack, recipe)]
+    errors += [documents.recipe.error(says, *path) for says, path in _process_materials(stack, recipe)]
+    if not found.errors:
+        errors += [
+            documents.recipe.error(says, *path) for says, path in _energies(documents, stack, recipe, found)
+        ]
+    column_map = None
+    if not errors and not found.errors:
+        column_map = _build(documents, stack, errors)
+    return Fit(column_map, tuple(_notes(stack, recipe)), tuple(errors))
+
+
+# --- what a region has --------------------------------------------------------------------------------------
+
+
+def has_layer(region: Region, layer: Layer) -> bool:
+    """Whether a region has anything of a layer."""
+    if layer.name in region.absent.layers:
+        return False
+    return layer.material != NO_FILL or layer.name not in region.absent.features_of
+
+
+def has_feature(region: Region, layer: Layer, feature: str) -> bool:
+    """Whether a region has a feature of a layer."""
+    if layer.name in region.absent.layers or layer.name in region.absent.features_of:
+        return False
+    return region.solid.get(layer.name, feature) == feature
+
+
+def _reference(stack: Stack, wanted: Goal | Keep | Target | Seen, at: KeyPath) -> Iterator[Complaint]:
+    """Complaints about a layer or feature that is named with the regions where it counts."""
+    layer = stack.layer(wanted.layer)
+    if layer is None:
+        yield wording.no_such("layer", wanted.layer, [one.name for one in stack.layers]), (*at, "layer")
+        return
+    what, name = f"layer {quoted(layer.name)}", wanted.feature
+    if name is not None:
+        features = [feature.name for feature in layer.features]
+        if name not in features:
+            yield wording.no_such(f"feature of layer {quoted(layer.name)}", name, features), (*at, "feature")
+            return
+        what = quoted(f"{layer.name} / {name}")
+    regions = {region.name: region for region in stack.regions}
+    having = [
+        region.name
+        for region in stack.regions
+        if (has_layer(region, layer) if name is None else has_feature(region, layer, name))
+    ]
+    # A bare layer is still reached where it is absent: reaching it is reaching the next one below.
+    must_be_there = name is not None or isinstance(wanted, Goal | Keep)
+    for k, region_name in enumerate(wanted.in_):
+        if region_name not in regions:
+            yield wording.no_such("region", region_name, list(regions)), (*at, "in", k)
+        elif must_be_there and region_name not in having:
+            yield wording.absent_from(what, region_name, having), (*at, "in", k)
+    if must_be_there and not wanted.in_ and not having:
+        yield wording.nowhere(what), (*at, "layer" if name is None else "feature")
+
+
+# --- goal and keeps -----------------------------------------------------------------------------------------
+
+
+def _wants(documents: JobDocuments, stack: Stack) -> Iterator[Complaint]:
+    job = documents.job.model
+    if job.goal is not None:
+        yield from _reference(stack, job.goal, ("goal",))
+    for k, keep in enumerate(job.keep):
+        yield from _reference(stack, keep, ("keep", k))
+        layer = stack.layer(keep.layer)
+        if layer is not None and keep.at_least >= layer.thickness.value:
+            what = quoted(layer.name if keep.feature is None else f"{layer.name} / {keep.feature}")
+            thickness = f"{plain(layer.thickness.value)} nm"
+            yield wording.keeps_more_than_there_is(what, thickness), ("keep", k, "at_least")
+
+
+# --- steps --------------------------------------------------------------------------------------------------
+
+
+def _covers(stack: Stack, recipe: Recipe) -> Iterator[Complaint]:
+    regions = [region.name for region in stack.regions]
+    covered: dict[str, str] = {}
+    for k, step in enumerate(recipe.steps):
+        if not isinstance(step, Cover | Uncover):
+            continue
+        key, names = ("cover", step.cover) if isinstance(step, Cover) else ("uncover", step.uncover)
+        for n, name in enumerate(names):
+            path: KeyPath = ("steps", k, key, n)
+            if name not in regions:
+                yield wording.no_such("region", name, regions), path
+            elif isinstance(step, Cover):
+                if name in covered:
+                    yield wording.covered_already(name, covered[name]), path
+                covered[name] = step.name
+            elif covered.pop(name, None) is None:
+                yield wording.not_covered(name), path
+
+
+def _ends(stack: Stack, recipe: Recipe) -> Iterator[Complaint]:
+    for k, step in enumerate(recipe.steps):
+        if isinstance(step, Beam | Process):
+            if step.to is not None:
+                yield from _reference(stack, step.to, ("steps", k, "to"))
+            if step.seen is not None:
+                yield from _reference(stack, step.seen, ("steps", k, "seen"))
+
+
+def _process_materials(stack: Stack, recipe: Recipe) -> Iterator[Complaint]:
+    present = list(dict.fromkeys(name for name, _ in in_stack(stack)))
+    for k, step in enumerate(recipe.steps):
+        if isinstance(step, Strip) and not set(step.strips) & set(present):
+            yield wording.touches_nothing(step.name), ("steps", k, "strips")
+        if isinstance(step, Process):
+            missing = [name for name in present if step.rate(name) is None]
+            if set(step.rates) - {OTHER} and not set(step.rates) & set(present):
+                yield wording.touches_nothing(step.name), ("steps", k, "rates")
+            elif missing:
+                yield wording.no_rate(step.name, missing), ("steps", k, "rates")
+
+
+def _energies(documents: JobDocuments, stack: Stack, recipe: Recipe, found: Found) -> Iterator[Complaint]:
+    """Energies at which some material of the stack would not be sputtered at all."""
+    from stackmill.rates import threshold_ev
+
+    gas = documents.mill.model.gas
+    names = dict.fromkeys(name for name, _ in in_stack(stack))
+    thresholds = {name: threshold_ev(found.materials[name], gas) for name in names}
+    hardest = max(thresholds, key=lambda name: thresholds[name])
+    for k, step in enumerate(recipe.steps):
+        if isinstance(step, Beam) and step.energy <= thresholds[hardest]:
+            needed = f"{thresholds[hardest]:.0f} eV"
+            yield wording.too_slow(f"{plain(step.energy)} eV", gas, hardest, needed), ("steps", k, "energy")
+
+
+def _notes(stack: Stack, recipe: Recipe) -> Iterator[str]:
+    present = {name for name, _ in in_stack(stack)}
+    for step in recipe.steps:
+        named: Sequence[str] = ()
+        if isinstance(step, Strip):
+            named = step.strips
+        elif isinstance(step, Process):
+            named = [name for name in step.rates if name != OTHER]
+        unused = [name for name in named if name not in present]
+        if unused:
+            names = wording.listed(unused, last="and")
+            yield f"step {quoted(step.name)} also names {names}, which this stack does not have"
+
+
+# --- features against each other ----------------------------------------------------------------------------
+
+
+def _geometry(stack: Stack) -> Iterator[Complaint]:
+    return iter(())
+
+
+def _build(documents: JobDocuments, stack: Stack, errors: list[InputError]) -> ColumnMap | None:
+    """The column map; None, and an error with a place, where the stack cannot be built."""
+    from stackmill.columns import build
+
+    try:
+        return build(stack)
+    except InputError as error:
+        errors.append(
+            InputError(error.what, cure=error.cure, place=error.place or documents.stack.place("layers"))
+        )
+        return None

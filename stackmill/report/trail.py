@@ -1,0 +1,61 @@
+"""Where is this number from? Laws, values, sources, calibration; and last, what would narrow the answer most."""
+
+from __future__ import annotations
+
+from stackmill.documents.recipe import Beam
+from stackmill.jobs import Job
+from stackmill.planning.stops import StopTable
+from stackmill.rates import trail
+
+_SHARES_SHOWN = 6
+
+
+def why_rates(job: Job) -> str:
+    """The trail of every material's rate in the first beam step that mills."""
+    energies = [step.energy for step in job.recipe.steps if isinstance(step, Beam)]
+    lines = ["Where the rates come from"]
+    for material in job.milled_materials.values():
+        for energy_ev in dict.fromkeys(energies):
+            first, *rest = trail(material, energy_ev=energy_ev, gas=job.mill.gas, citation=job.library.citation)
+            lines += [f"- {first}", *(f"    {line}" for line in rest)]
+        lines += [
+            f"    measured on this mill: {60 * m.rate.value:.4g} nm/min ± {100 * m.rate.rel_sd:.2g} % at {m.energy_ev:.4g} eV,"
+            f" {m.incidence_deg:.4g} deg, {m.current_density.value:.4g} mA/cm2"
+            f"{', the same day: the current of that day is in it' if m.same_day else '; the current error counts again'}"
+            for m in material.measured_rates
+        ]
+    return "\n".join(lines)
+
+
+def why_stops(table: StopTable) -> str:
+    """The trail of a stop table: the draws, the rates, and the inputs that widen the answer most."""
+    job = table.ensemble.inputs.job
+    lines = [
+        "How the times are found",
+        f"- {len(table.ensemble.weights)} draws (Latin hypercube, seed {table.ensemble.seed}) of"
+        f" {len(table.ensemble.inputs.names)} uncertain inputs; thickness over rate, segment after segment",
+        f"- mill: {job.mill.gas}, {job.mill.current_density.value:.4g} mA/cm2 ± {100 * job.mill.current_density.rel_sd:.2g} %,"
+        f" divergence {job.mill.divergence:.3g} deg, doubly charged {100 * job.mill.doubly_charged.value:.3g} % of the current,"
+        f" dial zero ± {job.mill.stage.zero_error.sd:.3g} deg",
+        f"- inputs sha256 {job.inputs_sha256}",
+        "",
+        why_rates(job),
+    ]
+    if table.shares:
+        lines += ["", "What widens the moment of exposure most (share of its variance, read off the draws)"]
+        lines += [f"- {100 * s.share:4.0f} %  {s.name}" for s in table.shares[:_SHARES_SHOWN]]
+        lines.append(f"To narrow it: {_advice(table.shares[0].name)}.")
+    return "\n".join(lines)
+
+
+def _advice(name: str) -> str:
+    """What to measure when this input is the weakest."""
+    if name.startswith("thickness of "):
+        return f"measure the {name} on a section, or look on the way down (a step with `seen`)"
+    if name.startswith("eye in "):
+        return "make the look sharper, or look again later"
+    if name == "current density":
+        return "measure the current, or mill a coupon the same day"
+    if name == "dial zero error":
+        return "check the stage's zero"
+    return f"mill a coupon of {name.split(':')[0]} at this setting"
