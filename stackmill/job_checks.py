@@ -2,15 +2,16 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterable, Iterator, Sequence
 from dataclasses import dataclass
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 from stackmill.documents import wording
 from stackmill.documents.job import Goal, Keep
 from stackmill.documents.marks import KeyPath
+from stackmill.documents.reading import Document
 from stackmill.documents.recipe import OTHER, Beam, Cover, Process, Recipe, Seen, Strip, Target, Uncover
-from stackmill.documents.stack import NO_FILL, Layer, Region, Stack
+from stackmill.documents.stack import NO_FILL, Feature, Layer, Line, Region, Stack, Via
 from stackmill.documents.wording import Sentence
 from stackmill.errors import InputError
 from stackmill.job_files import JobDocuments
@@ -34,19 +35,25 @@ class Fit:
 
 def check_fit(documents: JobDocuments, stack: Stack, recipe: Recipe, found: Found) -> Fit:
     """Check goal, keeps and steps against the stack, and the stack's features against each other."""
-    errors = [documents.stack.error(says, *path) for says, path in _geometry(stack)]
-    errors += [documents.job.error(says, *path) for says, path in _wants(documents, stack)]
-    errors += [documents.recipe.error(says, *path) for says, path in _covers(stack, recipe)]
-    errors += [documents.recipe.error(says, *path) for says, path in _ends(stack, recipe)]
-    errors += [documents.recipe.error(says, *path) for says, path in _process_materials(stack, recipe)]
+    steps = [*_covers(stack, recipe), *_ends(stack, recipe), *_process_materials(stack, recipe)]
     if not found.errors:
-        errors += [
-            documents.recipe.error(says, *path) for says, path in _energies(documents, stack, recipe, found)
-        ]
+        steps += _energies(documents, stack, recipe, found)
+    errors = _placed(documents.job, _wants(documents, stack)) + _placed(documents.recipe, steps)
+    if not documents.stack.healed:
+        errors += _placed(documents.stack, _geometry(stack))
     column_map = None
-    if not errors and not found.errors:
+    if not errors and not found.errors and not documents.errors:
         column_map = _build(documents, stack, errors)
     return Fit(column_map, tuple(_notes(stack, recipe)), tuple(errors))
+
+
+def _placed(document: Document[Any], complaints: Iterable[Complaint]) -> list[InputError]:
+    """Complaints with their places, without those about values that stand in for unreadable ones."""
+    return [
+        document.error(says, *path)
+        for says, path in complaints
+        if not any(path[: len(healed)] == healed for healed in document.healed)
+    ]
 
 
 # --- what a region has --------------------------------------------------------------------------------------
@@ -76,7 +83,7 @@ def _reference(stack: Stack, wanted: Goal | Keep | Target | Seen, at: KeyPath) -
     if name is not None:
         features = [feature.name for feature in layer.features]
         if name not in features:
-            yield wording.no_such(f"feature of layer {quoted(layer.name)}", name, features), (*at, "feature")
+            yield wording.no_such_feature(layer.name, name, features), (*at, "feature")
             return
         what = quoted(f"{layer.name} / {name}")
     regions = {region.name: region for region in stack.regions}
@@ -188,7 +195,44 @@ def _notes(stack: Stack, recipe: Recipe) -> Iterator[str]:
 
 
 def _geometry(stack: Stack) -> Iterator[Complaint]:
-    return iter(())
+    from stackmill.columns import liner_too_thick, outside, overlaps
+
+    for lost in outside(stack):
+        yield wording.outside_cell(lost.feature), _feature_path(stack, lost.layer, lost.feature)
+    for pair in overlaps(stack):
+        yield wording.overlapping(pair.feature, pair.other), _feature_path(stack, pair.layer, pair.other)
+    for full in liner_too_thick(stack):
+        films, room = f"{plain(full.films_nm)} nm", f"{plain(full.room_nm)} nm"
+        says = wording.films_across if full.across else wording.films_in_height
+        yield says(full.feature, films, room), _feature_path(stack, full.layer, full.feature)
+    yield from _too_wide(stack)
+
+
+def _too_wide(stack: Stack) -> Iterator[Complaint]:
+    """Features that would lie on themselves in the next cell."""
+    cell = stack.cell
+    for layer in stack.layers if cell is not None else ():
+        for feature in layer.features:
+            for axis, size in _sizes(feature).items():
+                if size > getattr(cell, axis):
+                    path = _feature_path(stack, layer.name, feature.name)
+                    yield wording.wider_than_cell(feature.name, axis), path
+
+
+def _sizes(feature: Feature) -> dict[str, float]:
+    """How far a feature reaches along x and y, in nm, where it has edges."""
+    shape = feature.shape
+    if isinstance(shape, Line):
+        return {"x" if shape.along == "y" else "y": shape.width}
+    if isinstance(shape, Via):
+        return {"x": shape.diameter, "y": shape.diameter}
+    return {"x": shape.x[1] - shape.x[0], "y": shape.y[1] - shape.y[0]}
+
+
+def _feature_path(stack: Stack, layer: str, feature: str) -> KeyPath:
+    k = next(k for k, one in enumerate(stack.layers) if one.name == layer)
+    n = next(n for n, one in enumerate(stack.layers[k].features) if one.name == feature)
+    return "layers", k, "features", n, "name"
 
 
 def _build(documents: JobDocuments, stack: Stack, errors: list[InputError]) -> ColumnMap | None:
@@ -198,7 +242,6 @@ def _build(documents: JobDocuments, stack: Stack, errors: list[InputError]) -> C
     try:
         return build(stack)
     except InputError as error:
-        errors.append(
-            InputError(error.what, cure=error.cure, place=error.place or documents.stack.place("layers"))
-        )
+        place = error.place or documents.stack.place("layers")
+        errors.append(InputError(error.what, cure=error.cure, place=place))
         return None

@@ -16,7 +16,7 @@ from stackmill.documents.marks import Block, Items, Node, Scalar, Tree, read_tre
 from stackmill.documents.material import MaterialsFile
 from stackmill.documents.mill import DEFAULT_MILL, Mill
 from stackmill.documents.overriding import Override
-from stackmill.documents.reading import Document, checked, read_bytes
+from stackmill.documents.reading import Document, checked_further, read_bytes
 from stackmill.documents.recipe import Recipe
 from stackmill.documents.stack import Stack
 from stackmill.errors import FileAccessError, InputError, InputErrors, Place
@@ -29,7 +29,10 @@ M = TypeVar("M", bound=BaseModel)
 
 @dataclass(frozen=True)
 class JobDocuments:
-    """The documents of a job. `job` is the job file, or what stands in for it where FILE is a lone stack."""
+    """The documents of a job. `job` is the job file, or what stands in for it where FILE is a lone stack.
+
+    errors: what is wrong in them so far; such documents are only good for finding more.
+    """
 
     job: Document[JobFile]
     stack: Document[Stack]
@@ -37,6 +40,7 @@ class JobDocuments:
     recipe: Document[Recipe]
     materials: tuple[Document[MaterialsFile], ...] = ()
     is_default_mill: bool = False
+    errors: tuple[InputError, ...] = ()
 
     def contents(self) -> dict[str, object]:
         """All that the files say, as plain texts, without comments, paths and layout."""
@@ -64,10 +68,11 @@ def read_source(source: str | Path) -> tuple[Tree, Path]:
 
 
 def kind_of(tree: Tree) -> str | None:
-    """Which kind of file a tree is, by the key that only that kind has; None where none is there."""
+    """Which kind of file a tree is, by the key that only that kind has, or one like it; else None."""
     keys = tree.root.values if isinstance(tree.root, Block) else {}
     order = ("stack", "layers", "steps", "gas", "materials")
-    return next((_KINDS[key] for key in order if key in keys), None)
+    near = [wording.nearest(key, order) for key in keys]
+    return next((_KINDS[key] for known in (keys, near) for key in order if key in known), None)
 
 
 @dataclass
@@ -79,9 +84,10 @@ class FileReader:
     overrides: Sequence[Override] = ()
     errors: list[InputError] = field(default_factory=list)
     used: set[Override] = field(default_factory=set)
+    trees: list[Tree] = field(default_factory=list)
 
-    def read(self) -> JobDocuments:
-        """All documents. Raises InputErrors with every complaint."""
+    def read(self) -> JobDocuments | None:
+        """All documents, with what is wrong in them; None where one is too broken to go on."""
         self._override(self.tree, "")
         job = self._checked(JobFile, self.tree)
         stack = self._bound(Stack, "stack")
@@ -90,11 +96,10 @@ class FileReader:
         recipe = self._bound(Recipe, "recipe")
         materials = [self._one(MaterialsFile, "materials", node) for node in self._material_nodes()]
         self._refuse_unused()
-        if self.errors:
-            raise InputErrors(wording.in_order(self.errors))
-        assert job is not None and stack is not None and mill is not None and recipe is not None  # noqa: PT018
+        if job is None or stack is None or mill is None or recipe is None or None in materials:
+            return None
         found = tuple(document for document in materials if document is not None)
-        return JobDocuments(job, stack, mill, recipe, found, is_default_mill)
+        return JobDocuments(job, stack, mill, recipe, found, is_default_mill, tuple(self.errors))
 
     def _mill_or_default(self) -> Document[Mill] | None:
         tree = read_tree(DEFAULT_MILL, "default mill")
@@ -150,11 +155,10 @@ class FileReader:
         return tree
 
     def _checked(self, model: type[M], tree: Tree) -> Document[M] | None:
-        try:
-            return checked(model, tree, tree.plain())
-        except InputErrors as error:
-            self.errors.append(error)
-            return None
+        self.trees.append(tree)
+        document, errors = checked_further(model, tree)
+        self.errors += errors
+        return document
 
     def _override(self, tree: Tree, kind: str) -> None:
         """Apply the overrides that belong to this tree: below `kind`, or the job's own."""

@@ -2,12 +2,12 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterable, Iterator, Sequence
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Any
 
 from stackmill.documents import wording
-from stackmill.documents.marks import KeyPath
+from stackmill.documents.marks import Block, Items, KeyPath, Node, Scalar, Tree
 from stackmill.documents.reading import Document
 from stackmill.documents.recipe import OTHER, Cover, Process, Recipe, Strip
 from stackmill.documents.stack import NO_FILL, Film, Stack
@@ -58,6 +58,40 @@ def find_materials(documents: JobDocuments) -> Found:
         if material.name != name:
             found.aliases[name] = material.name
     return found
+
+
+def unknown_materials(trees: Iterable[Tree]) -> list[InputError]:
+    """Complaints about unknown materials in files that are too broken to be read as a whole."""
+    from stackmill.materials.library import Library
+
+    library, errors = Library.load(), []
+    for tree in trees:
+        if tree.has(("materials",)):
+            return []  # a lab's own materials may be among them
+        seen = {OTHER, NO_FILL}
+        for scalar in _scalars(tree.root, ""):
+            if scalar.text and scalar.text not in seen and scalar.text not in library:
+                says = wording.unknown_material(scalar.text, library.near(scalar.text))
+                errors.append(
+                    InputError(says.what, cure=says.cure, place=tree.place_of(scalar), key=scalar.text)
+                )
+            seen.add(scalar.text)
+    return errors
+
+
+def _scalars(node: Node, key: str) -> Iterator[Scalar]:
+    """The texts under the keys that name materials."""
+    if isinstance(node, Scalar) and key in ("material", "with", "strips"):
+        yield node
+    elif isinstance(node, Block):
+        if key == "rates":
+            yield from node.keys.values()
+        for inner, value in node.values.items():
+            if value.source is None:  # what comes from another tree has its own turn
+                yield from _scalars(value, inner)
+    elif isinstance(node, Items):
+        for value in node.values:
+            yield from _scalars(value, key)
 
 
 def _library(documents: JobDocuments, errors: list[InputError]) -> Library | None:

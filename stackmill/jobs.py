@@ -19,7 +19,7 @@ from stackmill.documents.recipe import DEFAULT_RECIPE, Beam, Cover, Process, Rec
 from stackmill.documents.stack import NO_FILL, Stack
 from stackmill.errors import InputError, InputErrors, UsageError
 from stackmill.job_files import FileReader, JobDocuments, kind_of, read_source
-from stackmill.job_materials import Found, find_materials
+from stackmill.job_materials import Found, find_materials, unknown_materials
 from stackmill.units import quoted
 
 if TYPE_CHECKING:
@@ -125,7 +125,7 @@ def load_job(
     else:
         _refuse_options(options)
         _refuse_other_kind(tree)
-    return _job(FileReader(tree, folder, changes).read())
+    return _job(FileReader(tree, folder, changes))
 
 
 def bare_job(
@@ -156,7 +156,7 @@ def bare_job(
     }
     changes = [Override(("mill", "gas"), gas, "--gas")] if gas is not None else []
     tree, changes = _around_stack(stack, changes, options)
-    return _job(FileReader(tree, Path(), changes).read())
+    return _job(FileReader(tree, Path(), changes))
 
 
 def _around_stack(
@@ -199,23 +199,30 @@ def _refuse_options(options: Mapping[str, str | None]) -> None:
 
 def _refuse_other_kind(tree: Tree) -> None:
     kind = kind_of(tree)
+    if kind is None and not isinstance(tree.root, Block) and not tree.plain():
+        says = wording.EMPTY_FILE
+        raise InputErrors([InputError(says.what, cure=says.cure, place=tree.place(()))])
     if kind in ("recipe", "mill", "materials"):
         says = wording.needs_a_job(kind)
         raise InputErrors([InputError(says.what, cure=says.cure, place=tree.place(()))])
 
 
-def _job(documents: JobDocuments) -> Job:
-    """The job of some documents. Raises InputErrors with whatever does not fit together."""
+def _job(reader: FileReader) -> Job:
+    """The job of some files. Raises InputErrors with whatever is wrong in them or does not fit together."""
     from stackmill.job_checks import check_fit
 
+    documents = reader.read()
+    if documents is None:
+        raise _all([*reader.errors, *unknown_materials(reader.trees)], reader)
     found = find_materials(documents)
     stack, recipe = (
         _renamed_stack(documents.stack.model, found),
         _renamed_recipe(documents.recipe.model, found),
     )
     fit = check_fit(documents, stack, recipe, found)
-    if found.errors or fit.errors:
-        raise InputErrors(wording.in_order([*found.errors, *fit.errors]))
+    errors = [*documents.errors, *found.errors, *fit.errors]
+    if errors:
+        raise _all(errors, reader)
     assert fit.column_map is not None
     assert found.library is not None
     job = documents.job.model
@@ -236,6 +243,10 @@ def _job(documents: JobDocuments) -> Job:
         is_default_mill=documents.is_default_mill,
         notes=fit.notes,
     )
+
+
+def _all(errors: Sequence[InputError], reader: FileReader) -> InputErrors:
+    return InputErrors(wording.in_order(errors, [tree.file for tree in reader.trees]))
 
 
 def _renamed_stack(stack: Stack, found: Found) -> Stack:

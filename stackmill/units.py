@@ -65,8 +65,8 @@ class Kind:
     pint: str = ""
 
 
-_MICRO = ("u", "µ", "μ")
-_ANGSTROM = ("A", "Å", "Å", "angstrom", "Angstrom", "angstroms")
+_MICRO = ("u", "\u00b5", "\u03bc")  # the micro sign, and the Greek letter that looks the same
+_ANGSTROM = ("A", "\u00c5", "\u212b", "angstrom", "Angstrom", "angstroms")
 _LENGTH = {"nm": 1.0, "mm": 1e6, "cm": 1e7, **{f"{m}m": 1e3 for m in _MICRO}, **dict.fromkeys(_ANGSTROM, 0.1)}
 _TIME = {
     **{"s": 1.0, "sec": 1.0, "second": 1.0, "seconds": 1.0},
@@ -169,7 +169,7 @@ def read_measure(text: str, kind: str) -> Measure:
     text = _tidy(text, kind)
     parts = _MEASURE.fullmatch(text)
     if parts is None:  # pragma: no cover - the pattern takes any text without line breaks
-        raise UnitsError(f"{quoted(text)} cannot be read", _example(kind))
+        raise UnitsError(f"{quoted(text)} cannot be read", example(kind))
     value = _read_value(parts["value"], kind)
     return Measure(value, *(_read_sd(parts[name], value, text, kind) for name in ("sd", "across")))
 
@@ -178,8 +178,10 @@ def read_plus_minus(text: str, kind: str) -> float:
     """A text such as `± 1 deg` as an sd in the inside unit of its kind. Raises UnitsError."""
     text = _tidy(text, kind)
     if not text.startswith("±") or text.count("±") > 1:
-        cure = f"write only the ± part, as in ± 1 {KINDS[kind].usual}" if "±" in text else f"write ± {text}"
-        raise UnitsError(f"{quoted(text)} is not just a ± with a number and its unit", cure)
+        if "±" not in text:
+            raise UnitsError(f"{quoted(text)} has no ± before it", f"write ± {text}")
+        cure = f"write only the ± part, as in ± 1 {KINDS[kind].usual}"
+        raise UnitsError(f"{quoted(text)} has more than a ± part", cure)
     if text.endswith("%") and kind != "fraction":
         raise UnitsError(f"{quoted(text)} is a share of nothing", f"write it in {KINDS[kind].known}")
     sd = _read_value(text[1:], kind)
@@ -214,11 +216,11 @@ def clock(seconds: float) -> str:
 
 def _tidy(text: str, kind: str) -> str:
     if len(text) > _LONGEST_TEXT:
-        raise UnitsError(f"{quoted(text)} is too long to be a number", _example(kind))
+        raise UnitsError(f"{quoted(text)} is too long to be a number", example(kind))
     return text.replace("+/-", "±").replace("+-", "±").replace("−", "-").strip()
 
 
-def _example(kind: str) -> str:
+def example(kind: str) -> str:
     """What a value of this kind looks like, for a cure."""
     number = {"current_density": "0.5", "energy": "800", "angle": "45", "density": "2.2"}.get(kind, "10")
     usual = KINDS[kind].usual
@@ -239,7 +241,18 @@ def _read_value(text: str, kind: str) -> float:
         raise UnitsError(
             f"{quoted(text)} goes on after its unit", "write it like 600 nm ± 8 %, across die ± 3 %"
         )
-    return number * _factor(found[1], unit, kind) + _OFFSET_K.get(unit, 0.0) * (kind == "temperature")
+    offset = _OFFSET_K.get(unit, 0.0) if kind == "temperature" else 0.0
+    return _scaled(number, _factor(found[1], unit, kind)) + offset
+
+
+def _scaled(number: float, factor: float) -> float:
+    """A number times a factor, dividing by whole numbers so that 95 % is 0.95 to the last digit."""
+    divisor = round(1.0 / factor)
+    return (
+        number / divisor
+        if divisor > 1 and math.isclose(divisor * factor, 1.0, rel_tol=1e-15)
+        else number * factor
+    )
 
 
 def _read_compound_time(text: str) -> float | None:
@@ -257,8 +270,8 @@ def _read_compound_time(text: str) -> float | None:
 
 def _no_number(text: str, kind: str) -> UnitsError:
     if not text.strip():
-        return UnitsError("there is no number here", _example(kind))
-    return UnitsError(f"{quoted(text)} does not begin with a number", _example(kind))
+        return UnitsError("there is no number here", example(kind))
+    return UnitsError(f"{quoted(text)} does not begin with a number", example(kind))
 
 
 def _finite(text: str) -> float:
@@ -336,7 +349,7 @@ def _read_sd(text: str | None, value: float, whole: str, kind: str) -> float:
     relative = unit == "%" and kind != "fraction"
     if relative and kind == "temperature":
         raise UnitsError(f"{quoted(whole)} has a share of a temperature after the ±", "write it in K")
-    sd = 0.01 * number * abs(value) if relative else number * _factor(found[1], unit, kind)
+    sd = number * abs(value) / 100.0 if relative else _scaled(number, _factor(found[1], unit, kind))
     if kind != "temperature" and value and sd > abs(value):
         raise UnitsError(f"{quoted(whole)} has a ± larger than its value", "give a ± below 100 %")
     return sd

@@ -51,10 +51,8 @@ def main(arguments: list[str] | None = None) -> int:
     """Run the command line and give its exit code (see the README for what each means)."""
     debug = "--debug" in (sys.argv if arguments is None else arguments)
     try:
-        app(arguments, standalone_mode=False)
+        left = app(arguments, standalone_mode=False)
         sys.stdout.flush()
-    except typer.Exit as left:
-        return int(left.exit_code)
     except StackmillError as error:
         _say(_report(error))
         return error.exit_code
@@ -67,7 +65,7 @@ def main(arguments: list[str] | None = None) -> int:
         return 0
     except Exception as error:
         return _unexpected(error, debug)
-    return 0
+    return left if isinstance(left, int) else 0  # typer gives back the code of a command that left early
 
 
 def _report(error: StackmillError) -> str:

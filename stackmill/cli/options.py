@@ -35,6 +35,7 @@ Set = Annotated[
 ]
 Seed = Annotated[int, typer.Option("--seed", help="Seed of the draws; the same seed gives the same answer.")]
 Jobs = Annotated[int, typer.Option("--jobs", min=1, help="Threads to use; the answer is the same for any number.")]
+Every = Annotated[bool, typer.Option("--all", help="Show every column, not only those that matter most.")]
 Why = Annotated[bool, typer.Option("--why", help="Say where every number comes from, and what would narrow it most.")]
 Confidence = Annotated[
     str | None, typer.Option("--confidence", help="The chance asked for, e.g. 90 %; otherwise the job's.", metavar="SHARE")

@@ -10,6 +10,7 @@ from stackmill.cli.options import (
     CurrentDensity,
     Debug,
     Energy,
+    Every,
     File,
     Force,
     Format,
@@ -35,6 +36,7 @@ def stops(
     incidence: Incidence = None,
     current_density: CurrentDensity = None,
     motion: Motion = None,
+    every: Every = False,
     why: Why = False,
     output: Output = "-",
     format_: FormatOption = None,
@@ -76,7 +78,7 @@ def stops(
     elif form is Format.csv:
         text = report.as_csv(table)
     else:
-        text = report.as_text(table, paper(output, ascii_only), markdown=form is Format.markdown)
+        text = report.as_text(table, paper(output, ascii_only), markdown=form is Format.markdown, every=every)
         if why:
             from stackmill.report.trail import why_stops
 

@@ -30,7 +30,7 @@ def complaints(error: ValidationError, model: type[BaseModel], tree: Tree) -> li
     meant = {(*path[:-1], near) for path, near in _misspelled(found, model)}
     errors = []
     for item in found:
-        path = _in_file(item["loc"])
+        path = in_file(item["loc"])
         if item["type"] == "missing" and path in meant:
             continue  # the unknown key beside it says what was meant
         errors += [_input_error(tree, says, at, item["type"]) for says, at in _sentences(item, model, tree)]
@@ -42,7 +42,7 @@ def _input_error(tree: Tree, says: Sentence, path: KeyPath, kind: str) -> InputE
     return InputError(says.what, cure=says.cure, place=place, key=".".join(map(str, path)))
 
 
-def _in_file(loc: Iterable[str | int]) -> KeyPath:
+def in_file(loc: Iterable[str | int]) -> KeyPath:
     """A pydantic location without the names of union members, which stand in <>."""
     return tuple(step for step in loc if not str(step).startswith("<"))
 
@@ -52,11 +52,11 @@ def _misspelled(found: Iterable[Any], model: type[BaseModel]) -> Iterator[tuple[
         if item["type"] == "extra_forbidden":
             near = wording.nearest(str(item["loc"][-1]), keys_of(model_at(model, item["loc"][:-1])))
             if near:
-                yield _in_file(item["loc"]), near
+                yield in_file(item["loc"]), near
 
 
 def _sentences(item: Any, model: type[BaseModel], tree: Tree) -> Iterator[tuple[Sentence, KeyPath]]:
-    path, kind = _in_file(item["loc"]), item["type"]
+    path, kind = in_file(item["loc"]), item["type"]
     key = next((str(step) for step in reversed(path) if isinstance(step, str)), "this")
     cause = item.get("ctx", {}).get("error")
     if isinstance(cause, Refusal | Refusals):
@@ -81,7 +81,8 @@ def _sentences(item: Any, model: type[BaseModel], tree: Tree) -> Iterator[tuple[
     elif kind == "too_short":
         yield wording.nothing_in(key), path
     elif kind in _SHAPES:
-        yield wording.wrong_shape(key, _SHAPES[kind], shape_of(item["input"])), path
+        example = example_of(model_at(model, item["loc"][:-1]), key)
+        yield wording.wrong_shape(key, _SHAPES[kind], shape_of(item["input"]), example), path
     else:
         yield Sentence(f"{key} cannot be {shape_of(item['input'])} like this", item["msg"].lower()), path
 

@@ -18,6 +18,7 @@ from stackmill.units import (
     KINDS,
     Measure,
     UnitsError,
+    example,
     plain,
     quoted,
     read_measure,
@@ -46,6 +47,8 @@ class Limits:
         """Raise UnitsError where a value lies outside, quoting the text it was read from."""
         if not math.isfinite(value):
             raise UnitsError(f"{text} is not a finite number", self.cure)
+        if value < 0.0 <= self.low:
+            raise UnitsError(f"{text} is below zero", "check its sign")
         if value < self.low or (self.above and value == self.low):
             raise UnitsError(f"{text} {self.too_low}", self.cure)
         if value > self.high or (self.below and value == self.high):
@@ -58,10 +61,10 @@ def _as_text(value: Any, kind: str) -> str:
     return f"{value:g} {unit}".removesuffix(" 1") if isinstance(value, int | float) else repr(value)
 
 
-def _text_of(value: Any) -> str:
+def _text_of(value: Any, kind: str) -> str:
     if not isinstance(value, str):
         shape = {list: "a list", tuple: "a list", dict: "a group of keys", type(None): "nothing"}
-        raise UnitsError(f"{shape.get(type(value), 'this')} stands where a number with its unit belongs", "")
+        raise UnitsError(f"{shape.get(type(value), 'this')} stands where a number belongs", example(kind))
     return value
 
 
@@ -70,7 +73,7 @@ def _number_reader(limits: Limits) -> Callable[[Any], float]:
         if isinstance(value, int | float) and not isinstance(value, bool):
             limits.check(float(value), _as_text(value, limits.kind))
             return float(value)
-        number = read_number(_text_of(value), limits.kind)
+        number = read_number(_text_of(value, limits.kind), limits.kind)
         limits.check(number, " ".join(value.split()))
         return number
 
@@ -84,7 +87,7 @@ def _measure_reader(limits: Limits) -> Callable[[Any], Measure]:
             return value
         if isinstance(value, int | float) and not isinstance(value, bool):
             return read(Measure(float(value)))
-        measure = read_measure(_text_of(value), limits.kind)
+        measure = read_measure(_text_of(value, limits.kind), limits.kind)
         limits.check(measure.value, " ".join(value.replace("+/-", "±").split("±")[0].split()).rstrip(","))
         if measure.value == 0.0 and (measure.sd or measure.across_sd):
             raise UnitsError(
@@ -101,7 +104,7 @@ def _error_reader(limits: Limits) -> Callable[[Any], Measure]:
             return value
         if isinstance(value, int | float) and not isinstance(value, bool):
             return Measure(0.0, float(value))
-        sd = read_plus_minus(_text_of(value), limits.kind)
+        sd = read_plus_minus(_text_of(value, limits.kind), limits.kind)
         limits.check(sd, " ".join(value.split()))
         return Measure(0.0, sd)
 
@@ -115,7 +118,7 @@ def _schema(limits: Limits, form: str) -> WithJsonSchema:
 
 # A third of an atomic layer is no film, and 1 mm is thicker than any wafer.
 _THICKNESS = Limits(
-    "length", 0.1, 1e6, "is thinner than an atom", "is thicker than a wafer", "check its unit"
+    "length", 0.1, 1e6, "is thinner than an atom", "is thicker than a wafer", "check its number and unit"
 )
 _SIGN = "check its sign and unit"
 # One atom across; a cell repeats, so 10 mm is a die, not a cell.
@@ -233,11 +236,11 @@ def _name(value: Any) -> Any:
         return value
     text = " ".join(value.split())
     if not text:
-        raise UnitsError("this name is empty", "write a name")
+        raise refuse("this name is empty", "write a name")
     if len(text) > 80:
-        raise UnitsError(f"the name {quoted(text)} has {len(text)} letters", "use at most 80")
+        raise refuse(f"the name {quoted(text)} has {len(text)} letters", "use at most 80")
     if "/" in text:
-        raise UnitsError(
+        raise refuse(
             f"the name {quoted(text)} has a / in it", "use another sign; LAYER / FEATURE points to a feature"
         )
     return text

@@ -15,7 +15,8 @@ from typing import Any
 
 import yaml
 
-from stackmill.documents import wording
+from stackmill.documents import form_wording as wording
+from stackmill.documents.wording import Sentence
 from stackmill.errors import InputError, InputErrors, Place
 
 MOST_BYTES = 1_000_000
@@ -174,7 +175,7 @@ def decode(source: str | bytes, file: str) -> str:
     return text.removeprefix("\ufeff").replace("\r\n", "\n").replace("\r", "\n")
 
 
-def _one_error(place: Place, says: wording.Sentence) -> InputErrors:
+def _one_error(place: Place, says: Sentence) -> InputErrors:
     return InputErrors([InputError(says.what, cure=says.cure, place=place)])
 
 
@@ -212,6 +213,10 @@ class _Reader:
             opened = start.line + 1 if start is not None else 0
             line = mark.line if mark is not None else 0
             says = wording.yaml_problem(error.problem or "", self._line(line), opened)
+            if "maximum nesting depth" in (
+                error.problem or ""
+            ):  # the parser looks ahead, and has a limit too
+                says = wording.too_deep(DEEPEST)
             if says.opened and opened:
                 mark = start
             raise InputErrors([*self.errors, self._error(mark, says)]) from None
@@ -239,7 +244,7 @@ class _Reader:
         line, column = mark.line + 1, mark.column + 1
         self._check(event, depth)
         if isinstance(event, yaml.ScalarEvent):
-            plain = event.style is None
+            plain = not event.style  # None from one of PyYAML's parsers, empty from the other
             if plain and end.line > mark.line and event.value:
                 self._complain(mark, wording.SEVERAL_LINES)
             return Scalar(line, column, event.value, not plain)
@@ -278,10 +283,10 @@ class _Reader:
         elif event.tag is not None:
             self._complain(event.start_mark, wording.TAG)
 
-    def _complain(self, mark: Any, says: wording.Sentence) -> None:
+    def _complain(self, mark: Any, says: Sentence) -> None:
         self.errors.append(self._error(mark, says))
 
-    def _error(self, mark: Any, says: wording.Sentence) -> InputError:
+    def _error(self, mark: Any, says: Sentence) -> InputError:
         if mark is None:
             return InputError(says.what, cure=says.cure, place=Place(self.file))
         # The end of a file may lie past its last line.

@@ -6,7 +6,7 @@ Every text with a unit is read on entry; the records hold inside units (eV, g/cm
 from __future__ import annotations
 
 import math
-from typing import Annotated, Any, ClassVar, Literal
+from typing import Annotated, Any, ClassVar, Literal, get_args
 
 from pydantic import BeforeValidator, Field, PlainValidator, WithJsonSchema, model_validator
 
@@ -60,6 +60,14 @@ def _yes_no(value: Any) -> bool:
     return bool(value == "yes")
 
 
+def _kind(value: Any) -> Any:
+    """One of the kinds of material."""
+    kinds = get_args(MaterialKind)
+    if value is not None and value not in kinds:
+        raise UnitsError(f"{quoted(str(value))} is no kind of material", f"write one of {', '.join(kinds)}")
+    return value
+
+
 def _share(value: Any) -> float:
     """The atoms of one element in a formula: a plain number above zero."""
     try:
@@ -78,6 +86,9 @@ BindingEnergy = Annotated[Measure, _quantity("binding_energy"), _written_as("910
 Temperature = Annotated[Measure, _quantity("temperature"), _written_as("1358 K")]
 EnergyEv = Annotated[float, _exact("energy"), _written_as("500 eV")]
 Finite = Annotated[float, Field(allow_inf_nan=False)]
+LabKind = Annotated[
+    MaterialKind | None, PlainValidator(_kind), WithJsonSchema({"enum": list(get_args(MaterialKind))})
+]
 Positive = Annotated[float, Field(gt=0.0, allow_inf_nan=False)]
 
 
@@ -285,7 +296,7 @@ class LabMaterial(Record):
     name: Label = Field(examples=["SiO2 PECVD"])
     like: Label | None = None
     title: Label | None = None
-    kind: MaterialKind | None = None
+    kind: LabKind = None
     aliases: Annotated[tuple[Label, ...], BeforeValidator(one_or_more)] = ()
     composition: dict[str, Share] | None = None
     density: Density | None = None

@@ -41,7 +41,7 @@ class Mill(Record):
     current_density: CurrentDensity = Field(examples=["0.5 mA/cm2 ± 6 %"])
     divergence: Divergence = 0.0
     doubly_charged: Share = Measure(0.0)
-    stage: Stage = Stage()
+    stage: Stage = Field(default_factory=Stage)
     mount: Mount = Mount()
     neutraliser: OnOff = True
 

@@ -10,6 +10,7 @@ from pydantic import BaseModel, ConfigDict, ValidationError
 
 from stackmill.documents import wording
 from stackmill.documents.complaints import complaints, keys_of, shape_of
+from stackmill.documents.healing import healed
 from stackmill.documents.marks import MOST_BYTES, Block, KeyPath, Tree, read_tree
 from stackmill.documents.wording import Sentence
 from stackmill.errors import FileAccessError, InputError, InputErrors, Place
@@ -21,7 +22,7 @@ Source = Path | str | bytes | Tree
 class Record(BaseModel):
     """The base of all records: frozen, no unknown keys; attributes are named like the keys in the file."""
 
-    model_config = ConfigDict(frozen=True, extra="forbid", populate_by_name=True)
+    model_config = ConfigDict(frozen=True, extra="forbid", populate_by_name=True, defer_build=True)
 
 
 M = TypeVar("M", bound=BaseModel)
@@ -29,10 +30,15 @@ M = TypeVar("M", bound=BaseModel)
 
 @dataclass(frozen=True)
 class Document(Generic[M]):
-    """A record with the tree it was read from. Key paths are as in the file: ('layers', 2, 'thickness')."""
+    """A record with the tree it was read from. Key paths are as in the file: ('layers', 2, 'thickness').
+
+    healed: values that could not be read and were replaced, so that the rest could be checked; a document
+    that has any is only good for finding further mistakes.
+    """
 
     model: M
     tree: Tree
+    healed: tuple[KeyPath, ...] = ()
 
     @property
     def file(self) -> str:
@@ -72,6 +78,31 @@ def checked(model: type[M], tree: Tree, content: Any, *, what: str = "") -> Docu
         return Document(model.model_validate(content), tree)
     except ValidationError as error:
         raise InputErrors(wording.in_order(complaints(error, model, tree))) from None
+
+
+def checked_further(model: type[M], tree: Tree) -> tuple[Document[M] | None, list[InputError]]:
+    """A document, healed where it has mistakes, with those mistakes; None where it cannot be healed."""
+    content = tree.plain()
+    try:
+        return checked(model, tree, content), []
+    except InputErrors as error:
+        errors = list(error.errors)
+    try:
+        model.model_validate(content)
+    except ValidationError as invalid:
+        found = healed(invalid, model, content) if isinstance(content, dict) else None
+        if found is None:
+            return None, errors
+        whole, paths = found
+        try:
+            return Document(model.model_validate(whole), tree, paths), errors
+        except ValidationError as still:
+            return None, errors + [e for e in complaints(still, model, tree) if not _below(e, paths)]
+    return None, errors
+
+
+def _below(error: InputError, paths: tuple[KeyPath, ...]) -> bool:
+    return any(f"{error.key}.".startswith(".".join(map(str, path)) + ".") for path in paths)
 
 
 def to_tree(source: Source, *, file: str = "") -> Tree:

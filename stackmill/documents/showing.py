@@ -11,11 +11,10 @@ MOST_PRINTED = 20
 _WIDEST_EXCERPT = 100
 
 
-def in_order(errors: Iterable[InputError]) -> list[InputError]:
-    """Errors by file (in the order the files were first met), line and column, without repeats."""
+def in_order(errors: Iterable[InputError], files: Iterable[str] = ()) -> list[InputError]:
+    """Errors by file (in the order given, else as they come), line and column, without repeats."""
     flat = [e for error in errors for e in (error.errors if isinstance(error, InputErrors) else (error,))]
-    files = {e.file or "": 0 for e in flat}
-    rank = {file: k for k, file in enumerate(files)}
+    rank = {file: k for k, file in enumerate(dict.fromkeys([*files, *(e.file or "" for e in flat)]))}
     unique = list({e.headline(): e for e in flat}.values())
     return sorted(unique, key=lambda e: (rank[e.file or ""], e.line or 0, e.column or 0))
 

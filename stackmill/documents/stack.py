@@ -149,7 +149,7 @@ class Layer(Record):
             yield Refusal(
                 Sentence("a conformal layer needs a material", "name it instead of none"), "material"
             )
-        if self.material == NO_FILL and not self.features:
+        if self.material == NO_FILL and not self.features and self.coverage == "planarised":
             cure = "add its features, or remove the layer"
             yield Refusal(
                 Sentence(f"layer {quoted(self.name)} has neither fill nor features", cure), "material"
@@ -259,7 +259,7 @@ class Stack(Record):
             if name not in patterned:
                 yield Refusal(self._no_features(name, patterned, names), "solid", name)
             elif feature not in patterned[name]:
-                yield Refusal(wording.no_such(f"feature of {name}", feature, patterned[name]), "solid", name)
+                yield Refusal(wording.no_such_feature(name, feature, patterned[name]), "solid", name)
             elif name in region.absent.layers or name in region.absent.features_of:
                 says = Sentence(f"layer {quoted(name)} is both absent and solid here", "keep one of them")
                 yield Refusal(says, "solid", name)

@@ -6,7 +6,6 @@ A complaint is one sentence as a colleague would say it, and a cure: what to wri
 from __future__ import annotations
 
 import difflib
-import unicodedata
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 
@@ -47,133 +46,6 @@ def refuse(what: str, cure: str = "", *path: str | int) -> Refusal:
     return Refusal(Sentence(what, cure), *path)
 
 
-# --- the form of a file -------------------------------------------------------------------------------------
-
-UTF16 = Sentence("this file is saved as UTF-16", "save it as UTF-8")
-UNREADABLE = Sentence("this file cannot be read as YAML", "check that it is a plain text file")
-SECOND_DOCUMENT = Sentence("a second document begins here", "keep one document in a file and remove the ---")
-TAG = Sentence("tags such as !!int are not used here", "remove everything that begins with a !")
-KEY_IS_NO_TEXT = Sentence("a key has to be a plain text", "write 'key: value'")
-EMPTY_KEY = Sentence("there is no key before this colon", "write 'key: value'")
-SEVERAL_LINES = Sentence(
-    "this text runs on into the next line", "check the indentation below it, or put the text in quotes"
-)
-
-
-def too_large(most: int) -> Sentence:
-    """A file over the size limit, in bytes."""
-    return Sentence(f"this file has more than {most:,} bytes", "is this the file you meant?")
-
-
-def not_utf8(byte: int) -> Sentence:
-    """A byte that no UTF-8 text has."""
-    return Sentence(
-        f"this file is not UTF-8 text: byte 0x{byte:02X} here belongs to another encoding", "save it as UTF-8"
-    )
-
-
-def odd_character(character: str) -> Sentence:
-    """A tab, a NUL or another control character."""
-    if character == "\t":
-        return Sentence("there is a tab here", "use spaces")
-    if character == "\0":
-        return Sentence("there is a NUL byte here", "is this a text file?")
-    name = unicodedata.name(character, "a control character").lower()
-    return Sentence(f"there is an invisible character here, U+{ord(character):04X} ({name})", "remove it")
-
-
-def twice(key: str, line: int) -> Sentence:
-    """A key that stands twice in one block."""
-    return Sentence(
-        f"the key {quoted(key)} stands here for the second time", f"it is already in line {line}; keep one"
-    )
-
-
-def too_deep(deepest: int) -> Sentence:
-    """Lists and blocks nested too deep."""
-    return Sentence(f"this is nested more than {deepest} levels deep", "check the brackets")
-
-
-def too_many(most: int) -> Sentence:
-    """More values than any real file has."""
-    return Sentence(f"this file has more than {most:,} values", "is this the file you meant?")
-
-
-def anchor(name: str) -> Sentence:
-    """A YAML anchor."""
-    return Sentence(f"the anchor &{name} is not allowed", "write the values out where they are needed")
-
-
-def alias(name: str) -> Sentence:
-    """A YAML alias."""
-    return Sentence(f"the alias *{name} is not allowed", "write the values out here")
-
-
-def yaml_problem(problem: str, line: str, opened: int) -> Sentence:
-    """A syntax error, from the parser's own words (both of PyYAML's parsers), the line and where it began."""
-    for words, says in _YAML_PROBLEMS:
-        if any(word in problem for word in words):
-            since = f" in line {opened}" if opened else ""
-            return Sentence(says.what.replace("{since}", since), says.cure, says.opened)
-    if "token" in problem or "directive" in problem:
-        mark = next((c for c in line if c in "@`%"), "")
-        begins = f"begin with {mark}" if mark else "begin like this"
-        return Sentence(f"a text cannot {begins}", "put it in quotes")
-    return Sentence("this line cannot be read as YAML", "check its colons, brackets, quotes and indentation")
-
-
-_YAML_PROBLEMS = (
-    (
-        ("mapping values are not allowed",),
-        Sentence(
-            "there is a colon here where no key can stand",
-            "check the indentation of this line and the one above, or put the text in quotes",
-        ),
-    ),
-    (
-        ("did not find expected key", "expected <block end>"),
-        Sentence(
-            "this line is not indented like the ones it belongs to",
-            "begin keys of one group in the same column",
-        ),
-    ),
-    (
-        ("expected ',' or ']'",),
-        Sentence("the list opened here with [ is not closed", "add the missing ] or comma", opened=True),
-    ),
-    (
-        ("expected ',' or '}'",),
-        Sentence("the group opened here with { is not closed", "add the missing } or comma", opened=True),
-    ),
-    (
-        ("expected '-' indicator",),
-        Sentence(
-            "this line is not part of the list above it", "begin every item with a - in the same column"
-        ),
-    ),
-    (
-        ("unexpected end of stream", "document separator"),
-        Sentence("the quote opened here is not closed", "add the missing quote", opened=True),
-    ),
-    (
-        ("unknown escape", "escape sequence"),
-        Sentence("the \\ in this quoted text means nothing", "use single quotes"),
-    ),
-    (
-        ("sequence entries are not allowed",),
-        Sentence("a list cannot begin on the line of its key", "put the - on a line of its own, or use [ ]"),
-    ),
-    (
-        ("could not find expected ':'",),
-        Sentence("this line has no colon after its key", "write 'key: value'"),
-    ),
-    (
-        ("expected node content",),
-        Sentence("there is a bracket or comma here where a value belongs", "remove it"),
-    ),
-)
-
-
 # --- files themselves ---------------------------------------------------------------------------------------
 
 NO_SUCH_FILE = "there is no such file"
@@ -189,6 +61,9 @@ def no_such_file(name: str, neighbours: Sequence[str]) -> Sentence:
 def cannot_open(reason: str) -> Sentence:
     """A file that is there but cannot be opened."""
     return Sentence(f"this file cannot be opened: {reason.lower()}", "check who may read it")
+
+
+EMPTY_FILE = Sentence("this file is empty", "a job begins with 'stack:', a stack with 'layers:'")
 
 
 def no_block(what: str, keys: Sequence[str], shape: str) -> Sentence:
@@ -255,21 +130,27 @@ def nothing_in(key: str) -> Sentence:
     return Sentence(f"the list of '{key}' is empty", "name at least one")
 
 
-def wrong_shape(key: str, wanted: str, found: str) -> Sentence:
+def wrong_shape(key: str, wanted: str, found: str, example: str) -> Sentence:
     """A list where a text belongs, and the like."""
-    return Sentence(f"{key} has to be {wanted}, and this is {found}", f"write {wanted}")
+    return Sentence(f"{key} has to be {wanted}, and this is {found}", f"write {example or wanted}")
 
 
 def not_a_choice(key: str, text: str, choices: Sequence[str]) -> Sentence:
     """A word outside a short list."""
     near = nearest(text, choices)
     cure = f"did you mean {near}?" if near else f"write {listed(choices)}"
-    return Sentence(f"{quoted(text)} is no {key}", cure)
+    return Sentence(f"{key} cannot be {quoted(text)}", cure)
 
 
 def no_such(what: str, name: str, known: Sequence[str]) -> Sentence:
-    """A name that points to nothing. what: `layer`, `region`, `feature of metal 1`."""
+    """A name that points to nothing. what: `layer`, `region`."""
     return Sentence(f"there is no {what} called {quoted(name)}", choose(name, known, nothing="leave it out"))
+
+
+def no_such_feature(layer: str, name: str, known: Sequence[str]) -> Sentence:
+    """A feature that its layer does not have."""
+    cure = choose(name, known, nothing="this layer has no features")
+    return Sentence(f"layer {quoted(layer)} has no feature called {quoted(name)}", cure)
 
 
 # --- values given on the command line -----------------------------------------------------------------------
@@ -389,10 +270,8 @@ def keeps_more_than_there_is(what: str, thickness: str) -> Sentence:
 
 def overlapping(first: str, second: str) -> Sentence:
     """Two features of one layer in one place."""
-    return Sentence(
-        f"features {quoted(first)} and {quoted(second)} overlap",
-        "move one, or give both the same material and films",
-    )
+    what = f"features {quoted(first)} and {quoted(second)} overlap"
+    return Sentence(what, "move one, or give both the same material and films")
 
 
 def outside_cell(feature: str) -> Sentence:
@@ -400,6 +279,19 @@ def outside_cell(feature: str) -> Sentence:
     return Sentence(f"feature {quoted(feature)} lies outside the cell", "move it, or make the cell larger")
 
 
-def films_too_thick(feature: str, why: str) -> Sentence:
-    """Films that do not fit inside their feature."""
-    return Sentence(f"the films of feature {quoted(feature)} do not fit in it: {why}", "make them thinner")
+def wider_than_cell(feature: str, axis: str) -> Sentence:
+    """A feature that would lie on itself."""
+    what = f"feature {quoted(feature)} is wider than the cell in {axis}"
+    return Sentence(what, "make the cell larger, or the feature 'solid' in a region")
+
+
+def films_across(feature: str, films: str, room: str) -> Sentence:
+    """A liner that fills its feature from side to side."""
+    what = f"the liner of feature {quoted(feature)} takes {films} from side to side, and it is {room} wide"
+    return Sentence(what, "make the liner thinner, or name its material as the feature's")
+
+
+def films_in_height(feature: str, films: str, room: str) -> Sentence:
+    """Cap, base and liner that fill their feature from top to bottom."""
+    what = f"the films of feature {quoted(feature)} are {films} thick together, and its layer {room}"
+    return Sentence(what, "make them thinner; sizes are outer, films are carved inside")

@@ -37,9 +37,9 @@ def yamamura_tawara(
 ) -> Array:
     """Yield of an element at normal incidence, Yamamura & Tawara 1996 [atoms/ion].
 
-    energy_ev: ion energy E [eV], usually 100 to 10000. z1, m1_u: ion's atomic number and mass [u]. z2, m2_u:
-    the target's (z2 may be a mean, not whole). us_ev: surface binding energy Us [eV], usually 2 to 9. q, w_ev,
-    s: the paper's Q, W [eV] and s of the target; for targets it does not list the authors advise Q = 1,
+    energy_ev: ion energy E [eV], usually 100 to 10000. z1, m1_u: the ion's atomic number and mass [u].
+    z2, m2_u: those of the target (z2 may be a mean). us_ev: surface binding energy Us [eV], about 2 to 9.
+    q, w_ev, s: Q, W [eV] and s of the target; for targets they do not list the authors advise Q = 1,
     W = 0.35 Us, s = 2.5.
 
         Y = 0.042 Q a*/Us  Sn / (1 + Gamma ke eps^0.3)  (1 - sqrt(Eth/E))^s,   0 for E <= Eth

@@ -46,8 +46,8 @@ class Library:
     def load(cls, overlays: Sequence[LabMaterial] = (), *, folder: Path = DATA) -> Library:
         """The library in `folder` with a lab's materials over it, first to last.
 
-        Raises UnknownMaterialError for a lab material that is neither known, nor `like` a known one, nor given
-        by a composition; InputError for a composition of unknown elements.
+        Raises UnknownMaterialError for a lab material that is neither known, nor `like` a known one, nor
+        given by a composition; InputError for a composition of unknown elements.
         """
         files: dict[str, Path] = {}
         known: dict[str, str] = {}

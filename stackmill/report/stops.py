@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+import math
+from collections.abc import Callable, Sequence
 from typing import Any
 
 from stackmill.planning.stops import Reach, StopTable
@@ -24,8 +25,8 @@ ROW_NAMES = (
     "flat_ok",
     "basis",
 )
-_NARROW = 0.01  # columns under this share of a region are left out of the table for people, unless the goal's
-_CELL = 19  # characters of "12:30 (11:40-13:25)"
+_NARROW = 0.01  # columns under this share of a region count as first or last down only if nothing is wider
+_NARROWEST_CELL = 19  # characters of "12:30 (11:40–13:25)"
 
 
 def machine_rows(table: StopTable) -> list[dict[str, Any]]:
@@ -82,11 +83,11 @@ def as_csv(table: StopTable) -> str:
     return csv_text(machine_rows(table), [*ROW_NAMES, "present", "area_share"])
 
 
-def as_text(table: StopTable, paper: Paper, *, markdown: bool = False) -> str:
+def as_text(table: StopTable, paper: Paper, *, markdown: bool = False, every: bool = False) -> str:
     """The answer for people, as wide as the paper."""
     parts = [_heading(table, paper)]
-    parts += _grids(table, paper, "github" if markdown else "simple")
-    parts.append("\n".join(wrapped(line, paper.width, "  ") for line in _notes(table)))
+    parts += _grids(table, paper, "github" if markdown else "simple", every=every)
+    parts.append("\n".join(wrapped(line, paper.width, "  ") for line in _notes(table, every=every)))
     if table.window is not None:
         parts.append("\n".join(wrapped(line, paper.width, "  ") for line in window_in_words(table, table.window)))
     return paper.plain("\n\n".join(part for part in parts if part))
@@ -99,30 +100,60 @@ def _heading(table: StopTable, paper: Paper) -> str:
     return "\n".join(wrapped(line, paper.width, "   ") for line in lines)
 
 
-def _grids(table: StopTable, paper: Paper, style: str) -> list[str]:
-    job = table.ensemble.inputs.job
+def _grids(table: StopTable, paper: Paper, style: str, *, every: bool) -> list[str]:
     layers = _shown_layers(table)
-    first = max([len("layer"), *(len(layer) for layer in layers)])
-    per_grid = max(1, (paper.width - first) // (_CELL + 4))
+    first = max(len("layer"), *(len(layer) for layer in layers))
+    columns = shown_columns(table, every=every)
+    cells = {key: [_cell(row) for row in rows] for key, rows in _by_column(table, layers).items()}
+    width = max(_NARROWEST_CELL, *(len(cell) for key in columns for cell in cells[key]))
+    per_grid = max(1, (paper.width - first) // (width + 2))
     grids = []
-    for region in job.column_map.regions:
-        columns = _shown_columns(table, region.name)
-        for k in range(0, len(columns), per_grid):
-            grids.append(_grid(table, region.name, columns[k : k + per_grid], layers, style))
+    for k in range(0, len(columns), per_grid):
+        part = columns[k : k + per_grid]
+        headers = ["layer", *(_header(table, key, width) for key in part)]
+        rows = [[layer, *(cells[key][n] for key in part)] for n, layer in enumerate(layers)]
+        grids.append(Grid(headers, rows).text(style))
     return grids
 
 
-def _grid(table: StopTable, region: str, columns: Sequence[Sequence[int]], layers: Sequence[str], style: str) -> str:
-    rows = {(row.column_number, row.layer): row for row in table.rows if row.region == region}
-    headers = [f"{region}\n"]
-    for group in columns:
-        label = rows[group[0], layers[0]].column
-        share = sum(rows[c, layers[0]].share for c in group)
-        headers.append("\n".join([*_folded(label, _CELL + 1), f"{100 * share:.3g} % of area"]))
-    depth = max(header.count("\n") for header in headers)
-    headers = [header + "\n" * (depth - header.count("\n")) if k else region for k, header in enumerate(headers)]
-    cells = [[layer, *(_cell(rows[group[0], layer]) for group in columns)] for layer in layers]
-    return Grid(headers, cells).text(style)
+_Key = tuple[int, int]  # region and column
+
+
+def _by_column(table: StopTable, layers: Sequence[str]) -> dict[_Key, list[Reach]]:
+    regions = [region.name for region in table.ensemble.inputs.job.column_map.regions]
+    found: dict[_Key, list[Reach]] = {}
+    for row in table.rows:
+        if row.layer in layers:
+            found.setdefault((regions.index(row.region), row.column_number), []).append(row)
+    return found
+
+
+def _header(table: StopTable, key: _Key, width: int) -> str:
+    region = table.ensemble.inputs.job.column_map.regions[key[0]]
+    label = _folded(region.label(key[1]), width)
+    return "\n".join([region.name, *label, f"{100 * region.area[key[1]]:.3g} % of area"])
+
+
+def shown_columns(table: StopTable, *, every: bool) -> list[_Key]:
+    """The columns for people: those that decide, the first and the last down, and the widest of each region.
+
+    every: all columns of all regions instead.
+    """
+    regions = table.ensemble.inputs.job.column_map.regions
+    if every:
+        return [(r, c) for r, region in enumerate(regions) for c in range(len(region.area))]
+    window = table.window
+    deciding = {window.exposed_by, *([window.lost_by] if window.lost_by else [])} if window else set()
+    last = _shown_layers(table)[-1]
+    chosen = []
+    for r, region in enumerate(regions):
+        rows = [row for row in table.rows if row.region == region.name and row.layer == last]
+        wide = [row for row in rows if row.share >= _NARROW] or rows
+        by_time = sorted(wide, key=lambda row: math.inf if row.time_s is None else row.time_s)
+        keep = {0, by_time[0].column_number, by_time[-1].column_number}
+        keep |= {c for rr, c in deciding if rr == r}
+        chosen += [(r, c) for c in sorted(keep)]
+    return chosen
 
 
 def _folded(label: str, width: int) -> list[str]:
@@ -153,25 +184,7 @@ def _shown_layers(table: StopTable) -> list[str]:
     return layers[: layers.index(job.goal.layer) + 2]
 
 
-def _shown_columns(table: StopTable, region: str) -> list[list[int]]:
-    """Column numbers to show, those that read the same grouped; narrow ones that decide nothing are left out."""
-    shown = _shown_layers(table)
-    window = table.window
-    deciding = {window.exposed_by, window.lost_by} if window else set()
-    number = [r.name for r in table.ensemble.inputs.job.column_map.regions].index(region)
-    groups: dict[tuple[str, ...], list[int]] = {}
-    for row in table.rows:
-        if row.region != region or row.layer != shown[0]:
-            continue
-        c = row.column_number
-        if row.share < _NARROW and (number, c) not in deciding:
-            continue
-        cells = tuple(_cell(r) for r in table.rows if r.region == region and r.column_number == c and r.layer in shown)
-        groups.setdefault(cells, []).append(c)
-    return list(groups.values())
-
-
-def _notes(table: StopTable) -> list[str]:
+def _notes(table: StopTable, *, every: bool) -> list[str]:
     q = table.confidence
     notes = [
         f"Times are beam-on (min:s), best value (early–late): {50 * (1 - q):.3g} % of draws come before the early"
@@ -188,9 +201,12 @@ def _notes(table: StopTable) -> list[str]:
             f"Times after {clock(at)} count from the end of {_leg_name(table, leg)!r}, stopped by eye at about"
             f" {clock(at)}: start the stopwatch again there."
         )
-    hidden = sum(row.share < _NARROW for row in table.rows if row.layer == _shown_layers(table)[0])
+    hidden = len(shown_columns(table, every=True)) - len(shown_columns(table, every=every))
     if hidden:
-        notes.append(f"Columns under {100 * _NARROW:.2g} % of their region are left out where they decide nothing (-f json has all).")
+        notes.append(
+            f"{hidden} more column{'s' if hidden > 1 else ''} left out: shown are those that decide, the first and the"
+            " last down, and the widest of each region (--all shows every one)."
+        )
     return notes
 
 
@@ -223,7 +239,8 @@ def window_in_words(table: StopTable, window: Window) -> list[str]:
             )
         lines.append(f"  Exposed last: {_column_name(table, *window.exposed_by)}. Lost first: {_lost_by(table, window) or 'nothing'}.")
     if window.first_look_s is not None:
-        lines.append(f"  First look no later than {clock(window.first_look_s)}{since(window.first_look_s)}: until then the chance of loss is under 5 %.")
+        which = "Next look" if window.leg else "First look"
+        lines.append(f"  {which} no later than {clock(window.first_look_s)}{since(window.first_look_s)}: until then the chance of loss is under 5 %.")
     lines.append(f"  Left standing at the stop: {100 * window.left_standing:.2g} % of the goal's area.")
     lines += _planned_end(table, window)
     if table.provisional:
@@ -242,12 +259,12 @@ def _planned_end(table: StopTable, window: Window) -> list[str]:
     if unused:
         return [f"  The stop leaves unused: {', '.join(unused)}."]
     end = float(spans[-1].end_s[0])
-    if window.best_stop_s > end * (1 + 1e-9):
+    if window.stop_s is not None and window.stop_s > end * (1 + 1e-9):
         return [f"  The recipe itself ends at {clock(end)}: stay on in its last step."]
     return []
 
 
-def _since(table: StopTable, window: Window):  # type: ignore[no-untyped-def]
+def _since(table: StopTable, window: Window) -> Callable[[float], str]:
     def text(time_s: float) -> str:
         if not window.leg:
             return ""

@@ -184,10 +184,11 @@ def fall_steps(
     regions = [region.name for region in job.column_map.regions]
     steps: list[Step] = []
     for i, step in enumerate(job.recipe.steps):
-        if isinstance(step, CoverStep):
-            steps.append(Cover(frozenset(map(regions.index, step.cover)), True, step.name))
-        elif isinstance(step, UncoverStep):
-            steps.append(Cover(frozenset(map(regions.index, step.uncover)), False, step.name))
+        if isinstance(step, CoverStep | UncoverStep):
+            named = step.cover if isinstance(step, CoverStep) else step.uncover
+            # What is covered or bared after the last milling changes no time, and must not while staying on.
+            shielded = frozenset(map(regions.index, named)) if i < _last_milling(job) else frozenset()
+            steps.append(Cover(shielded, isinstance(step, CoverStep), step.name))
         elif isinstance(step, StripStep):
             known = job.column_map.materials
             steps.append(Strip(frozenset(known.index(m) for m in step.strips if m in known), step.name))
@@ -203,6 +204,11 @@ def fall_steps(
             counts = isinstance(step, Beam) or not has_beam
             steps.append(Lowering(rate, duration, until, counts, step.name))
     return steps + _going_on(steps, draws)
+
+
+def _last_milling(job: Job) -> int:
+    """The number of the last step that lowers or strips."""
+    return max(i for i, step in enumerate(job.recipe.steps) if not isinstance(step, CoverStep | UncoverStep))
 
 
 def _going_on(steps: Sequence[Step], draws: int) -> list[Step]:

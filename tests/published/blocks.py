@@ -19,7 +19,7 @@ def entry_path(name: str) -> Path:
 
 
 def replaced(text: str, key: str, block: str) -> str:
-    """`text` with its top-level `key:` block replaced by `block`, which begins with the key, or added last."""
+    """`text` with its top-level `key:` block replaced by `block` (which holds the key), or added last."""
     pattern = re.compile(rf"^{key}:.*\n(?:[ \t].*\n)*", re.MULTILINE)
     block = block.rstrip("\n") + "\n"
     if pattern.search(text):

@@ -2,9 +2,9 @@
 
     python -m tests.published.fit_angular     # prints the rule; writes the constants of W, C and diamond
 
-Data: data/angular_ar_on_w.csv and data/angular_ar_on_c.csv (W. Eckstein, IPP-Report 9/117, 1998, computed points)
-and the maxima of Cu, Au, Si, Al and Ti near 1 keV in data/angular.csv (ranges from memory, and statements seen in
-a citing paper). The rule's coefficients stand in stackmill/laws/incidence.py; a test compares.
+Data: data/angular_ar_on_w.csv and data/angular_ar_on_c.csv (W. Eckstein, IPP-Report 9/117, 1998) and
+the maxima of Cu, Au, Si, Al and Ti near 1 keV in data/angular.csv (ranges from memory, or seen in a citing
+paper). The rule's coefficients stand in stackmill/laws/incidence.py; a test compares.
 """
 
 from __future__ import annotations
@@ -111,7 +111,7 @@ def rule_constants(p: Array, mass_ratio: float, closeness: float) -> Array:
 
 
 def fit_rule() -> Array:
-    """The rule's 13 numbers: least squares over curves and maxima; at high energy maxima stay below 80 deg."""
+    """The rule's 13 numbers: least squares over curves and maxima; at high energy these stay below 80 deg."""
     data = curves()
     library = Library.load()
     maxima = []

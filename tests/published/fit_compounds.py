@@ -2,9 +2,9 @@
 
     python -m tests.published.fit_compounds         # after fit_yields; writes stackmill/materials/data/*.yaml
 
-Data: data/compound_ties.csv (yields and ranges of rates) and data/compound_check.csv (compositions and heats of
-formation of the compounds behind the rule). A compound without data takes the factor of the rule in the mean
-atomic mass, `laws.compounds.tie_of_unmeasured`, whose two numbers `rule()` below fits.
+Data: data/compound_ties.csv (yields and ranges of rates) and data/compound_check.csv (compositions and heats
+of formation of the compounds behind the rule). A compound without data takes the factor of the rule in the
+mean atomic mass, `laws.compounds.tie_of_unmeasured`, whose two numbers `rule()` below fits.
 """
 
 from __future__ import annotations

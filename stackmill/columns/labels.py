@@ -1,0 +1,75 @@
+"""What a column is called: the features met from the top down, and the slopes they lie under."""
+
+from __future__ import annotations
+
+from collections import Counter
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+
+from stackmill.columns.columns import CORE, FILL, LINER
+from stackmill.columns.cover import CLASSES
+from stackmill.columns.inputs import StackInputs
+
+FIELD = "field"
+
+
+@dataclass(frozen=True)
+class Slope:
+    """A class of slope in a column: the layer whose top it is, its number from the wall down, its source."""
+
+    layer: int
+    number: int
+    source: int
+
+
+@dataclass(frozen=True)
+class Labelled:
+    """A column to be named: (material, layer, feature, part) of its segments, and its slopes, top down."""
+
+    kinds: tuple[tuple[int, int, int, int], ...]
+    slopes: tuple[Slope, ...]
+
+
+def labels(columns: Sequence[Labelled], inputs: StackInputs, layers: Sequence[str]) -> tuple[str, ...]:
+    """A name for each column, all different: as short as that allows."""
+    short = [_sequence(c, layers, lambda layer, name: name, inputs) for c in columns]
+    taken = Counter(short)
+    if max(taken.values()) == 1:
+        return tuple(short)
+    long = [_sequence(c, layers, lambda layer, name: f"{layers[layer]} {name}", inputs) for c in columns]
+    mixed = [s if taken[s] == 1 else full for s, full in zip(short, long, strict=True)]
+    return _numbered(mixed)
+
+
+def _sequence(
+    column: Labelled, layers: Sequence[str], called: Callable[[int, str], str], inputs: StackInputs
+) -> str:
+    words = {
+        slope.layer: [f"{layers[slope.layer]} slope {slope.number} of {CLASSES}"] for slope in column.slopes
+    }
+    met: dict[tuple[int, int], list[tuple[int, int]]] = {}
+    for material, layer, feature, part in column.kinds:
+        if part != FILL:
+            met.setdefault((layer, feature), []).append((material, part))
+    for (layer, feature), parts in met.items():
+        name = called(layer, inputs.features[feature][1])
+        words.setdefault(layer, []).append(f"{name}{_ring(parts, inputs)}")
+    return " / ".join(word for layer in sorted(words) for word in words[layer]) or FIELD
+
+
+def _ring(parts: Sequence[tuple[int, int]], inputs: StackInputs) -> str:
+    """' liner' where a feature's core is missing, with the film's material where there are several."""
+    films = [material for material, part in parts if part == LINER]
+    if not films or any(part == CORE for _, part in parts):
+        return ""
+    return " liner" if len(films) == 1 else f" {inputs.materials[films[0]]} liner"
+
+
+def _numbered(names: Sequence[str]) -> tuple[str, ...]:
+    """Names with a number after those that still agree."""
+    taken, seen = Counter(names), Counter[str]()
+    unique = []
+    for name in names:
+        seen[name] += 1
+        unique.append(name if taken[name] == 1 else f"{name} ({seen[name]})")
+    return tuple(unique)

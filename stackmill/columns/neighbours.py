@@ -1,0 +1,129 @@
+"""How far columns are from each other in plan: each one's centre, and from there to all others."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from stackmill.columns.curves import SIDE_NM, Curves, cut, periodic_distances
+from stackmill.columns.plan import RegionPlan
+from stackmill.columns.scan import Spans
+
+Array = NDArray[np.float64]
+Index = NDArray[np.intp]
+Mask = NDArray[np.bool_]
+
+_STARTS = 5  # places of each kind in a column from which its centre is looked for
+_ROUNDS = 12
+_POINTS = np.pi / 4 * np.arange(8)
+_COMPASS = np.stack([np.cos(_POINTS), np.sin(_POINTS)], axis=1)
+_FAR_NM = 1e12
+
+
+@dataclass(frozen=True)
+class Neighbourhood:
+    """centre_nm (C, 2) of each column; edge_distance_nm (C, C) from there to the nearest point of each other."""
+
+    centre_nm: Array
+    edge_distance_nm: Array
+
+
+@dataclass(frozen=True)
+class _Starts:
+    """Points x, y (N,) that lie in a column (N,), sorted by column."""
+
+    x: Array
+    y: Array
+    column: Index
+
+
+def neighbourhood(
+    plan: RegionPlan, curves: Curves, spans: Spans, of_span: Index, columns: int
+) -> Neighbourhood:
+    """Find each column's centre and its distances; `of_span` (N,) is the column of each span."""
+    if columns == 1:
+        middle = np.array([[plan.cell[0] / 2, plan.cell[1] / 2]])
+        return Neighbourhood(middle, np.full((1, 1), np.inf))
+    pieces = cut(curves, (0.0, plan.cell[0], 0.0, plan.cell[1]))
+    sides = _sides(pieces, plan)
+    real = sides[:, 0] != sides[:, 1]
+    borders, sides = pieces.chosen(real), sides[real]
+    touching = np.zeros((columns, len(sides)), dtype=bool)
+    touching[sides.T, np.arange(len(sides))] = True
+    centres = _centres(_padded(borders, touching), _starts(plan, borders, spans, of_span), plan)
+    return Neighbourhood(centres, _distances(centres, borders, touching, plan.cell))
+
+
+def _sides(pieces: Curves, plan: RegionPlan) -> Index:
+    """The columns (P, 2) at both sides of each piece."""
+    x, y, nx, ny = pieces.middles()
+    step = SIDE_NM * np.array([[-1.0], [1.0]])
+    return plan.column(x + step * nx, y + step * ny).T
+
+
+def _padded(borders: Curves, touching: Mask) -> Curves:
+    """For each column (C, 1, ...) its own borders, filled up with far-away ones."""
+    v, h = len(borders.upright), len(borders.upright) + len(borders.level)
+    parts = (
+        (borders.upright, touching[:, :v]),
+        (borders.level, touching[:, v:h]),
+        (borders.arcs, touching[:, h:]),
+    )
+    return Curves(*(_own(rows, mask)[:, None] for rows, mask in parts))
+
+
+def _own(rows: Array, mask: Mask) -> Array:
+    most = int(mask.sum(axis=1).max(initial=0))
+    first = np.argsort(~mask, axis=1, kind="stable")[:, :most]
+    far = np.zeros(rows.shape[1])
+    far[0] = _FAR_NM
+    return np.where(np.take_along_axis(mask, first, axis=1)[..., None], rows[first], far)
+
+
+def _starts(plan: RegionPlan, borders: Curves, spans: Spans, of_span: Index) -> _Starts:
+    """Where to look for centres: middles of spans, the widest and others evenly picked, and centres of arcs."""
+    picked = []
+    order = np.lexsort((spans.x0 - spans.x1, of_span))
+    for own in np.split(order, np.flatnonzero(np.diff(of_span[order])) + 1):
+        picked += [own[:_STARTS], own[_STARTS :: max(1, len(own) // _STARTS)]]
+    spots = np.concatenate(picked)
+    middles = np.unique(np.round(borders.arcs[:, :2] % np.array(plan.cell), 6), axis=0)
+    x = np.concatenate([spans.middle[spots], middles[:, 0]])
+    y = np.concatenate([spans.y[spots], middles[:, 1]])
+    column = np.concatenate([of_span[spots], plan.column(middles[:, 0], middles[:, 1])])
+    by_column = np.argsort(column, kind="stable")
+    return _Starts(x[by_column], y[by_column], column[by_column])
+
+
+def _centres(own: Curves, starts: _Starts, plan: RegionPlan) -> Array:
+    """The point (C, 2) of each column's area farthest from its borders, to about a thousandth of that distance."""
+    c = starts.column
+    of_start = Curves(own.upright[c, 0], own.level[c, 0], own.arcs[c, 0])
+    away = _nearest(of_start, starts.x, starts.y, plan.cell)
+    last = np.flatnonzero(np.diff(c[np.lexsort((away, c))], append=-1))
+    chosen = np.lexsort((away, c))[last]
+    best, reach = np.stack([starts.x[chosen], starts.y[chosen]], axis=1), away[chosen]
+    step, rows = reach.copy(), np.arange(len(best))
+    for _ in range(_ROUNDS):
+        tries = best[:, None] + step[:, None, None] * _COMPASS
+        away = _nearest(own, tries[..., 0], tries[..., 1], plan.cell)
+        away[plan.column(tries[..., 0], tries[..., 1]) != rows[:, None]] = 0.0
+        k = np.argmax(away, axis=1)
+        better = away[rows, k] > reach * (1.0 + 1e-9)
+        best = np.where(better[:, None], tries[rows, k], best)
+        reach = np.where(better, away[rows, k], reach)
+        step = np.where(better, step, step / 2)
+    return best % np.array(plan.cell)
+
+
+def _nearest(curves: Curves, x: Array, y: Array, cell: tuple[float, float]) -> Array:
+    return periodic_distances(curves, x, y, cell).min(axis=-1)
+
+
+def _distances(centres: Array, borders: Curves, touching: Mask, cell: tuple[float, float]) -> Array:
+    away = periodic_distances(borders, centres[:, 0], centres[:, 1], cell)
+    found = np.stack([np.min(away, axis=1, where=touches, initial=np.inf) for touches in touching], axis=1)
+    np.fill_diagonal(found, np.inf)
+    return found

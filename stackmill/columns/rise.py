@@ -1,0 +1,145 @@
+"""A region built up from the substrate, layer by layer: what decides where each layer's top lies."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, field
+
+import numpy as np
+from numpy.typing import NDArray
+
+from stackmill.columns.carving import LayerPlan
+from stackmill.columns.cover import Slopes, Source, slopes
+from stackmill.columns.inputs import StackInputs
+from stackmill.columns.outlines import Outline, Overlap, outline
+from stackmill.columns.plan import Axis
+from stackmill.columns.regions import PresentLayer
+
+Array = NDArray[np.float64]
+Key = NDArray[np.int64]
+Draw = Callable[[PresentLayer], LayerPlan]
+
+
+@dataclass
+class Level:
+    """One layer and how its top lies.
+
+    plan: the number of the axis that tells its zones (None: the same everywhere). Its top is either level, at
+    `top` (L,); or that of the slopes on axis `slopes`, as their `film`-th layer; or else its own thickness above
+    what is below, under features only if `only_features`.
+    """
+
+    present: PresentLayer
+    plan: int | None = None
+    top: Array | None = None
+    slopes: int | None = None
+    film: int = 0
+    only_features: bool = False
+
+
+@dataclass
+class Rising:
+    """A region while it is built up. axes: what tells combinations apart; levels: from the substrate up."""
+
+    inputs: StackInputs
+    cell: tuple[float, float]
+    draw: Draw
+    axes: list[Axis] = field(default_factory=list)
+    levels: list[Level] = field(default_factory=list)
+    sources: list[Source] = field(default_factory=list)
+    films: list[Level] = field(default_factory=list)
+
+    def build(self, layers: Sequence[PresentLayer], substrate: int) -> None:
+        """Lay down all layers, given from the bottom up."""
+        self.sources = [Source(None, np.zeros(len(self.inputs.inputs)))]
+        for present in layers:
+            if present.index == substrate:
+                self.levels.append(Level(present, top=self.sources[0].height))
+            elif present.layer.coverage == "conformal":
+                self._conformal(present)
+            elif present.has_fill:
+                self._planarised(present)
+            else:
+                self._unfilled(present)
+        self._finish_films()
+
+    def _conformal(self, present: PresentLayer) -> None:
+        number = self.inputs.layer[present.index]
+        thickness, sidewall = present.layer.thickness.value, present.layer.sidewall
+        self.sources = [source.covered(number, thickness, sidewall) for source in self.sources]
+        self.films.append(Level(present))
+        self.levels.append(self.films[-1])
+
+    def _planarised(self, present: PresentLayer) -> None:
+        self._finish_films()
+        tops = [source.flat(self.inputs) for source in self.sources]
+        highest = max(tops, key=lambda top: float(self.inputs.nm(top)))
+        top = highest + self._thickness(present)
+        self.levels.append(Level(present, plan=self._zones(present), top=top))
+        self.sources = [Source(None, top)]
+
+    def _unfilled(self, present: PresentLayer) -> None:
+        self._finish_films()
+        thickness = self._thickness(present)
+        if present.solid:
+            self.levels.append(Level(present))
+            self.sources = [source.raised(thickness) for source in self.sources]
+            return
+        plan = self.draw(present)
+        self.axes.append(plan)
+        self.levels.append(Level(present, plan=len(self.axes) - 1, only_features=True))
+        self.sources += [
+            Source(area, source.flat(self.inputs) + thickness)
+            for source in self.sources
+            for area in self._on_top(plan, source)
+        ]
+
+    def _on_top(self, plan: LayerPlan, source: Source) -> list[Outline]:
+        """The parts of a source's area that features lie on."""
+        features = plan.outline
+        if source.outline is None:
+            return [features]
+        inside = Overlap((features.inside, source.outline.inside))
+        reach = -features.window[0]
+        both = outline([features.walls, source.outline.walls], inside, self.cell, reach)
+        return [both] if len(both.walls) or bool(inside(np.zeros(1), np.zeros(1))[0]) else []
+
+    def _zones(self, present: PresentLayer) -> int | None:
+        if not present.features or present.solid:
+            return None
+        self.axes.append(self.draw(present))
+        return len(self.axes) - 1
+
+    def _finish_films(self) -> None:
+        """Cut the slopes of the conformal layers laid down since the last other layer."""
+        if self.films and len(self.sources) > 1:
+            layers = [level.present.index for level in self.films]
+            self.axes.append(slopes(self.sources, layers, self.inputs, self.cell))
+            for k, level in enumerate(self.films):
+                level.slopes, level.film = len(self.axes) - 1, k
+        self.films = []
+
+    def _thickness(self, present: PresentLayer) -> Array:
+        return self.inputs.share_of(self.inputs.layer[present.index])
+
+    def tops(self, combinations: Key) -> list[Array]:
+        """The top (K, L) of every level in combinations (K, axes) of states, as shares of the inputs."""
+        tops: list[Array] = []
+        below = np.zeros((len(combinations), len(self.inputs.inputs)))
+        for level in self.levels:
+            below = self._top(level, combinations, below)
+            tops.append(below)
+        return tops
+
+    def _top(self, level: Level, combinations: Key, below: Array) -> Array:
+        if level.top is not None:
+            return np.broadcast_to(level.top, below.shape)
+        if level.slopes is not None:
+            axis = self.axes[level.slopes]
+            assert isinstance(axis, Slopes)
+            return axis.heights[combinations[:, level.slopes], level.film]
+        raised = below + self._thickness(level.present)
+        if level.only_features:
+            assert level.plan is not None
+            return np.where(combinations[:, level.plan, None] > 0, raised, below)
+        return raised
