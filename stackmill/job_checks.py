@@ -165,7 +165,7 @@ def _process_materials(stack: Stack, recipe: Recipe) -> Iterator[Complaint]:
 
 def _energies(documents: JobDocuments, stack: Stack, recipe: Recipe, found: Found) -> Iterator[Complaint]:
     """Energies at which some material of the stack would not be sputtered at all."""
-    from stackmill.rates import threshold_ev
+    from stackmill.rates.yields import threshold_ev
 
     gas = documents.mill.model.gas
     names = dict.fromkeys(name for name, _ in in_stack(stack))

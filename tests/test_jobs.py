@@ -12,7 +12,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from stackmill.documents.recipe import Beam, Cover, Process
+from stackmill.documents.recipe import Beam, Cover, Process, Strip
 from stackmill.errors import FileAccessError, InputErrors, UsageError
 from stackmill.jobs import bare_job, load_job, overrides
 from stackmill.units import Measure
@@ -192,6 +192,7 @@ def test_a_lone_stack_takes_overrides_with_and_without_its_name() -> None:
         ("mill.curent_density", "1 mA/cm2", "--set mill.curent_density: error: this mill file has no key 'curent_density' (did you mean 'current_density'?)"),
         ("mill.current_density", "0.3", "--set mill.current_density: error: 0.3 has no unit (write 0.3 mA/cm2)"),
         ("recipe.steps.9.energy", "1 keV", "--set recipe.steps.9.energy: error: there is no item '9' in this list (count from 1 to 4, or a name: paint, etch, bulk or touch)"),
+        ("recipe.steps.0.energy", "1 keV", "--set recipe.steps.0.energy: error: there is no item '0' in this list (count from 1 to 4, or a name: paint, etch, bulk or touch)"),
         ("mill.gas.kind", "argon", "--set mill.gas.kind: error: gas is a single value and has no 'kind' (end the path there)"),
         ("goal.in", "[field]", "--set goal.in:1:2: error: region 'field' has no 'metal 2 / bus' (it is in array)"),
         ("goal.in", "[field", "--set goal.in:1:1: error: the list opened here with [ is not closed (add the missing ] or comma)"),
@@ -221,10 +222,70 @@ def test_complaints_of_all_files_at_once(folder: Path) -> None:
         load_job(folder / "job.yaml")
     assert headlines(refused, folder) == [
         "job.yaml:5:29: error: there is no layer called 'oxid' (did you mean oxide?)",
-        "mill.yaml:2:6: error: gas cannot be 'agron' (did you mean argon?)",
-        "recipe.yaml:4:74: error: there is no layer called 'oxyde' (did you mean oxide?)",
         "stack.yaml:9:31: error: no material is called 'AlCuu' (did you mean AlCu?)",
         "stack.yaml:10:46: error: 500 has no unit (write 500 nm)",
+        "mill.yaml:2:6: error: gas cannot be 'agron' (did you mean argon?)",
+        "recipe.yaml:4:74: error: there is no layer called 'oxyde' (did you mean oxide?)",
+    ]
+
+
+def refusals(stack: str, job: str = "", *, recipe: str = "") -> list[str]:
+    """The complaints about a job written in place, without their places."""
+    blocks = {
+        "stack": stack,
+        "recipe": recipe or "steps: [{energy: 1 keV, incidence: 0 deg, motion: still, for: 1 min}]",
+    }
+    text = "".join(
+        f"{key}:\n" + "".join(f"  {line}\n" for line in block.splitlines()) for key, block in blocks.items()
+    )
+    with pytest.raises(InputErrors) as refused:
+        load_job(text + job)
+    return [error.what for error in refused.value.errors]
+
+
+@pytest.mark.parametrize(
+    ("regions", "goal", "complaints"),
+    [
+        ("{name: a, solid: {metal 2: pad}}", "metal 2 / bus", ["no region has 'metal 2 / bus'"]),
+        ("{name: a, absent: {layers: [oxide]}}", "oxide", ["no region has layer 'oxide'"]),
+        ("{name: a, absent: {features_of: [metal 2]}}", "metal 2", ["no region has layer 'metal 2'"]),
+        ("{name: a, absent: {layers: [metal 2]}}", "metal 2 / bus", ["no region has 'metal 2 / bus'"]),
+        ("{name: a}, {name: b, absent: {layers: [oxide]}}", "{layer: oxide, in: b}", ["region 'b' has no layer 'oxide'"]),
+    ],
+)  # fmt: skip
+def test_goals_that_no_region_has(regions: str, goal: str, complaints: list[str]) -> None:
+    pad = "      - {name: pad, material: W, block: {x: [0 um, 1 um], y: [0 um, 1 um]}}\n  - {name: oxide"
+    stack = STACK.replace("material: SiO2 PECVD", "material: none").replace("  - {name: oxide", pad)
+    stack = f"{stack[: stack.index('regions:')]}regions: [{regions}]"
+    assert refusals(stack, f"goal: {goal}") == complaints
+
+
+def test_a_step_may_end_on_a_layer_that_is_absent(folder: Path) -> None:
+    """Reaching an absent layer is reaching the next present one below."""
+    (folder / "stack.yaml").write_text(
+        STACK.replace("features_of: [metal 2]", "layers: [metal 2]"), encoding="utf-8"
+    )
+    (folder / "recipe.yaml").write_text(
+        RECIPE.replace("to: oxide", "to: {layer: metal 2, in: field}"), encoding="utf-8"
+    )
+    assert load_job(folder / "job.yaml").recipe.steps[2].name == "bulk"
+
+
+def test_a_value_that_stands_in_earns_no_complaint_of_its_own() -> None:
+    """An unreadable value is replaced to look further; what it was replaced by may not fit, and that is not told."""
+    thin = STACK.replace("500 nm", "100 nm")
+    assert refusals(thin, "keep: {layer: oxide, at_least: 50}") == ["50 has no unit"]
+    narrow = STACK.replace("cell: {x: 4 um, y: 4 um}", "cell: {x: 1 um, y: 1 um}").replace(
+        "centre: 2 um", "centre: 0.5 um"
+    )
+    assert refusals(narrow.replace("width: 1 um", "width: 1")) == ["1 has no unit"]
+
+
+def test_an_unknown_key_does_not_hide_what_else_is_wrong() -> None:
+    stack = STACK.replace("thickness: 500 nm", "thickness: 500 nm, colour: red")
+    assert refusals(stack, "goal: oxid") == [
+        "layer 'oxide' has no key 'colour'",
+        "there is no layer called 'oxid'",
     ]
 
 
@@ -235,6 +296,49 @@ def test_aliases_become_the_materials_own_names(folder: Path) -> None:
     again = load_job(text)
     assert again.stack.layers[-1].material == "Si"
     assert set(again.milled_materials) == set(job.milled_materials)
+
+
+def test_aliases_are_understood_everywhere(folder: Path) -> None:
+    plain = load_job(folder / "job.yaml").materials
+    silicon, paint = plain["Si"].aliases[0], plain["silver paint"].aliases[0]
+    films = f"width: 1 um}}, cap: {{material: {silicon}, thickness: 9 nm}}, liner: {{material: {silicon}, thickness: 9 nm}}}}"
+    (folder / "stack.yaml").write_text(STACK.replace("width: 1 um}}", films), encoding="utf-8")
+    (folder / "recipe.yaml").write_text(
+        RECIPE.replace("silver paint", paint).replace(
+            "  - {name: bulk", f"  - {{strips: [{silicon}]}}\n  - {{name: bulk"
+        ),
+        encoding="utf-8",
+    )
+    job = load_job(folder / "job.yaml")
+    cover, _, strip, *_ = job.recipe.steps
+    bus = job.stack.layers[1].features[0]
+    assert isinstance(cover, Cover)
+    assert isinstance(strip, Strip)
+    assert bus.cap is not None
+    assert (cover.with_, strip.strips) == ("silver paint", ("Si",))
+    assert (bus.cap.material, bus.liner[0].material) == ("Si", "Si")
+    assert silicon not in job.materials
+
+
+def test_a_misfit_among_a_labs_materials_is_shown_where_it_stands(folder: Path) -> None:
+    (folder / "lab.yaml").write_text(
+        "materials:\n  - {name: my oxide, like: SiO2}\n  - {name: my other, like: SiO9}\n", encoding="utf-8"
+    )
+    (folder / "job.yaml").write_text(JOB + "materials: lab.yaml\n", encoding="utf-8")
+    with pytest.raises(InputErrors) as refused:
+        load_job(folder / "job.yaml")
+    (line,) = headlines(refused, folder)
+    assert line.startswith("lab.yaml:3:28: error: no material is called 'SiO9'")
+
+
+def test_in_broken_files_a_labs_materials_are_not_taken_for_unknown(folder: Path) -> None:
+    (folder / "lab.yaml").write_text("materials: [{name: my oxide, like: SiO2}]", encoding="utf-8")
+    broken = STACK.replace("material: SiO2,", "material: my oxide,").replace("name: array", "nam: array")
+    (folder / "stack.yaml").write_text(broken.replace("{name: field", "{nae: field"), encoding="utf-8")
+    (folder / "job.yaml").write_text(JOB + "materials: lab.yaml\n", encoding="utf-8")
+    with pytest.raises(InputErrors) as refused:
+        load_job(folder / "job.yaml")
+    assert [line for line in headlines(refused, folder) if "material" in line] == []
 
 
 def test_a_labs_own_materials(folder: Path) -> None:

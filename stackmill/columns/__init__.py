@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from stackmill.columns.build import build
+from stackmill.columns.building import build
 from stackmill.columns.columns import PARTS, ColumnMap, RegionColumns, Seam, ThicknessInput
 from stackmill.columns.problems import liner_too_thick, outside, overlaps
 

@@ -1,7 +1,7 @@
 """One layer in plan and in section: fill, and features with their films carved inside the drawn outlines.
 
-Bottom beats sides, sides beat top. From the top, the inside of a feature is cap, core, the liner's bottoms from
-the innermost out, base; the ring of one liner film is that film down to the bottoms of films further out.
+Bottom beats sides, sides beat top. From the top, the inside of a feature is cap, core, the liner's bottoms
+from the innermost out, base; the ring of a liner film is that film down to the bottoms of those further out.
 """
 
 from __future__ import annotations
@@ -130,7 +130,7 @@ def make_up(feature: Feature) -> object:
 
 @dataclass(frozen=True)
 class Cut:
-    """A segment before it is put in its place: numbers of material and feature, part, thickness shares (L,)."""
+    """A segment before it is put in its place: numbers of material and feature, part, thickness (L,)."""
 
     material: int
     feature: int
@@ -140,7 +140,7 @@ class Cut:
 
 @dataclass(frozen=True)
 class Section:
-    """What a layer has in one zone, top down; `cuts[stretch]` is as much thicker as the layer is high there."""
+    """What a layer has in one zone, top down; `cuts[stretch]` grows with the layer's height there."""
 
     cuts: tuple[Cut, ...]
     stretch: int

@@ -38,8 +38,8 @@ class ThicknessInput:
 class Seam:
     """A gap that a conformal layer closes: the films from both sides meet in its middle.
 
-    region, layer: names; between: the two features at its sides (the same one twice if a feature faces its own
-    neighbour in the next cell); gap_nm: its narrowest width at the walls' foot.
+    region, layer: names; between: the two features at its sides (the same one twice if a feature faces its
+    own neighbour in the next cell); gap_nm: its narrowest width at the walls' foot.
     """
 
     region: str
@@ -61,13 +61,18 @@ class RegionColumns:
     """The C distinct columns of one region, largest first, each of up to S segments from the top down.
 
     material, layer, feature, part (C, S): indices into the map's tables and PARTS, -1 beyond the last of the
-    `segments` (C,) segments; feature is -1 in fill too. floor_nm, thickness_nm (C, S) and top_nm (C,): heights
-    over the substrate's top and thicknesses at best values. dfloor_dthickness, dthickness (C, S, L) and
-    dtop_dthickness (C, L): their derivatives to the map's L thickness inputs. area (C,): shares of the region,
-    which sum to 1. slope (C,): 0 for flat ground, else 1..8, the class on a conformal slope, from the high side
-    down. centre_nm (C, 2): the point of a column's plan area farthest from other columns.
+    `segments` (C,) segments; feature is -1 in fill too.
+    floor_nm, thickness_nm (C, S), top_nm (C,): heights over the substrate's top, thicknesses, at best values;
+    beyond the last segment the floor stays and the thickness is 0.
+    dfloor_dthickness, dthickness (C, S, L), dtop_dthickness (C, L): derivatives to the map's L inputs. All
+    heights are sums of inputs, so derivative times best values gives the height itself.
+    area (C,): shares of the region, which sum to 1.
+    slope (C,): 0 where every surface is flat, else 1..8, the class on a conformal slope (the uppermost one),
+    from the wall down.
+    centre_nm (C, 2): the point of a column's plan area farthest from other columns.
     edge_distance_nm (C, C): from the centre of the row's column to the nearest point of the other's area, in
-    plan, across the cell's edges too; inf on the diagonal. labels: one for each column, all different.
+    plan, across the cell's edges too; inf on the diagonal.
+    labels: one for each column, all different. where: finds the column of a point.
     """
 
     name: str

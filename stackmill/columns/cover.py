@@ -1,7 +1,7 @@
 """Where the surface lies while a die is built up: plateaus, conformal films over them, and their slopes.
 
 The surface is the highest of a few sources: a source is an area of the plan with a flat top at some height,
-and the conformal films laid over it since, which lean out from its walls. The ground is a source without walls.
+and the conformal films laid over it since, which lean out from its walls. The ground is a source too.
 """
 
 from __future__ import annotations
@@ -29,13 +29,14 @@ _HIGHER_NM = 1e-9
 
 @dataclass(frozen=True)
 class Source:
-    """A flat top: outline (None for all of the plan), height (L,) as shares of the inputs, films over it."""
+    """A flat top: name; outline (None: all of the plan); height (L,) as shares of the inputs; films."""
 
+    name: str
     outline: Outline | None
     height: Array
     films: Films = field(default_factory=Films)
 
-    def flat(self, inputs: StackInputs, films: int | None = None) -> Array:
+    def flat(self, films: int | None = None) -> Array:
         """Height (L,) of the top over the first `films` films, or all."""
         top = self.height.copy()
         top[list(self.films.inputs[:films])] += 1.0
@@ -63,8 +64,8 @@ class Source:
 class Slopes:
     """The surface over its sources after some conformal layers, cut into flat tops and classes of slope.
 
-    A state is 9 times the number of the source that makes the surface there, plus 0 on its flat top or 1..8 for
-    the class, from the wall down. layers: the conformal layers since the last flat ground or feature;
+    A state is 9 times the number of the source that makes the surface there, plus 0 on its flat top or 1..8
+    for the class, from the wall down. layers: the conformal layers since the last flat ground or feature;
     bounds[source] (9,): distances that part its classes; heights (states, layers, L): mean height of each
     layer's top in each state.
     """
@@ -104,7 +105,7 @@ def highest(sources: Sequence[Source], inputs: StackInputs, x: Array, y: Array) 
     """Which source makes the surface at points, and how far it is: both as the points are shaped."""
     owner = np.zeros(x.shape, dtype=np.int64)
     distance = np.zeros(x.shape)
-    top = np.full(x.shape, float(inputs.nm(sources[0].flat(inputs))))
+    top = np.full(x.shape, float(inputs.nm(sources[0].flat())))
     for number, source in enumerate(sources[1:], 1):
         away = source.distance(x, y)
         height = float(inputs.nm(source.height)) + _over(source, away)
@@ -129,10 +130,7 @@ def slopes(
         tuple(sorted({*b[1:].tolist(), *_feet(found, k, len(layers), inputs)})) for k, b in enumerate(bounds)
     )
     flat = np.stack(
-        [
-            [s.flat(inputs, len(s.films.inputs) - len(layers) + 1 + k) for k in range(len(layers))]
-            for s in found
-        ]
+        [[s.flat(len(s.films.inputs) - len(layers) + 1 + k) for k in range(len(layers))] for s in found]
     )
     heights = np.repeat(flat, STATES, axis=0)
     made = Slopes(found, tuple(layers), bounds, edges, heights, inputs)
@@ -152,7 +150,7 @@ def _outermost(source: Source, ground: Source, inputs: StackInputs) -> float:
     """How far a slope can stretch before it meets the top of the films on the ground."""
     if source.outline is None or not source.films.inputs:
         return 0.0
-    lowest = float(inputs.nm(ground.flat(inputs) - source.height))
+    lowest = float(inputs.nm(ground.flat() - source.height))
     return source.films.reach_nm if lowest <= 0.0 else source.films.distance_at(lowest)
 
 
@@ -164,7 +162,7 @@ def _feet(sources: Sequence[Source], number: int, layers: int, inputs: StackInpu
     for k in range(layers):
         films = source.first_films(len(source.films.inputs) - layers + 1 + k)
         for other in sources:
-            flat = other.flat(inputs, len(other.films.inputs) - layers + 1 + k)
+            flat = other.flat(len(other.films.inputs) - layers + 1 + k)
             over = float(inputs.nm(flat - source.height))
             feet.append(films.reach_nm if over <= 0.0 else films.distance_at(over))
     return feet
@@ -206,7 +204,7 @@ def _mean_heights(made: Slopes, spans: Spans) -> Array:
         for column in np.flatnonzero(shares.any(axis=0)):
             heights[codes, k, column] = np.bincount(which, share.ravel() * shares[:, column]) / area
         unused = np.flatnonzero(~shares.any(axis=0))
-        heights[np.ix_(codes, [k], unused)] = 0.0
+        heights[codes[:, None], k, unused] = 0.0
     return heights
 
 

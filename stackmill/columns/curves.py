@@ -1,7 +1,7 @@
-"""Plan curves of three kinds (upright and level straight pieces, arcs of circles): crossing, cutting, distance.
+"""Plan curves of three kinds (upright and level pieces, arcs of circles): crossing, cutting, distance.
 
-Every boundary in the plan of a die is made of these: edges of lines, blocks and vias, and the curves at a fixed
-distance from such edges.
+Every boundary in the plan of a die is made of these: edges of lines, blocks and vias, and the curves at a
+fixed distance from such edges.
 """
 
 from __future__ import annotations
@@ -42,7 +42,8 @@ class Curves:
 
     def distance(self, x: Array, y: Array) -> Array:
         """From points (N,) to the nearest curve (N,); inf without curves."""
-        return self.distances(x, y).min(axis=-1, initial=np.inf)
+        nearest: Array = self.distances(x, y).min(axis=-1, initial=np.inf)
+        return nearest
 
     def distances(self, x: Array, y: Array) -> Array:
         """From points (...) to each curve (..., V + H + A); curves may be stacked to go with the points."""
@@ -142,11 +143,12 @@ def straight_meets_circle(at: Array, arcs: Array) -> Array:
     """Where upright lines x = at (V,) meet the circles of arcs (A, 5): y (V, A, 2), nan where they do not."""
     reach = arcs[:, 2] ** 2 - (at[:, None] - arcs[:, 0]) ** 2
     half = np.sqrt(np.where(reach > 0.0, reach, np.nan))
-    return np.stack([arcs[:, 1] - half, arcs[:, 1] + half], axis=-1)
+    meet: Array = np.stack([arcs[:, 1] - half, arcs[:, 1] + half], axis=-1)
+    return meet
 
 
 def circles_meet(one: Array, other: Array) -> Array:
-    """Where circles of arcs (A, 5) meet those of others (B, 5): points (A, B, 2, 2), nan where they do not."""
+    """Where circles of arcs (A, 5) meet those of others (B, 5): points (A, B, 2, 2), nan for none."""
     between = other[None, :, :2] - one[:, None, :2]
     d2 = np.sum(between**2, axis=-1)
     r1, r2 = one[:, None, 2], other[None, :, 2]
@@ -156,7 +158,8 @@ def circles_meet(one: Array, other: Array) -> Array:
     across = np.sqrt(np.where(across2 > 0.0, across2, np.nan))
     sideways = np.stack([-between[..., 1], between[..., 0]], axis=-1) * across[..., None]
     middle = one[:, None, :2] + along[..., None] * between
-    return np.stack([middle - sideways, middle + sideways], axis=2)
+    meet: Array = np.stack([middle - sideways, middle + sideways], axis=2)
+    return meet
 
 
 def _distinct(rows: Array) -> Array:
@@ -169,11 +172,12 @@ def _to_arcs(arcs: Array, x: Array, y: Array) -> Array:
     cx, cy, r, start, stop = np.moveaxis(arcs, -1, 0)
     dx, dy = x - cx, y - cy
     along = (np.arctan2(dy, dx) - start) % TURN <= stop - start + 1e-12
-    to_circle = np.abs(np.hypot(dx, dy) - r)
+    to_circle: Array = np.abs(np.hypot(dx, dy) - r)
     if bool(np.all(along)):
         return to_circle
     ends = [np.hypot(dx - r * np.cos(angle), dy - r * np.sin(angle)) for angle in (start, stop)]
-    return np.where(along, to_circle, np.minimum(*ends))
+    nearest: Array = np.where(along, to_circle, np.minimum(ends[0], ends[1]))
+    return nearest
 
 
 def _clipped(straight: Array, low: float, high: float, start: float, stop: float) -> Array:
@@ -216,7 +220,7 @@ def _cut_arcs(arcs: Array, upright: Array, level: Array, window: tuple[float, fl
 
 
 def _pieces(stops: Array, low: Array, high: Array, shortest: Array) -> tuple[NDArray[np.intp], Array, Array]:
-    """Cut intervals low..high (N,) at stops (N, M; nan for none): interval number, start and stop of each piece."""
+    """Cut intervals low..high (N,) at stops (N, M; nan for none): number, start and stop of each piece."""
     inside = np.where(np.isnan(stops), low[:, None], np.clip(stops, low[:, None], high[:, None]))
     edges = np.sort(np.concatenate([low[:, None], inside, high[:, None]], axis=1), axis=1)
     which, k = np.nonzero(np.diff(edges, axis=1) > shortest[:, None])

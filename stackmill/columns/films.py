@@ -1,8 +1,8 @@
 """The top of conformal films around a wall, as if a ball had rolled over it.
 
-A film of thickness t and sidewall share c lifts the surface to the highest point of half-ellipses with half-axes
-c t (in plan) and t (up) put on every point of it. Of several films in turn, the half-ellipses add up point by
-point of equal slope.
+A film of thickness t and sidewall share c lifts the surface to the highest point of half-ellipses with
+half-axes c t (in plan) and t (up) put on every point of it. Of several films in turn, the half-ellipses add up
+point by point of equal slope.
 """
 
 from __future__ import annotations
@@ -20,7 +20,7 @@ _ANGLES = 4001
 
 @dataclass(frozen=True)
 class Films:
-    """Conformal films laid down one after the other: inputs (their numbers), thickness_nm and sidewall share."""
+    """Conformal films laid down one after the other: inputs (their numbers), thickness and sidewall share."""
 
     inputs: tuple[int, ...] = ()
     thickness_nm: tuple[float, ...] = ()

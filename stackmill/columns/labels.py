@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections import Counter
-from collections.abc import Callable, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 from stackmill.columns.columns import CORE, FILL, LINER
@@ -15,11 +15,11 @@ FIELD = "field"
 
 @dataclass(frozen=True)
 class Slope:
-    """A class of slope in a column: the layer whose top it is, its number from the wall down, its source."""
+    """A class of slope in a column: the layer whose top it is, number from the wall down, what it slopes from."""
 
     layer: int
     number: int
-    source: int
+    source: str
 
 
 @dataclass(frozen=True)
@@ -32,28 +32,28 @@ class Labelled:
 
 def labels(columns: Sequence[Labelled], inputs: StackInputs, layers: Sequence[str]) -> tuple[str, ...]:
     """A name for each column, all different: as short as that allows."""
-    short = [_sequence(c, layers, lambda layer, name: name, inputs) for c in columns]
+    short = [_sequence(c, layers, inputs, full=False) for c in columns]
     taken = Counter(short)
     if max(taken.values()) == 1:
         return tuple(short)
-    long = [_sequence(c, layers, lambda layer, name: f"{layers[layer]} {name}", inputs) for c in columns]
-    mixed = [s if taken[s] == 1 else full for s, full in zip(short, long, strict=True)]
-    return _numbered(mixed)
+    full = [_sequence(c, layers, inputs, full=True) for c in columns]
+    return _numbered([s if taken[s] == 1 else f for s, f in zip(short, full, strict=True)])
 
 
-def _sequence(
-    column: Labelled, layers: Sequence[str], called: Callable[[int, str], str], inputs: StackInputs
-) -> str:
-    words = {
-        slope.layer: [f"{layers[slope.layer]} slope {slope.number} of {CLASSES}"] for slope in column.slopes
-    }
+def _sequence(column: Labelled, layers: Sequence[str], inputs: StackInputs, *, full: bool) -> str:
+    """The words of a column; `full` adds the layer of each feature and the feature under each slope."""
+    words: dict[int, list[str]] = {}
+    for slope in column.slopes:
+        origin = f" from {slope.source}" if full else ""
+        words[slope.layer] = [f"{layers[slope.layer]} slope {slope.number} of {CLASSES}{origin}"]
     met: dict[tuple[int, int], list[tuple[int, int]]] = {}
     for material, layer, feature, part in column.kinds:
         if part != FILL:
             met.setdefault((layer, feature), []).append((material, part))
     for (layer, feature), parts in met.items():
-        name = called(layer, inputs.features[feature][1])
-        words.setdefault(layer, []).append(f"{name}{_ring(parts, inputs)}")
+        origin = f"{layers[layer]} " if full else ""
+        word = f"{origin}{inputs.features[feature][1]}{_ring(parts, inputs)}"
+        words.setdefault(layer, []).append(word)
     return " / ".join(word for layer in sorted(words) for word in words[layer]) or FIELD
 
 

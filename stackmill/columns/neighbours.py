@@ -19,12 +19,13 @@ _STARTS = 5  # places of each kind in a column from which its centre is looked f
 _ROUNDS = 12
 _POINTS = np.pi / 4 * np.arange(8)
 _COMPASS = np.stack([np.cos(_POINTS), np.sin(_POINTS)], axis=1)
-_FAR_NM = 1e12
+_FAR_LINE = np.array([0.0, 1e12, -1e12])  # from everywhere: less than nothing of a line is far away
+_FAR_ARC = np.array([0.0, 0.0, 1e12, 0.0, 1.0])
 
 
 @dataclass(frozen=True)
 class Neighbourhood:
-    """centre_nm (C, 2) of each column; edge_distance_nm (C, C) from there to the nearest point of each other."""
+    """See RegionColumns: centre_nm (C, 2), edge_distance_nm (C, C)."""
 
     centre_nm: Array
     edge_distance_nm: Array
@@ -50,6 +51,8 @@ def neighbourhood(
     sides = _sides(pieces, plan)
     real = sides[:, 0] != sides[:, 1]
     borders, sides = pieces.chosen(real), sides[real]
+    if plan.competing:
+        borders, sides = _with_meetings(borders, sides, spans, of_span, plan.cell)
     touching = np.zeros((columns, len(sides)), dtype=bool)
     touching[sides.T, np.arange(len(sides))] = True
     centres = _centres(_padded(borders, touching), _starts(plan, borders, spans, of_span), plan)
@@ -63,27 +66,41 @@ def _sides(pieces: Curves, plan: RegionPlan) -> Index:
     return plan.column(x + step * nx, y + step * ny).T
 
 
+def _with_meetings(
+    borders: Curves, sides: Index, spans: Spans, of_span: Index, cell: tuple[float, float]
+) -> tuple[Curves, Index]:
+    """Add the points where scanlines cross borders that are neither straight nor round."""
+    order = np.lexsort((spans.x0, spans.y))
+    left, right = order[:-1], order[1:]
+    between = (spans.y[left] == spans.y[right]) & (of_span[left] != of_span[right])
+    left, right = left[between], right[between]
+    x, y = spans.x1[left], spans.y[left]
+    new = periodic_distances(borders, x, y, cell).min(axis=-1, initial=np.inf) > SIDE_NM
+    points = np.column_stack([x, y, y])[new]
+    added = np.column_stack([of_span[left], of_span[right]])[new]
+    count = len(borders.upright)
+    merged = Curves(np.concatenate([borders.upright, points]), borders.level, borders.arcs)
+    return merged, np.concatenate([sides[:count], added, sides[count:]])
+
+
 def _padded(borders: Curves, touching: Mask) -> Curves:
     """For each column (C, 1, ...) its own borders, filled up with far-away ones."""
     v, h = len(borders.upright), len(borders.upright) + len(borders.level)
-    parts = (
-        (borders.upright, touching[:, :v]),
-        (borders.level, touching[:, v:h]),
-        (borders.arcs, touching[:, h:]),
+    return Curves(
+        _own(borders.upright, touching[:, :v], _FAR_LINE)[:, None],
+        _own(borders.level, touching[:, v:h], _FAR_LINE)[:, None],
+        _own(borders.arcs, touching[:, h:], _FAR_ARC)[:, None],
     )
-    return Curves(*(_own(rows, mask)[:, None] for rows, mask in parts))
 
 
-def _own(rows: Array, mask: Mask) -> Array:
+def _own(rows: Array, mask: Mask, far: Array) -> Array:
     most = int(mask.sum(axis=1).max(initial=0))
     first = np.argsort(~mask, axis=1, kind="stable")[:, :most]
-    far = np.zeros(rows.shape[1])
-    far[0] = _FAR_NM
     return np.where(np.take_along_axis(mask, first, axis=1)[..., None], rows[first], far)
 
 
 def _starts(plan: RegionPlan, borders: Curves, spans: Spans, of_span: Index) -> _Starts:
-    """Where to look for centres: middles of spans, the widest and others evenly picked, and centres of arcs."""
+    """Where to look for centres: middles of spans, the widest and some others, and centres of arcs."""
     picked = []
     order = np.lexsort((spans.x0 - spans.x1, of_span))
     for own in np.split(order, np.flatnonzero(np.diff(of_span[order])) + 1):
@@ -98,7 +115,7 @@ def _starts(plan: RegionPlan, borders: Curves, spans: Spans, of_span: Index) -> 
 
 
 def _centres(own: Curves, starts: _Starts, plan: RegionPlan) -> Array:
-    """The point (C, 2) of each column's area farthest from its borders, to about a thousandth of that distance."""
+    """The point (C, 2) of each column's area farthest from its borders, to a thousandth of that distance."""
     c = starts.column
     of_start = Curves(own.upright[c, 0], own.level[c, 0], own.arcs[c, 0])
     away = _nearest(of_start, starts.x, starts.y, plan.cell)
@@ -115,11 +132,13 @@ def _centres(own: Curves, starts: _Starts, plan: RegionPlan) -> Array:
         best = np.where(better[:, None], tries[rows, k], best)
         reach = np.where(better, away[rows, k], reach)
         step = np.where(better, step, step / 2)
-    return best % np.array(plan.cell)
+    centres: Array = best % np.array(plan.cell)
+    return centres
 
 
 def _nearest(curves: Curves, x: Array, y: Array, cell: tuple[float, float]) -> Array:
-    return periodic_distances(curves, x, y, cell).min(axis=-1)
+    nearest: Array = periodic_distances(curves, x, y, cell).min(axis=-1)
+    return nearest
 
 
 def _distances(centres: Array, borders: Curves, touching: Mask, cell: tuple[float, float]) -> Array:

@@ -1,4 +1,4 @@
-"""Outlines of features on the plan, which repeats with the cell: what is inside, and how far the walls are."""
+"""Outlines of features on the plan, which repeats with the cell: what is inside, how far the walls are."""
 
 from __future__ import annotations
 
@@ -166,7 +166,8 @@ class Outline:
         angle = TURN * (np.arange(_CORNER_POINTS) + 0.5) / _CORNER_POINTS
         around = ends[:, :, None] + 10 * SIDE_NM * np.stack([np.cos(angle), np.sin(angle)])
         full = self.inside(around[:, 0], around[:, 1]).sum(axis=1) - _CORNER_POINTS // 2
-        return ends[full >= -1] if reflex else ends[full <= 1]
+        corners: Array = ends[full >= -1 if reflex else full <= 1]
+        return corners
 
 
 def outline(edges: Sequence[Curves], inside: Inside, cell: tuple[float, float], reach_nm: float) -> Outline:

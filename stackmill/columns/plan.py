@@ -40,7 +40,7 @@ class Keys:
 
 
 def keys_of(axes: Sequence[Axis], x: Array, y: Array) -> tuple[Keys, Key, Key]:
-    """How to number combinations, with the combinations (K, axes) there are, and each point's (N,) among them."""
+    """How to number combinations, the combinations (K, axes) there are, and each point's (N,) among them."""
     key = np.zeros(x.shape, dtype=np.int64)
     known: list[Key | None] = []
     states, size = [], 1
@@ -67,6 +67,11 @@ class RegionPlan:
     cell: tuple[float, float]
     keys: Keys
     column_of: Index
+
+    @property
+    def competing(self) -> bool:
+        """Whether some columns meet on curves that are neither straight nor round."""
+        return any(axis.competing for axis in self.keys.axes)
 
     def column(self, x: Array, y: Array) -> Index:
         """The column at points of the plan (any shapes that go together), wrapped into the cell."""

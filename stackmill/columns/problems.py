@@ -36,7 +36,7 @@ class OutsideCell:
 class FilmsTooThick:
     """A feature that its films would fill.
 
-    across: whether it is the liner's two sides across the feature's width, else cap, base and the liner's bottom
+    across: whether it is the liner's two sides across the feature's width, else cap, base and liner bottom
     in the layer's thickness; films_nm: how thick they are together; room_nm: how much there is.
     """
 

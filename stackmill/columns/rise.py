@@ -25,8 +25,8 @@ class Level:
     """One layer and how its top lies.
 
     plan: the number of the axis that tells its zones (None: the same everywhere). Its top is either level, at
-    `top` (L,); or that of the slopes on axis `slopes`, as their `film`-th layer; or else its own thickness above
-    what is below, under features only if `only_features`.
+    `top` (L,); or that of the slopes on axis `slopes`, as their `film`-th layer; or else its own thickness
+    above what is below, in features only if `only_features`.
     """
 
     present: PresentLayer
@@ -51,7 +51,7 @@ class Rising:
 
     def build(self, layers: Sequence[PresentLayer], substrate: int) -> None:
         """Lay down all layers, given from the bottom up."""
-        self.sources = [Source(None, np.zeros(len(self.inputs.inputs)))]
+        self.sources = [Source("ground", None, np.zeros(len(self.inputs.inputs)))]
         for present in layers:
             if present.index == substrate:
                 self.levels.append(Level(present, top=self.sources[0].height))
@@ -72,11 +72,11 @@ class Rising:
 
     def _planarised(self, present: PresentLayer) -> None:
         self._finish_films()
-        tops = [source.flat(self.inputs) for source in self.sources]
+        tops = [source.flat() for source in self.sources]
         highest = max(tops, key=lambda top: float(self.inputs.nm(top)))
         top = highest + self._thickness(present)
         self.levels.append(Level(present, plan=self._zones(present), top=top))
-        self.sources = [Source(None, top)]
+        self.sources = [Source("ground", None, top)]
 
     def _unfilled(self, present: PresentLayer) -> None:
         self._finish_films()
@@ -89,7 +89,7 @@ class Rising:
         self.axes.append(plan)
         self.levels.append(Level(present, plan=len(self.axes) - 1, only_features=True))
         self.sources += [
-            Source(area, source.flat(self.inputs) + thickness)
+            Source(_name(present, source), area, source.flat() + thickness)
             for source in self.sources
             for area in self._on_top(plan, source)
         ]
@@ -137,9 +137,17 @@ class Rising:
         if level.slopes is not None:
             axis = self.axes[level.slopes]
             assert isinstance(axis, Slopes)
-            return axis.heights[combinations[:, level.slopes], level.film]
+            tops: Array = axis.heights[combinations[:, level.slopes], level.film]
+            return tops
         raised = below + self._thickness(level.present)
         if level.only_features:
             assert level.plan is not None
             return np.where(combinations[:, level.plan, None] > 0, raised, below)
         return raised
+
+
+def _name(present: PresentLayer, below: Source) -> str:
+    """What slopes from these features are called."""
+    names = [present.layer.features[k].name for k in present.features]
+    own = names[0] if len(names) == 1 else present.layer.name
+    return own if below.outline is None else f"{own} on {below.name}"

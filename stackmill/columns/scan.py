@@ -1,4 +1,4 @@
-"""Scanline integrals over the cell: exact along x, Gauss-Legendre along y between all places where curves turn.
+"""Scanline integrals over the cell: exact along x, Gauss-Legendre along y between places where curves turn.
 
 Along y the cell is cut into bands at every level edge, end, circle top and bottom, and crossing of curves; in
 a band the widths are smooth but for square roots at its ends, which y = middle - half cos(phi) takes away.
@@ -9,6 +9,7 @@ from __future__ import annotations
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from functools import cache
+from itertools import pairwise
 
 import numpy as np
 from numpy.typing import NDArray
@@ -27,7 +28,7 @@ _NOTHING = 1e-9
 
 @dataclass(frozen=True)
 class Spans:
-    """Pieces of scanlines between neighbouring curves: x0, x1, y (N,) in nm; share (N,) of the cell's area."""
+    """Pieces of scanlines between neighbouring curves: x0, x1, y (N,) in nm; share (N,) of the cell."""
 
     x0: Array
     x1: Array
@@ -44,7 +45,7 @@ class Spans:
         return Spans(self.x0[mask], self.x1[mask], self.y[mask], self.share[mask])
 
     def points(self) -> tuple[Array, Array, Array]:
-        """Points within the spans for sums over area, good for square roots at the ends: x, y, share (N, 6)."""
+        """Points for sums over area, good for square roots at the spans' ends: x, y, share (N, 6)."""
         position, weight = _within_span()
         x = self.x0[:, None] + (self.x1 - self.x0)[:, None] * position
         return x, np.broadcast_to(self.y[:, None], x.shape), self.share[:, None] * weight
@@ -109,7 +110,8 @@ def _band_edges(curves: Curves, cell: tuple[float, float]) -> Array:
     y = np.unique(y[(y >= 0.0) & (y <= cell[1])])
     y = y[np.concatenate([[True], np.diff(y) > _NOTHING * cell[1]])]
     y[-1] = cell[1]
-    return y
+    edges: Array = y
+    return edges
 
 
 def _crossings(curves: Curves, y: Array) -> list[Array]:
@@ -135,7 +137,7 @@ def _refined(spans: Spans, classify: Classify) -> Spans:
     for k in (0, 1):
         cuts.append(_where_it_changes(at[k][split], at[k + 1][split], keys[k][split], whole.y, classify))
     cuts.append(whole.x1)
-    for x0, x1 in zip(cuts[:-1], cuts[1:], strict=True):
+    for x0, x1 in pairwise(cuts):
         share = whole.share * (x1 - x0) / (whole.x1 - whole.x0)
         parts.append(Spans(x0, x1, whole.y, share).of(x1 - x0 > _NOTHING * (whole.x1 - whole.x0)))
     return _together(parts)

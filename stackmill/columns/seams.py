@@ -23,7 +23,7 @@ class Gap:
 
 
 def seams(region: str, layers: Sequence[PresentLayer], cell: tuple[float, float]) -> list[Seam]:
-    """The gaps in a region (its layers from the bottom up) that conformal layers close, and which layer does."""
+    """The gaps in a region (layers from the bottom up) that conformal layers close, and which layer does."""
     found = []
     for k, present in enumerate(layers):
         if present.has_fill or present.solid:

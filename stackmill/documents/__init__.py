@@ -10,6 +10,7 @@ from typing import TYPE_CHECKING
 
 if TYPE_CHECKING:
     from stackmill.documents.job import JobFile
+    from stackmill.documents.material import MaterialsFile
     from stackmill.documents.mill import Mill
     from stackmill.documents.reading import Document, Source
     from stackmill.documents.recipe import Recipe
@@ -46,3 +47,11 @@ def read_job(source: Source, *, file: str = "") -> Document[JobFile]:
     from stackmill.documents.reading import read_document
 
     return read_document(JobFile, source, file=file)
+
+
+def read_materials(source: Source, *, file: str = "") -> Document[MaterialsFile]:
+    """Read a lab's materials file. Raises InputErrors, FileAccessError."""
+    from stackmill.documents.material import MaterialsFile
+    from stackmill.documents.reading import read_document
+
+    return read_document(MaterialsFile, source, file=file)

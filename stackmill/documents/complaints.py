@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 import typing
 from collections.abc import Iterable, Iterator
 from typing import Any
@@ -98,10 +99,16 @@ def shape_of(value: Any) -> str:
 
 def _owner(model: type[BaseModel], tree: Tree, path: KeyPath) -> str:
     """`layer 'metal 2'`, or `this layer` where it has no name."""
-    what = str(getattr(model, "what", model.__name__.lower()))
+    what = title_of(model)
     node = tree.node(path)
     name = node.values.get("name") if isinstance(node, Block) and tree.has(path) else None
     return f"{what} {quoted(name.text)}" if isinstance(name, Scalar) and name.text else f"this {what}"
+
+
+def title_of(model: type[BaseModel]) -> str:
+    """What a model's block is called: `layer`, `stack file`; by its class's name where it does not say."""
+    words = re.sub(r"(?<=[a-z])(?=[A-Z])", " ", model.__name__).lower()
+    return str(getattr(model, "what", words))
 
 
 def keys_of(model: type[BaseModel]) -> list[str]:

@@ -9,7 +9,7 @@ from typing import Any, Generic, TypeVar
 from pydantic import BaseModel, ConfigDict, ValidationError
 
 from stackmill.documents import wording
-from stackmill.documents.complaints import complaints, keys_of, shape_of
+from stackmill.documents.complaints import complaints, keys_of, shape_of, title_of
 from stackmill.documents.healing import healed
 from stackmill.documents.marks import MOST_BYTES, Block, KeyPath, Tree, read_tree
 from stackmill.documents.wording import Sentence
@@ -70,7 +70,7 @@ def read_document(model: type[M], source: Source, *, file: str = "", what: str =
 
 def checked(model: type[M], tree: Tree, content: Any, *, what: str = "") -> Document[M]:
     """A document from a tree and its (perhaps overridden) plain content. Raises InputErrors."""
-    what = what or str(getattr(model, "what", "file"))
+    what = what or title_of(model)
     if not isinstance(tree.root, Block):
         says = wording.no_block(what, keys_of(model), shape_of(content))
         raise InputErrors([InputError(says.what, cure=says.cure, place=tree.place(()))])

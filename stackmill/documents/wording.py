@@ -54,7 +54,7 @@ IS_A_FOLDER = Sentence("this is a folder, not a file", "name a file in it")
 
 def no_such_file(name: str, neighbours: Sequence[str]) -> Sentence:
     """A file that is not there."""
-    near = nearest(name, neighbours)
+    near = nearest(name, neighbours, likeness=0.75)
     return Sentence(NO_SUCH_FILE, f"did you mean {near}?" if near else "check its name and folder")
 
 
@@ -78,10 +78,10 @@ def no_block(what: str, keys: Sequence[str], shape: str) -> Sentence:
 # --- the keys and values of a file --------------------------------------------------------------------------
 
 
-def nearest(word: str, known: Iterable[str]) -> str | None:
-    """The known word most like this one, or None where nothing is like it."""
+def nearest(word: str, known: Iterable[str], likeness: float = 0.6) -> str | None:
+    """The known word most like this one, or None where nothing is like it (likeness 0 to 1)."""
     by_folded = {_folded(k): k for k in known}
-    found = difflib.get_close_matches(_folded(word), by_folded, n=1, cutoff=0.6)
+    found = difflib.get_close_matches(_folded(word), by_folded, n=1, cutoff=likeness)
     return by_folded[found[0]] if found else None
 
 

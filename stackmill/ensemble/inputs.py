@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from stackmill.documents.recipe import OTHER, Beam, Process
 from stackmill.jobs import Job
-from stackmill.rate_model import RateModel, rate_model
+from stackmill.rates.model import RateModel, rate_model
 
 Array = NDArray[np.float64]
 

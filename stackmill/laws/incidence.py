@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
+from functools import cache
 
 import numpy as np
 from numpy.typing import ArrayLike
@@ -193,7 +194,7 @@ def _swing(theta: float, half_angle: float) -> tuple[Array, Array]:
     """Incidences of a rocking stage and the share of time spent at each."""
     if half_angle == 0.0:
         return np.array([theta]), np.array([1.0])
-    node, weight = np.polynomial.legendre.leggauss(24)
+    node, weight = _legendre()
     return theta + half_angle * node, 0.5 * weight
 
 
@@ -201,12 +202,24 @@ def _cone(divergence: float) -> tuple[Array, Array, Array]:
     """Angles off the axis, azimuths and shares of the current of a diverging beam, flattened."""
     if divergence == 0.0:
         return np.array([0.0]), np.array([0.0]), np.array([1.0])
-    node, weight = np.polynomial.laguerre.laggauss(12)
+    node, weight = _laguerre()
     off = np.minimum(divergence * np.sqrt(node), np.pi / 2)
     turn = (np.arange(24) + 0.5) * (np.pi / 12.0)
     off_2d, turn_2d = np.broadcast_arrays(off[:, None], turn[None, :])
     share = np.repeat(weight / weight.sum() / turn.size, turn.size)
     return off_2d.ravel(), turn_2d.ravel(), share
+
+
+@cache
+def _legendre() -> tuple[Array, Array]:
+    node, weight = np.polynomial.legendre.leggauss(24)
+    return np.asarray(node), np.asarray(weight)
+
+
+@cache
+def _laguerre() -> tuple[Array, Array]:
+    node, weight = np.polynomial.laguerre.laggauss(12)
+    return np.asarray(node), np.asarray(weight)
 
 
 def flat_average(

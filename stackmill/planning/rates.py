@@ -8,8 +8,8 @@ import numpy as np
 
 from stackmill.documents.recipe import Beam
 from stackmill.jobs import Job
-from stackmill.rate_model import rate_model
-from stackmill.rates import angular_shape, normal_yield
+from stackmill.rates.model import rate_model
+from stackmill.rates.yields import angular_shape, normal_yield
 
 
 @dataclass(frozen=True)

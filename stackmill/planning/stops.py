@@ -12,8 +12,8 @@ from stackmill.ensemble.run import DRAWS, SEED, Ensemble, run
 from stackmill.jobs import Job
 from stackmill.planning.shares import Share, variance_shares
 from stackmill.planning.windows import Window, find_window, quantiles
-from stackmill.slopes import shadow_multiple, slope_grid, speeds_of
-from stackmill.rates import angular_shape
+from stackmill.rates.facets import shadow_multiple, slope_grid, speeds_of
+from stackmill.rates.yields import angular_shape
 from stackmill.timing.flatness import SlopeSpeeds, flat_until
 
 Array = NDArray[np.float64]

@@ -8,7 +8,7 @@ from typing import Any
 import numpy as np
 
 from stackmill.materials.material import Material, Sourced
-from stackmill.rates import angular_shape, ln_yield_sd, normal_yield, rate_nm_per_s, threshold_ev
+from stackmill.rates.yields import angular_shape, ln_yield_sd, normal_yield, rate_nm_per_s, threshold_ev
 from stackmill.report.render import Grid, Paper, csv_text, json_text, wrapped
 
 _ENERGY_EV, _INCIDENCE_DEG, _CURRENT = 1000.0, 45.0, 0.5  # the setting the list quotes rates at

@@ -5,7 +5,7 @@ from __future__ import annotations
 from stackmill.documents.recipe import Beam
 from stackmill.jobs import Job
 from stackmill.planning.stops import StopTable
-from stackmill.rates import trail
+from stackmill.rates.yields import trail
 
 _SHARES_SHOWN = 6
 

@@ -31,7 +31,9 @@ def test_at_most_twenty_then_how_many_more() -> None:
     lines = report([error(k) for k in range(1, 26)]).split("\n")
     assert len(lines) == 21
     assert lines[-1] == "and 5 more"
-    assert report([error(k) for k in range(1, 21)]).count("error:") == 20
+    twenty = report([error(k) for k in range(1, 21)])
+    assert twenty.count("error:") == 20
+    assert twenty.endswith("f.yaml:20:1: error: wrong (mend it)")
 
 
 def test_the_caret_stands_under_wide_and_combining_characters() -> None:

@@ -13,7 +13,7 @@ from stackmill.documents.material import LibraryEntry, SourcesFile
 from stackmill.documents.reading import read_document
 from stackmill.laws.sputtering import LAWS
 from stackmill.materials.library import DATA, Library
-from stackmill.rates import angular_shape, ln_yield_sd, normal_yield, rate_nm_per_s, threshold_ev, trail
+from stackmill.rates.yields import angular_shape, ln_yield_sd, normal_yield, rate_nm_per_s, threshold_ev, trail
 
 LIBRARY = Library.load()
 NAMES = LIBRARY.names()

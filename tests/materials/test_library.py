@@ -12,7 +12,7 @@ from stackmill.documents.material import MaterialsFile
 from stackmill.documents.reading import read_document
 from stackmill.errors import InputError, InputErrors
 from stackmill.materials.library import DATA, Library, UnknownMaterialError
-from stackmill.rates import ESTIMATE_LN_SD, ln_yield_sd, normal_yield, trail
+from stackmill.rates.yields import ESTIMATE_LN_SD, ln_yield_sd, normal_yield, trail
 
 
 def lab(text: str):
@@ -110,6 +110,12 @@ def test_a_material_like_another_has_its_own_name():
     assert shipped.density.value == 2.2
     assert float(normal_yield(mine, energy_ev=700.0)) == float(normal_yield(shipped, energy_ev=700.0))
     assert "my oxide" in library.names()
+
+
+def test_a_labs_own_aliases_are_found():
+    library = Library.load(lab("materials: [{name: my oxide, like: plasma oxide, aliases: [cap oxide]}]"))
+    assert library.get("cap oxide") is library.get("my oxide")
+    assert library.get("plasma oxide").name == "SiO2 PECVD"
 
 
 def test_later_overlays_may_build_on_earlier_ones():

@@ -20,7 +20,7 @@ from scipy.optimize import least_squares
 from stackmill.constants import GASES
 from stackmill.laws.incidence import MASS_RATIO_POWER, MASS_RULE, NEAR_THRESHOLD
 from stackmill.materials.library import Library
-from stackmill.rates import threshold_ev
+from stackmill.rates.yields import threshold_ev
 from tests.published.blocks import entry_path
 
 DATA = Path(__file__).parent / "data"

@@ -22,7 +22,7 @@ from stackmill.laws.compounds import EffectiveTarget, effective_target, tie_of_u
 from stackmill.laws.sputtering import yamamura_tawara
 from stackmill.materials.library import Library
 from stackmill.materials.material import Atom, Material
-from stackmill.rates import (
+from stackmill.rates.yields import (
     ESTIMATE_ABOVE,
     ESTIMATE_BELOW,
     ESTIMATE_LN_SD,

@@ -22,7 +22,7 @@ from stackmill.constants import GASES
 from stackmill.laws.sputtering import LAWS, yamamura_tawara
 from stackmill.materials.library import Library
 from stackmill.materials.material import Material
-from stackmill.rates import NM_PER_S_PER_MA_CM2
+from stackmill.rates.yields import NM_PER_S_PER_MA_CM2
 from tests.published.blocks import entry_path, replaced
 
 DATA = Path(__file__).parent / "data"

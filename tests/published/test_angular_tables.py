@@ -15,7 +15,7 @@ import pytest
 
 from stackmill.laws.incidence import ep_constants, yamamura_angular, yamamura_exponent, yamamura_optimum_rad
 from stackmill.materials.library import Library
-from stackmill.rates import angular_shape, threshold_ev
+from stackmill.rates.yields import angular_shape, threshold_ev
 from tests.published.fit_angular import curves
 
 DATA = Path(__file__).parent / "data"

@@ -6,7 +6,7 @@ import numpy as np
 import pytest
 
 from stackmill.materials.library import Library
-from stackmill.rates import rate_nm_per_s
+from stackmill.rates.yields import rate_nm_per_s
 
 LIBRARY = Library.load()
 pytestmark = pytest.mark.common_practice

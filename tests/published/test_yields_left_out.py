@@ -8,7 +8,7 @@ import numpy as np
 import pytest
 
 from stackmill.materials.library import Library
-from stackmill.rates import ln_yield_sd, normal_yield
+from stackmill.rates.yields import ln_yield_sd, normal_yield
 from tests.published.fit_yields import LEAST_LN_SD, Evidence, evidence, leave_one_out, tie
 
 ACCURACY = Path(__file__).parents[2] / "docs" / "accuracy.md"

@@ -11,7 +11,7 @@ from pathlib import Path
 import numpy as np
 
 from stackmill.materials.library import Library
-from stackmill.rates import ln_yield_sd, normal_yield
+from stackmill.rates.yields import ln_yield_sd, normal_yield
 from tests.published.fit_compounds import ESTIMATES, TIED_TO, rule
 from tests.published.fit_yields import Evidence, LeftOut, evidence, leave_one_out
 

@@ -10,7 +10,7 @@ import pytest
 from stackmill.constants import NM_PER_S_PER_MA_CM2
 from stackmill.laws.sputtering import yamamura_tawara
 from stackmill.materials.library import Library
-from stackmill.rates import (
+from stackmill.rates.yields import (
     OTHER_GAS_LN_SD,
     angular_leverage,
     angular_shape,
@@ -113,11 +113,31 @@ def test_an_angular_deviation_acts_as_its_sd_says():
         SIO2, incidence_rad=theta, **BEAM
     )
     assert np.log(float(ratio)) == pytest.approx(SIO2.angular_sd)
-    assert angular_leverage([0.0, theta]) == pytest.approx([0.0, 1.0])
+    assert angular_leverage([0.0, np.radians(30.0), theta]) == pytest.approx([0.0, 1.0 / 3.0, 1.0])
     straight = [
         float(rate_nm_per_s(SIO2, incidence_rad=0.0, angular_deviation=d, **BEAM)) for d in (0.0, 2.0)
     ]
     assert straight[0] == straight[1]
+
+
+@pytest.mark.closed_form
+def test_own_constants_step_from_argon_to_another_gas_as_the_rule_does():
+    own = {gas: angular_shape(W, energy_ev=700.0, gas=gas) for gas in ("argon", "neon")}
+    rule_material = replace(W, angular=replace(W.angular, f=(), b=(), c=()))
+    rule = {gas: angular_shape(rule_material, energy_ev=700.0, gas=gas) for gas in ("argon", "neon")}
+    for letter in "fbc":
+        step = getattr(own["neon"], letter) - getattr(own["argon"], letter)
+        assert step == pytest.approx(
+            getattr(rule["neon"], letter) - getattr(rule["argon"], letter), abs=1e-12
+        )
+        assert abs(float(step)) > 1e-4
+
+
+def test_a_shape_vanishes_at_grazing_however_its_constants_extrapolate():
+    wild = replace(W, angular=replace(W.angular, b=(-0.5, 0.1, 0.0)))
+    ratio = angular_shape(wild, energy_ev=[200.0, 5000.0]).ratio(np.radians([[60.0], [89.99], [90.0]]))
+    assert np.all(np.isfinite(ratio))
+    assert ratio[-1] == pytest.approx([0.0, 0.0])
 
 
 def test_divergence_and_rocking_reach_the_rate():

@@ -13,7 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from stackmill.documents.recipe import Beam
-from stackmill.rates import AngularShape
+from stackmill.rates.yields import AngularShape
 
 Array = NDArray[np.float64]
 

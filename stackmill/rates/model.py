@@ -15,7 +15,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from stackmill import rates
+from stackmill.rates import yields
 from stackmill.documents.mill import Mill
 from stackmill.documents.recipe import Beam
 from stackmill.materials.calibration import RateBelief, RateEvidence, condition
@@ -122,14 +122,14 @@ def parameter_names(materials: Sequence[str]) -> tuple[str, ...]:
 
 def energy_term(material: Material, energy_ev: float, gas: str) -> float:
     """How far ln rate may be off for leaving the material's measured energies, signed: 0 inside them."""
-    outside = float(rates.outside_ln_sd(material, energy_ev=energy_ev, gas=gas))
-    higher = float(rates.outside_ln_sd(material, energy_ev=1.01 * energy_ev, gas=gas)) > outside
+    outside = float(yields.outside_ln_sd(material, energy_ev=energy_ev, gas=gas))
+    higher = float(yields.outside_ln_sd(material, energy_ev=1.01 * energy_ev, gas=gas)) > outside
     return outside if higher else -outside
 
 
 def _terms(material: Material, energy_ev: float, incidence_deg: float, gas: str) -> tuple[float, float, float]:
     """How ln rate moves with the material's three unknowns at one setting."""
-    angle = float(rates.angular_leverage(np.radians(incidence_deg)))
+    angle = float(yields.angular_leverage(np.radians(incidence_deg)))
     return 1.0, energy_term(material, energy_ev, gas), angle
 
 
@@ -144,7 +144,7 @@ def _prior(mill: Mill, materials: Mapping[str, Material]) -> RateBelief:
 def _rate_sd(material: Material, gas: str) -> float:
     """sd of ln rate straight down, at the energies where the material was measured."""
     anywhere = {"energy_ev": 1000.0, "gas": gas}
-    inside = rates.ln_yield_sd(material, **anywhere) ** 2 - rates.outside_ln_sd(material, **anywhere) ** 2
+    inside = yields.ln_yield_sd(material, **anywhere) ** 2 - yields.outside_ln_sd(material, **anywhere) ** 2
     return float(np.sqrt(inside + material.density_rel_sd**2))
 
 
@@ -176,7 +176,7 @@ def _law_rate(
     mill: Mill, material: Material, energy_ev: float, incidence_deg: Array, current: float, rocking_deg: float = 0.0
 ) -> Array:
     """What the laws give with the library's best values, all ions singly charged, in nm/s."""
-    return rates.rate_nm_per_s(
+    return yields.rate_nm_per_s(
         material,
         energy_ev=energy_ev,
         incidence_rad=np.radians(incidence_deg),

@@ -15,7 +15,13 @@ from numpy.typing import ArrayLike, NDArray
 
 from stackmill.constants import GASES, NM_PER_S_PER_MA_CM2
 from stackmill.laws.compounds import effective_target, tie_of_unmeasured
-from stackmill.laws.incidence import AngularShape, ep_constants, incidence_nodes, root_of_closeness
+from stackmill.laws.incidence import (
+    AngularShape,
+    IncidenceNodes,
+    ep_constants,
+    incidence_nodes,
+    root_of_closeness,
+)
 from stackmill.laws.sputtering import LAWS, YieldLaw
 from stackmill.materials.material import Material
 
@@ -153,16 +159,19 @@ def rate_nm_per_s(
         shape = _deviated(angular_shape(material, energy_ev=energy, gas=gas), material, angular_deviation)
         averages = [
             np.sum(nodes.weight * shape(nodes.incidence_rad))
-            for nodes in (
-                incidence_nodes(
-                    incidence_rad=float(angle), divergence_rad=divergence_rad, rocking_rad=rocking_rad
-                )
-                for angle in incidence.ravel()
-            )
+            for nodes in (_nodes(angle, divergence_rad, rocking_rad) for angle in incidence.ravel().tolist())
         ]
         total += ions_per_charge * y0 * np.array(averages)
     speed = NM_PER_S_PER_MA_CM2 * current_density_ma_per_cm2 / material.atom_density_1e22
     return np.asarray(speed * total.reshape(incidence.shape))
+
+
+@lru_cache(maxsize=256)
+def _nodes(incidence_rad: float, divergence_rad: float, rocking_rad: float) -> IncidenceNodes:
+    """The same nodes serve every material of a step."""
+    return incidence_nodes(
+        incidence_rad=incidence_rad, divergence_rad=divergence_rad, rocking_rad=rocking_rad
+    )
 
 
 def _deviated(shape: AngularShape, material: Material, sds: float) -> Callable[[Array], Array]:

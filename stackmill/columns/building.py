@@ -56,7 +56,7 @@ class Segment:
 
 @dataclass(frozen=True)
 class Stacked:
-    """One distinct column: segments from the top down, its top (L,), and the classes of slope on its way down."""
+    """One distinct column: segments and classes of slope from the top down, and its top (L,)."""
 
     segments: tuple[Segment, ...]
     top: Array
@@ -137,7 +137,9 @@ def _region(
     names = labels(
         [Labelled(tuple(s.kind for s in f.segments), f.slopes) for f in found], inputs, draw.layers
     )
-    return _arrays(region.name, found, inputs, share[order] / share.sum(), near, names, plan)
+    return _arrays(
+        region.name, found, inputs, area=share[order] / share.sum(), near=near, names=names, plan=plan
+    )
 
 
 def _stacked(rising: Rising, combinations: Key) -> list[Stacked]:
@@ -202,7 +204,7 @@ def _classes(rising: Rising, states: Sequence[int]) -> tuple[Slope, ...]:
     found = []
     for axis, state in zip(rising.axes, states, strict=True):
         if isinstance(axis, Slopes) and state % STATES:
-            found.append(Slope(axis.layers[-1], state % STATES, state // STATES))
+            found.append(Slope(axis.layers[-1], state % STATES, axis.sources[state // STATES].name))
     return tuple(reversed(found))
 
 
@@ -210,6 +212,7 @@ def _arrays(
     name: str,
     found: Sequence[Stacked],
     inputs: StackInputs,
+    *,
     area: Array,
     near: Neighbourhood,
     names: tuple[str, ...],
