@@ -6,10 +6,13 @@ import os
 import sys
 from typing import Annotated
 
-import typer
+# No plugin changes how stackmill reads its files, and looking for one costs a fifth of a forecast.
+os.environ.setdefault("PYDANTIC_DISABLE_PLUGINS", "__all__")
 
-from stackmill.cli import check, materials, rates, stops
-from stackmill.errors import InputErrors, StackmillError
+import typer  # noqa: E402 - after the line above, which it obeys
+
+from stackmill.cli import check, materials, rates, stops  # noqa: E402
+from stackmill.errors import InputErrors, StackmillError  # noqa: E402
 
 app = typer.Typer(
     name="stackmill",

@@ -5,7 +5,6 @@ from __future__ import annotations
 import os
 import shutil
 import sys
-import tempfile
 import warnings
 from collections.abc import Iterator
 from contextlib import contextmanager
@@ -46,6 +45,8 @@ def write(text: str, output: str, *, force: bool) -> None:
     target = Path(output)
     if target.exists() and not force:
         raise FileAccessError("the file is there already", cure="give --force to overwrite it", place=Place(output))
+    import tempfile
+
     try:
         descriptor, beside = tempfile.mkstemp(dir=target.parent or Path(), prefix=f".{target.name}.")
         try:

@@ -26,7 +26,7 @@ from stackmill.columns.neighbours import Neighbourhood, neighbourhood
 from stackmill.columns.plan import RegionPlan, keys_of
 from stackmill.columns.regions import PresentLayer, present_layers
 from stackmill.columns.rise import Level, Rising
-from stackmill.columns.scan import scan
+from stackmill.columns.scan import survey
 from stackmill.columns.seams import seams
 from stackmill.documents.stack import Region, Stack
 
@@ -119,8 +119,8 @@ def _region(
 ) -> RegionColumns:
     rising = Rising(inputs, draw.cell, draw)
     rising.build(layers, substrate)
-    curves = joined([axis.curves() for axis in rising.axes])
-    spans = scan(curves, rising.cell, [axis.state for axis in rising.axes if axis.competing])
+    found = survey(joined([axis.curves() for axis in rising.axes]), rising.cell, rising.axes)
+    spans = found.spans
     keys, combinations, which = keys_of(rising.axes, spans.middle, spans.y)
     area = np.bincount(which, spans.share, minlength=len(combinations))
     stacked = _stacked(rising, combinations)
@@ -131,14 +131,12 @@ def _region(
     order = np.argsort(-share, kind="stable")
     rank = np.empty_like(order)
     rank[order] = np.arange(len(order))
-    found = [stacked[first[c]] for c in order]
+    kept = [stacked[first[c]] for c in order]
     plan = RegionPlan(draw.cell, keys, rank[column])
-    near = neighbourhood(plan, curves, spans, rank[column][which], len(found))
-    names = labels(
-        [Labelled(tuple(s.kind for s in f.segments), f.slopes) for f in found], inputs, draw.layers
-    )
+    near = neighbourhood(plan, found.borders, spans, rank[column][which], len(kept))
+    names = labels([Labelled(tuple(s.kind for s in f.segments), f.slopes) for f in kept], inputs, draw.layers)
     return _arrays(
-        region.name, found, inputs, area=share[order] / share.sum(), near=near, names=names, plan=plan
+        region.name, kept, inputs, area=share[order] / share.sum(), near=near, names=names, plan=plan
     )
 
 

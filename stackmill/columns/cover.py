@@ -16,14 +16,15 @@ from stackmill.columns.curves import Curves, joined
 from stackmill.columns.films import Films
 from stackmill.columns.inputs import StackInputs
 from stackmill.columns.outlines import Outline
-from stackmill.columns.scan import Spans, scan
+from stackmill.columns.scan import Spans, survey
 
 Array = NDArray[np.float64]
 Key = NDArray[np.int64]
 
 CLASSES = 8
 STATES = CLASSES + 1  # of each source: its flat top, and the classes of the slope from it
-_SHELLS = 24
+_SHELLS = 16
+_SHELL_NODES = 4
 _HIGHER_NM = 1e-9
 
 
@@ -134,8 +135,8 @@ def slopes(
     )
     heights = np.repeat(flat, STATES, axis=0)
     made = Slopes(found, tuple(layers), bounds, edges, heights, inputs)
-    spans = scan(made.curves(), cell, [made.state] if made.competing else ())
-    return replace(made, heights=_mean_heights(made, spans))
+    found = survey(made.curves(), cell, [made])
+    return replace(made, heights=_mean_heights(made, found.spans))
 
 
 def _curves(sources: Sequence[Source], edges: Sequence[Sequence[float]]) -> Curves:
@@ -168,12 +169,32 @@ def _feet(sources: Sequence[Source], number: int, layers: int, inputs: StackInpu
     return feet
 
 
+@dataclass(frozen=True)
+class _Shells:
+    """Which source makes the surface, and between which of its distances."""
+
+    sources: Sequence[Source]
+    inputs: StackInputs
+    distances: tuple[Array, ...]
+    competing: bool = False
+
+    def state(self, x: Array, y: Array) -> Key:
+        """The number of the source and of the distances passed, at points (any shape)."""
+        owner, distance = highest(self.sources, self.inputs, x, y)
+        state = owner * (_SHELLS + 2)
+        for number, distances in enumerate(self.distances):
+            here = owner == number
+            state[here] += np.searchsorted(distances, distance[here])
+        return state
+
+
 def _class_bounds(
     sources: Sequence[Source], inputs: StackInputs, cell: tuple[float, float]
 ) -> tuple[Array, ...]:
     """Distances (9,) from each source between which its slope has equal areas."""
     shells = [np.linspace(0.0, _outermost(s, sources[0], inputs), _SHELLS + 1) for s in sources]
-    spans = scan(_curves(sources, [shell[1:].tolist() for shell in shells]), cell)
+    curves = _curves(sources, [shell[1:].tolist() for shell in shells])
+    spans = survey(curves, cell, [_Shells(sources, inputs, tuple(shells))], _SHELL_NODES).spans
     owner, distance = highest(sources, inputs, spans.middle, spans.y)
     bounds = []
     for number, shell in enumerate(shells):

@@ -17,7 +17,7 @@ Mask = NDArray[np.bool_]
 TURN = 2.0 * np.pi
 SIDE_NM = 1e-4  # how far beside a curve the two sides are looked at
 SHORTEST_NM = 1e-3  # shorter pieces are nothing but rounding
-_AWAY = 1e15
+_TOUCHING = 1e-9
 
 
 @dataclass(frozen=True)
@@ -53,12 +53,13 @@ class Curves:
         level = np.hypot(y - h[..., 0], x - np.clip(x, h[..., 1], h[..., 2]))
         return np.concatenate([upright, level, _to_arcs(self.arcs, x, y)], axis=-1)
 
-    def middles(self) -> tuple[Array, Array, Array, Array]:
-        """A point in the middle of each curve, and the unit normal there (+x, +y, outward): x, y, nx, ny."""
+    def at(self, fraction: float = 0.5) -> tuple[Array, Array, Array, Array]:
+        """A point part of the way along each curve, and the unit normal there (+x, +y, outward): x, y, nx, ny."""
         v, h, a = self.upright, self.level, self.arcs
-        angle = (a[:, 3] + a[:, 4]) / 2
-        x = np.concatenate([v[:, 0], (h[:, 1] + h[:, 2]) / 2, a[:, 0] + a[:, 2] * np.cos(angle)])
-        y = np.concatenate([(v[:, 1] + v[:, 2]) / 2, h[:, 0], a[:, 1] + a[:, 2] * np.sin(angle)])
+        angle = a[:, 3] + fraction * (a[:, 4] - a[:, 3])
+        along_v, along_h = (s[:, 1] + fraction * (s[:, 2] - s[:, 1]) for s in (v, h))
+        x = np.concatenate([v[:, 0], along_h, a[:, 0] + a[:, 2] * np.cos(angle)])
+        y = np.concatenate([along_v, h[:, 0], a[:, 1] + a[:, 2] * np.sin(angle)])
         nx = np.concatenate([np.ones(len(v)), np.zeros(len(h)), np.cos(angle)])
         ny = np.concatenate([np.zeros(len(v)), np.ones(len(h)), np.sin(angle)])
         return x, y, nx, ny
@@ -137,6 +138,25 @@ def cut(curves: Curves, window: tuple[float, float, float, float]) -> Curves:
     middle = (start + stop) / 2
     x, y = cx + r * np.cos(middle), cy + r * np.sin(middle)
     return Curves(upright, level, arcs[(x >= x0) & (x <= x1) & (y >= y0) & (y <= y1)])
+
+
+def merged(pieces: Curves, sides: Array) -> tuple[Curves, Array]:
+    """Pieces of one curve that follow on each other become one again, where their `sides` (N,) agree too."""
+    v, h = len(pieces.upright), len(pieces.upright) + len(pieces.level)
+    upright, of_upright = _runs(pieces.upright, sides[:v])
+    level, of_level = _runs(pieces.level, sides[v:h])
+    arcs, of_arcs = _runs(pieces.arcs, sides[h:])
+    return Curves(upright, level, arcs), np.concatenate([of_upright, of_level, of_arcs])
+
+
+def _runs(rows: Array, sides: Array) -> tuple[Array, Array]:
+    """See merged; rows end with where a piece starts and stops, pieces of a curve are sorted."""
+    if len(rows) < 2:
+        return rows, sides
+    same_curve = np.all(rows[1:, :-2] == rows[:-1, :-2], axis=1) & (sides[1:] == sides[:-1])
+    first = np.concatenate([[True], ~(same_curve & (np.abs(rows[1:, -2] - rows[:-1, -1]) < _TOUCHING))])
+    last = np.concatenate([first[1:], [True]])
+    return np.column_stack([rows[first, :-1], rows[last, -1]]), sides[first]
 
 
 def straight_meets_circle(at: Array, arcs: Array) -> Array:

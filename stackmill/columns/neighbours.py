@@ -7,7 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from stackmill.columns.curves import SIDE_NM, Curves, cut, periodic_distances
+from stackmill.columns.curves import SIDE_NM, Curves, periodic_distances
 from stackmill.columns.plan import RegionPlan
 from stackmill.columns.scan import Spans
 
@@ -17,6 +17,7 @@ Mask = NDArray[np.bool_]
 
 _STARTS = 5  # places of each kind in a column from which its centre is looked for
 _ROUNDS = 12
+_AT_ONCE = 1_000_000  # distances held in memory together
 _POINTS = np.pi / 4 * np.arange(8)
 _COMPASS = np.stack([np.cos(_POINTS), np.sin(_POINTS)], axis=1)
 _FAR_LINE = np.array([0.0, 1e12, -1e12])  # from everywhere: less than nothing of a line is far away
@@ -41,13 +42,15 @@ class _Starts:
 
 
 def neighbourhood(
-    plan: RegionPlan, curves: Curves, spans: Spans, of_span: Index, columns: int
+    plan: RegionPlan, pieces: Curves, spans: Spans, of_span: Index, columns: int
 ) -> Neighbourhood:
-    """Find each column's centre and its distances; `of_span` (N,) is the column of each span."""
+    """Find each column's centre and its distances.
+
+    pieces: the borders in the cell; spans (N,): scanlines cut at all borders; of_span (N,): their columns.
+    """
     if columns == 1:
         middle = np.array([[plan.cell[0] / 2, plan.cell[1] / 2]])
         return Neighbourhood(middle, np.full((1, 1), np.inf))
-    pieces = cut(curves, (0.0, plan.cell[0], 0.0, plan.cell[1]))
     sides = _sides(pieces, plan)
     real = sides[:, 0] != sides[:, 1]
     borders, sides = pieces.chosen(real), sides[real]
@@ -61,7 +64,7 @@ def neighbourhood(
 
 def _sides(pieces: Curves, plan: RegionPlan) -> Index:
     """The columns (P, 2) at both sides of each piece."""
-    x, y, nx, ny = pieces.middles()
+    x, y, nx, ny = pieces.at()
     step = SIDE_NM * np.array([[-1.0], [1.0]])
     return plan.column(x + step * nx, y + step * ny).T
 
@@ -75,9 +78,14 @@ def _with_meetings(
     between = (spans.y[left] == spans.y[right]) & (of_span[left] != of_span[right])
     left, right = left[between], right[between]
     x, y = spans.x1[left], spans.y[left]
-    new = periodic_distances(borders, x, y, cell).min(axis=-1, initial=np.inf) > SIDE_NM
-    points = np.column_stack([x, y, y])[new]
-    added = np.column_stack([of_span[left], of_span[right]])[new]
+    added = np.column_stack([of_span[left], of_span[right]])
+    on_border = np.concatenate(
+        [
+            periodic_distances(borders, x[part], y[part], cell).min(axis=-1, initial=np.inf) <= SIDE_NM
+            for part in np.array_split(np.arange(len(x)), 1 + len(x) * len(borders) // _AT_ONCE)
+        ]
+    )
+    points, added = np.column_stack([x, y, y])[~on_border], added[~on_border]
     count = len(borders.upright)
     merged = Curves(np.concatenate([borders.upright, points]), borders.level, borders.arcs)
     return merged, np.concatenate([sides[:count], added, sides[count:]])

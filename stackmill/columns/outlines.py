@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from stackmill.columns.curves import NOTHING, SIDE_NM, TURN, Curves, circles, cut, joined
+from stackmill.columns.curves import NOTHING, SIDE_NM, TURN, Curves, circles, cut, joined, merged
 from stackmill.documents.stack import Block, Line, Shape, Via
 
 Array = NDArray[np.float64]
@@ -174,11 +174,11 @@ def outline(edges: Sequence[Curves], inside: Inside, cell: tuple[float, float], 
     """The area where `inside` holds; its walls are those parts of the edges that have it on one side only."""
     window = (-reach_nm, cell[0] + reach_nm, -reach_nm, cell[1] + reach_nm)
     pieces = cut(joined(list(edges)), window)
-    x, y, nx, ny = pieces.middles()
+    x, y, nx, ny = pieces.at()
     minus = inside(x - SIDE_NM * nx, y - SIDE_NM * ny)
     plus = inside(x + SIDE_NM * nx, y + SIDE_NM * ny)
     wall = minus != plus
-    walls, outward = _merged(pieces.chosen(wall), np.where(minus[wall], 1.0, -1.0))
+    walls, outward = merged(pieces.chosen(wall), np.where(minus[wall], 1.0, -1.0))
     return Outline(inside, walls, outward, window)
 
 
@@ -215,27 +215,3 @@ class Overlap:
         for area in self.areas:
             found &= area(x, y)
         return found
-
-
-def _merged(walls: Curves, outward: Array) -> tuple[Curves, Array]:
-    """Pieces of one curve that follow on each other become one again, so that all ends left are corners."""
-    v, h = len(walls.upright), len(walls.upright) + len(walls.level)
-    upright, up = _runs(walls.upright, outward[:v])
-    level, lev = _runs(walls.level, outward[v:h])
-    arcs, arc = _runs(walls.arcs, outward[h:])
-    return Curves(upright, level, arcs), np.concatenate([up, lev, arc])
-
-
-def _runs(rows: Array, outward: Array) -> tuple[Array, Array]:
-    if len(rows) < 2:
-        return rows, outward
-    kept = [rows[0].copy()]
-    signs = [outward[0]]
-    for row, sign in zip(rows[1:], outward[1:], strict=True):
-        last = kept[-1]
-        if sign == signs[-1] and np.array_equal(row[:-2], last[:-2]) and abs(row[-2] - last[-1]) < 1e-9:
-            last[-1] = row[-1]
-        else:
-            kept.append(row.copy())
-            signs.append(sign)
-    return np.array(kept), np.array(signs)

@@ -10,11 +10,12 @@ from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from functools import cache
 from itertools import pairwise
+from typing import Protocol
 
 import numpy as np
 from numpy.typing import NDArray
 
-from stackmill.columns.curves import Curves, circles_meet, straight_meets_circle
+from stackmill.columns.curves import SIDE_NM, TURN, Curves, cut, merged
 
 Array = NDArray[np.float64]
 Key = NDArray[np.int64]
@@ -69,58 +70,108 @@ def _within_span() -> tuple[Array, Array]:
     return position, weight / weight.sum()
 
 
-def scan(curves: Curves, cell: tuple[float, float], classify: Sequence[Classify] = ()) -> Spans:
-    """Cut the cell along scanlines at all curves, and also wherever one of `classify` changes in between."""
-    y, height = _scanlines(curves, cell)
-    breaks = [np.zeros((len(y), 1)), np.full((len(y), 1), cell[0]), *_crossings(curves, y)]
+class Divided(Protocol):
+    """Something that divides the cell into states.
+
+    competing: whether states meet on curves that are neither straight nor round.
+    """
+
+    @property
+    def competing(self) -> bool:
+        """See the class."""
+
+    def state(self, x: Array, y: Array) -> Key:
+        """The state at points (any shape) of the cell."""
+
+
+@dataclass(frozen=True)
+class Survey:
+    """The cell cut up: spans of scanlines, and the borders (pieces of curves) at which some state changes."""
+
+    spans: Spans
+    borders: Curves
+
+
+def survey(
+    curves: Curves, cell: tuple[float, float], divided: Sequence[Divided], nodes: int = _NODES
+) -> Survey:
+    """Cut the cell along scanlines wherever a state changes; `curves` hold all borders but competing ones."""
+    window = (0.0, cell[0], 0.0, cell[1])
+    pieces = cut(curves, window)
+    found = pieces.chosen(_changes(pieces, cell, divided))
+    borders = cut(merged(found, np.zeros(len(found)))[0], window)
+    spans = _scan(borders, cell, nodes)
+    for one in divided:
+        if one.competing:
+            spans = _refined(spans, one.state)
+    return Survey(spans, borders)
+
+
+def _changes(pieces: Curves, cell: tuple[float, float], divided: Sequence[Divided]) -> NDArray[np.bool_]:
+    """Whether some state changes across each piece; looked at in several places where states compete."""
+    step = SIDE_NM * np.array([[-1.0], [1.0]])
+    changes = np.zeros(len(pieces), dtype=bool)
+    for one in divided:
+        for fraction in (0.5, 0.02, 0.98) if one.competing else (0.5,):
+            x, y, nx, ny = pieces.at(fraction)
+            left, right = one.state((x + step * nx) % cell[0], (y + step * ny) % cell[1])
+            changes |= left != right
+    return changes
+
+
+def _scan(borders: Curves, cell: tuple[float, float], nodes: int) -> Spans:
+    y, height = _scanlines(borders, cell, nodes)
+    breaks = [np.zeros((len(y), 1)), np.full((len(y), 1), cell[0]), *_crossings(borders, y)]
     x = np.sort(np.clip(np.concatenate(breaks, axis=1), 0.0, cell[0]), axis=1)
     width = np.diff(x, axis=1)
     row, k = np.nonzero(width > _NOTHING * cell[0])
-    spans = Spans(x[row, k], x[row, k + 1], y[row], width[row, k] * height[row])
-    spans = Spans(spans.x0, spans.x1, spans.y, spans.share / (cell[0] * cell[1]))
-    for one in classify:
-        spans = _refined(spans, one)
-    return spans
+    share = width[row, k] * height[row] / (cell[0] * cell[1])
+    return Spans(x[row, k], x[row, k + 1], y[row], share)
 
 
-def _scanlines(curves: Curves, cell: tuple[float, float]) -> tuple[Array, Array]:
-    """Scanlines: their y and the height each stands for."""
-    edges = _band_edges(curves, cell)
-    low, high = edges[:-1], edges[1:]
-    bottom, top = curves.arcs[:, 1] - curves.arcs[:, 2], curves.arcs[:, 1] + curves.arcs[:, 2]
-    middle = (low + high)[:, None] / 2
-    round_ = np.any((middle > bottom) & (middle < top), axis=1)
-    position, weight = _root_rule(_NODES)
-    size = high - low
+def _scanlines(borders: Curves, cell: tuple[float, float], nodes: int) -> tuple[Array, Array]:
+    """Scanlines: their y and the height each stands for; one a band where no border is round."""
+    arcs = borders.arcs
+    top = np.where(_on(arcs, np.pi / 2), arcs[:, 1] + arcs[:, 2], -np.inf)
+    bottom = np.where(_on(arcs, -np.pi / 2), arcs[:, 1] - arcs[:, 2], np.inf)
+    ends = arcs[:, 1:2] + arcs[:, 2:3] * np.sin(arcs[:, 3:])
+    turns = [top, bottom, ends.ravel(), borders.upright[:, 1:].ravel(), borders.level[:, 0]]
+    edges = _band_edges(np.concatenate(turns), cell[1])
+    low, size = edges[:-1], np.diff(edges)
+    middle = (low + size / 2)[:, None]
+    high_arc, low_arc = np.maximum(top, ends.max(axis=1)), np.minimum(bottom, ends.min(axis=1))
+    round_ = np.any((middle > low_arc) & (middle < high_arc), axis=1)
+    position, weight = _root_rule(nodes)
     y = (low[round_, None] + size[round_, None] * position).ravel()
     height = (size[round_, None] * weight / weight.sum()).ravel()
     return np.concatenate([y, middle[~round_, 0]]), np.concatenate([height, size[~round_]])
 
 
-def _band_edges(curves: Curves, cell: tuple[float, float]) -> Array:
-    v, h, arcs = curves.upright, curves.level, curves.arcs
-    v = v[(v[:, 0] >= 0.0) & (v[:, 0] <= cell[0])]
-    h = h[(h[:, 2] >= 0.0) & (h[:, 1] <= cell[0])]
-    meet_y = straight_meets_circle(v[:, 0], arcs)
-    meet_y[(meet_y < v[:, 1, None, None]) | (meet_y > v[:, 2, None, None])] = np.nan
-    points = circles_meet(arcs, arcs)[np.triu_indices(len(arcs), 1)].reshape(-1, 2)
-    points = points[(points[:, 0] >= 0.0) & (points[:, 0] <= cell[0])]
-    turns = [arcs[:, 1] - arcs[:, 2], arcs[:, 1] + arcs[:, 2]]
-    y = np.concatenate([[0.0, cell[1]], v[:, 1], v[:, 2], h[:, 0], meet_y.ravel(), points[:, 1], *turns])
-    y = np.unique(y[(y >= 0.0) & (y <= cell[1])])
-    y = y[np.concatenate([[True], np.diff(y) > _NOTHING * cell[1]])]
-    y[-1] = cell[1]
-    edges: Array = y
-    return edges
+def _band_edges(turns: Array, height: float) -> Array:
+    y = np.unique(turns[(turns > _NOTHING * height) & (turns < (1.0 - _NOTHING) * height)])
+    y = y[np.diff(y, prepend=0.0) > _NOTHING * height]
+    return np.concatenate([[0.0], y, [height]])
 
 
-def _crossings(curves: Curves, y: Array) -> list[Array]:
-    """Where scanlines (Y,) meet the curves: x (Y, ...), 0 for none."""
-    v, arcs = curves.upright, curves.arcs
+def _on(arcs: Array, angle: float) -> NDArray[np.bool_]:
+    """Whether an angle is one of each arc's."""
+    on: NDArray[np.bool_] = (angle - arcs[:, 3]) % TURN <= arcs[:, 4] - arcs[:, 3]
+    return on
+
+
+def _crossings(borders: Curves, y: Array) -> list[Array]:
+    """Where scanlines (Y,) meet the borders: x (Y, ...), 0 for none."""
+    v, arcs = borders.upright, borders.arcs
     meets = (y[:, None] >= v[:, 1]) & (y[:, None] <= v[:, 2])
-    on_lines = np.where(meets, v[:, 0], 0.0)
-    on_arcs = straight_meets_circle(y, arcs[:, [1, 0, 2, 3, 4]]).reshape(len(y), -1)
-    return [on_lines, np.nan_to_num(on_arcs, nan=0.0)]
+    found = [np.where(meets, v[:, 0], 0.0)]
+    cx, cy, r, start, stop = arcs.T
+    up = y[:, None] - cy
+    half = np.sqrt(np.clip(r**2 - up**2, 0.0, None))
+    for side in (-1.0, 1.0):
+        angle = (np.arctan2(up, side * half) - start) % TURN
+        meets = (np.abs(up) < r) & (angle <= stop - start)
+        found.append(np.where(meets, cx + side * half, 0.0))
+    return found
 
 
 def _refined(spans: Spans, classify: Classify) -> Spans:

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
 from typing import Any
 
@@ -80,6 +79,8 @@ def run(job: Job, *, draws: int = DRAWS, seed: int = SEED, jobs: int = 1) -> Ens
         return _chunk_outcome(inputs.sample(chunk), durations)
 
     if jobs > 1 and len(chunks) > 1:
+        from concurrent.futures import ThreadPoolExecutor
+
         with ThreadPoolExecutor(jobs) as pool:
             parts = list(pool.map(reach, chunks))
     else:
