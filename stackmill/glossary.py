@@ -19,16 +19,30 @@ class Word:
 
 GLOSSARY: tuple[Word, ...] = (
     Word("stack", "the layers of a die, top down, with their features"),
-    Word("layer", "one level; has a material (what fills it between features; `none` if nothing) and a thickness", "nm"),
+    Word(
+        "layer",
+        "one level; has a material (what fills it between features; `none` if nothing) and a thickness",
+        "nm",
+    ),
     Word("feature", "a line, via or block of another material inside a layer", "nm"),
     Word("liner", "thin film on a feature's sides and bottom, carved inside the drawn outline", "nm"),
-    Word("cap", "thin film on a feature's top (an anti-reflective coating, say), carved inside the drawn height", "nm"),
+    Word(
+        "cap",
+        "thin film on a feature's top (an anti-reflective coating, say), carved inside the drawn height",
+        "nm",
+    ),
     Word("base", "thin film under a feature (an underlayer), carved inside the drawn height", "nm"),
-    Word("coverage", "how a layer covers what is below: planarised (fills and ends flat) or conformal (follows it)"),
+    Word(
+        "coverage",
+        "how a layer covers what is below: planarised (fills and ends flat) or conformal (follows it)",
+    ),
     Word("sidewall", "share of a conformal layer's thickness that grows on a vertical wall", "0..1"),
     Word("cell", "the plan rectangle that repeats; one a stack", "nm"),
     Word("region", "a kind of location on the die: absent layers or features, solid layers, a witness piece"),
-    Word("column", "what lies straight down at one point: segments of material, layer, feature, part, thickness"),
+    Word(
+        "column",
+        "what lies straight down at one point: segments of material, layer, feature, part, thickness",
+    ),
     Word("segment", "one piece of a column", "nm"),
     Word("column map", "all regions with their columns, areas and starting heights"),
     Word("height", "up from the substrate's top; regions are compared by height only", "nm"),
@@ -44,7 +58,10 @@ GLOSSARY: tuple[Word, ...] = (
     Word("yield", "atoms leaving for each arriving ion", "atoms/ion"),
     Word("milling rate", "speed of a flat surface at the given incidence", "nm/s; nm/min at borders"),
     Word("selectivity", "ratio of two milling rates"),
-    Word("goal", "what must be exposed: a layer or a feature in it, where, at which level, how much of it clear"),
+    Word(
+        "goal",
+        "what must be exposed: a layer or a feature in it, where, at which level, how much of it clear",
+    ),
     Word("keep", "what must survive, where, at least how thick", "nm"),
     Word("exposed", "in one draw: the moment the goal is met", "s"),
     Word("lost", "in one draw: the moment the goal or a keep is spoilt", "s"),

@@ -104,9 +104,7 @@ KINDS: Mapping[str, Kind] = MappingProxyType(
         "energy": Kind("an energy", "eV", _ENERGY, "eV", "eV or keV", "eV"),
         "angle": Kind("an angle", "deg", _ANGLE, "deg", "deg"),
         "time": Kind("a time", "s", _TIME, "min", "s, min or h", "s"),
-        "current_density": Kind(
-            "a current density", "mA/cm2", _CURRENT, "mA/cm2", "mA/cm2 or uA/cm2", "mA/cm**2"
-        ),
+        "current_density": Kind("a current density", "mA/cm2", _CURRENT, "mA/cm2", "mA/cm2 or uA/cm2", "mA/cm**2"),
         "rate": Kind("a milling rate", "nm/s", _RATE, "nm/min", "nm/min, A/min or um/h", "nm/s"),
         "fraction": Kind("a share", "1", {"%": 0.01}, "%", "%"),
         "temperature": Kind("a temperature", "K", {"K": 1.0, "degC": 1.0, "°C": 1.0}, "degC", "K or degC"),
@@ -136,9 +134,7 @@ _QUANTITY = re.compile(rf"\s*({_NUMBER})\s*(.*?)\s*", re.DOTALL)
 _TIME_PIECE = re.compile(r"\s*([0-9]+(?:\.[0-9]+)?)\s*([A-Za-z]+)")
 _DECIMAL_COMMA = re.compile(r"([+-]?[0-9]+),([0-9]+)")
 _SPACED_DIGITS = re.compile(r"[0-9](?:[ \u00a0\u202f_'][0-9]{3})+(?![0-9])")
-_MEASURE = re.compile(
-    r"(?P<value>[^±]*?)\s*(?:±(?P<sd>.*?))?(?:,\s*across (?:the )?die\s*±(?P<across>.*))?", re.DOTALL
-)
+_MEASURE = re.compile(r"(?P<value>[^±]*?)\s*(?:±(?P<sd>.*?))?(?:,\s*across (?:the )?die\s*±(?P<across>.*))?", re.DOTALL)
 _UNIT_WORD = re.compile(r"([A-Za-zµμ]{1,20})(?:\^?([23]))?(?:/([A-Za-zµμ]{1,20})(?:\^?([23]))?)?")
 
 
@@ -224,9 +220,7 @@ def example(kind: str) -> str:
     """What a value of this kind looks like, for a cure."""
     number = {"current_density": "0.5", "energy": "800", "angle": "45", "density": "2.2"}.get(kind, "10")
     usual = KINDS[kind].usual
-    return (
-        f"write a number and its unit, as in {number} {usual}" if usual else f"write a number, as in {number}"
-    )
+    return f"write a number and its unit, as in {number} {usual}" if usual else f"write a number, as in {number}"
 
 
 def _read_value(text: str, kind: str) -> float:
@@ -238,9 +232,7 @@ def _read_value(text: str, kind: str) -> float:
     number, unit = _finite(found[1]), found[2]
     _refuse_split_number(text, unit)
     if "," in unit or "across" in unit:
-        raise UnitsError(
-            f"{quoted(text)} goes on after its unit", "write it like 600 nm ± 8 %, across die ± 3 %"
-        )
+        raise UnitsError(f"{quoted(text)} goes on after its unit", "write it like 600 nm ± 8 %, across die ± 3 %")
     offset = _OFFSET_K.get(unit, 0.0) if kind == "temperature" else 0.0
     return _scaled(number, _factor(found[1], unit, kind)) + offset
 
@@ -248,11 +240,7 @@ def _read_value(text: str, kind: str) -> float:
 def _scaled(number: float, factor: float) -> float:
     """A number times a factor, dividing by whole numbers so that 95 % is 0.95 to the last digit."""
     divisor = round(1.0 / factor)
-    return (
-        number / divisor
-        if divisor > 1 and math.isclose(divisor * factor, 1.0, rel_tol=1e-15)
-        else number * factor
-    )
+    return number / divisor if divisor > 1 and math.isclose(divisor * factor, 1.0, rel_tol=1e-15) else number * factor
 
 
 def _read_compound_time(text: str) -> float | None:
@@ -262,9 +250,7 @@ def _read_compound_time(text: str) -> float | None:
         return None
     sizes = [_factor(number, unit, "time") for number, unit in pieces]
     if any(small >= large for large, small in pairwise(sizes)):
-        raise UnitsError(
-            f"{quoted(text)} has its units out of order", "write hours, then minutes, then seconds"
-        )
+        raise UnitsError(f"{quoted(text)} has its units out of order", "write hours, then minutes, then seconds")
     return sum(float(number) * size for (number, _), size in zip(pieces, sizes, strict=True))
 
 
@@ -343,9 +329,7 @@ def _read_sd(text: str | None, value: float, whole: str, kind: str) -> float:
     if number < 0.0:
         raise UnitsError(f"{quoted(whole)} has a minus after the ±", f"write ± {found[1][1:]} {unit}")
     if "across" in unit or "±" in unit:
-        raise UnitsError(
-            f"{quoted(whole)} goes on after its ±", "write it like 600 nm ± 8 %, across die ± 3 %"
-        )
+        raise UnitsError(f"{quoted(whole)} goes on after its ±", "write it like 600 nm ± 8 %, across die ± 3 %")
     relative = unit == "%" and kind != "fraction"
     if relative and kind == "temperature":
         raise UnitsError(f"{quoted(whole)} has a share of a temperature after the ±", "write it in K")

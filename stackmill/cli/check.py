@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import typer
 
-from stackmill.cli.options import Ascii, Debug, File, Output, Force, Quiet, Set, Strict
+from stackmill.cli.options import Ascii, Debug, File, Force, Output, Quiet, Set, Strict
 
 
 def check(

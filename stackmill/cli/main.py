@@ -9,10 +9,10 @@ from typing import Annotated
 # No plugin changes how stackmill reads its files, and looking for one costs a fifth of a forecast.
 os.environ.setdefault("PYDANTIC_DISABLE_PLUGINS", "__all__")
 
-import typer  # noqa: E402 - after the line above, which it obeys
+import typer
 
-from stackmill.cli import check, materials, rates, stops  # noqa: E402
-from stackmill.errors import InputErrors, StackmillError  # noqa: E402
+from stackmill.cli import check, materials, rates, stops
+from stackmill.errors import InputErrors, StackmillError
 
 app = typer.Typer(
     name="stackmill",
@@ -40,7 +40,9 @@ def _version(value: bool) -> None:
 
 @app.callback()
 def _root(
-    version: Annotated[bool, typer.Option("--version", callback=_version, is_eager=True, help="Show the version.")] = False,
+    version: Annotated[
+        bool, typer.Option("--version", callback=_version, is_eager=True, help="Show the version.")
+    ] = False,
 ) -> None:
     """Only here so that --version stands beside the commands."""
 

@@ -10,7 +10,10 @@ from stackmill.cli.options import Ascii, Debug, Force, Format, FormatOption, Out
 
 
 def materials(
-    names: Annotated[list[str] | None, typer.Argument(help="Materials to show in full; none lists all.", show_default=False)] = None,
+    names: Annotated[
+        list[str] | None,
+        typer.Argument(help="Materials to show in full; none lists all.", show_default=False),
+    ] = None,
     output: Output = "-",
     format_: FormatOption = None,
     force: Force = False,

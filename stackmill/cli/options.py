@@ -18,10 +18,16 @@ class Format(StrEnum):
     markdown = "markdown"
 
 
-File = Annotated[str, typer.Argument(help="A job or a lone stack, as YAML; - reads it from standard input.", show_default=False)]
-Output = Annotated[str, typer.Option("-o", "--output", help="Write to this file (- is standard output).", metavar="PATH")]
+File = Annotated[
+    str,
+    typer.Argument(help="A job or a lone stack, as YAML; - reads it from standard input.", show_default=False),
+]
+Output = Annotated[
+    str, typer.Option("-o", "--output", help="Write to this file (- is standard output).", metavar="PATH")
+]
 FormatOption = Annotated[
-    Format | None, typer.Option("-f", "--format", help="table, csv, json or markdown; otherwise from the suffix of -o.")
+    Format | None,
+    typer.Option("-f", "--format", help="table, csv, json or markdown; otherwise from the suffix of -o."),
 ]
 Force = Annotated[bool, typer.Option("--force", help="Overwrite an existing output file.")]
 Quiet = Annotated[bool, typer.Option("-q", "--quiet", help="No notes or warnings on standard error.")]
@@ -31,26 +37,36 @@ NoColor = Annotated[bool, typer.Option("--no-color", help="No colour (also: NO_C
 Debug = Annotated[bool, typer.Option("--debug", help="Show a traceback where stackmill itself is at fault.")]
 Set = Annotated[
     list[str] | None,
-    typer.Option("--set", help="Override one value, e.g. --set 'mill.current_density=0.4 mA/cm2'.", metavar="KEY=VALUE"),
+    typer.Option(
+        "--set", help="Override one value, e.g. --set 'mill.current_density=0.4 mA/cm2'.", metavar="KEY=VALUE"
+    ),
 ]
 Seed = Annotated[int, typer.Option("--seed", help="Seed of the draws; the same seed gives the same answer.")]
 Jobs = Annotated[int, typer.Option("--jobs", min=1, help="Threads to use; the answer is the same for any number.")]
 Every = Annotated[bool, typer.Option("--all", help="Show every column, not only those that matter most.")]
 Why = Annotated[bool, typer.Option("--why", help="Say where every number comes from, and what would narrow it most.")]
 Confidence = Annotated[
-    str | None, typer.Option("--confidence", help="The chance asked for, e.g. 90 %; otherwise the job's.", metavar="SHARE")
+    str | None,
+    typer.Option("--confidence", help="The chance asked for, e.g. 90 %; otherwise the job's.", metavar="SHARE"),
 ]
 GoalOption = Annotated[
-    str | None, typer.Option("--goal", help="What to expose: LAYER or LAYER / FEATURE (a lone stack only).", metavar="LAYER")
+    str | None,
+    typer.Option("--goal", help="What to expose: LAYER or LAYER / FEATURE (a lone stack only).", metavar="LAYER"),
 ]
-Energy = Annotated[str | None, typer.Option("--energy", help="Beam energy, e.g. 1 keV (a lone stack only).", metavar="ENERGY")]
+Energy = Annotated[
+    str | None,
+    typer.Option("--energy", help="Beam energy, e.g. 1 keV (a lone stack only).", metavar="ENERGY"),
+]
 Incidence = Annotated[
-    str | None, typer.Option("--incidence", help="Angle from the normal, e.g. 45 deg (a lone stack only).", metavar="ANGLE")
+    str | None,
+    typer.Option("--incidence", help="Angle from the normal, e.g. 45 deg (a lone stack only).", metavar="ANGLE"),
 ]
 CurrentDensity = Annotated[
-    str | None, typer.Option("--current-density", help="e.g. '0.5 mA/cm2 ± 6 %' (a lone stack only).", metavar="CURRENT")
+    str | None,
+    typer.Option("--current-density", help="e.g. '0.5 mA/cm2 ± 6 %' (a lone stack only).", metavar="CURRENT"),
 ]
 Motion = Annotated[
-    str | None, typer.Option("--motion", help="rotating, still, or 'rocking ± 20 deg' (a lone stack only).", metavar="MOTION")
+    str | None,
+    typer.Option("--motion", help="rotating, still, or 'rocking ± 20 deg' (a lone stack only).", metavar="MOTION"),
 ]
 OutPath = Path

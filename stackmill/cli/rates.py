@@ -25,8 +25,12 @@ from stackmill.cli.options import (
 
 
 def rates(
-    file: Annotated[str | None, typer.Argument(help="A job or a lone stack; or give --material.", show_default=False)] = None,
-    material: Annotated[list[str] | None, typer.Option("--material", help="A material's name; repeat for more.")] = None,
+    file: Annotated[
+        str | None, typer.Argument(help="A job or a lone stack; or give --material.", show_default=False)
+    ] = None,
+    material: Annotated[
+        list[str] | None, typer.Option("--material", help="A material's name; repeat for more.")
+    ] = None,
     gas: Annotated[str | None, typer.Option("--gas", help="neon, argon, krypton or xenon (with --material).")] = None,
     energy: Energy = None,
     incidence: Incidence = None,
@@ -54,7 +58,12 @@ def rates(
 
     if (file is None) == (not material):
         raise UsageError("rates takes a file or --material", cure="give one of the two")
-    settings = {"energy": energy, "incidence": incidence, "current_density": current_density, "motion": motion}
+    settings = {
+        "energy": energy,
+        "incidence": incidence,
+        "current_density": current_density,
+        "motion": motion,
+    }
     form = chosen_format(format_, output)
     with gathered_warnings(quiet=quiet, strict=strict) as warned:
         if file is not None:

@@ -18,7 +18,7 @@ from stackmill.columns.carving import (
     layer_plan,
 )
 from stackmill.columns.columns import ColumnMap, RegionColumns
-from stackmill.columns.cover import STATES, Slopes
+from stackmill.columns.cover import Slopes
 from stackmill.columns.curves import joined
 from stackmill.columns.inputs import StackInputs, stack_inputs
 from stackmill.columns.labels import Labelled, Slope, labels
@@ -135,9 +135,7 @@ def _region(
     plan = RegionPlan(draw.cell, keys, rank[column])
     near = neighbourhood(plan, found.borders, spans, rank[column][which], len(kept))
     names = labels([Labelled(tuple(s.kind for s in f.segments), f.slopes) for f in kept], inputs, draw.layers)
-    return _arrays(
-        region.name, kept, inputs, area=share[order] / share.sum(), near=near, names=names, plan=plan
-    )
+    return _arrays(region.name, kept, inputs, area=share[order] / share.sum(), near=near, names=names, plan=plan)
 
 
 def _stacked(rising: Rising, combinations: Key) -> list[Stacked]:
@@ -201,8 +199,10 @@ def _classes(rising: Rising, states: Sequence[int]) -> tuple[Slope, ...]:
     """The classes of slope in a combination of states, from the top down."""
     found = []
     for axis, state in zip(rising.axes, states, strict=True):
-        if isinstance(axis, Slopes) and state % STATES:
-            found.append(Slope(axis.layers[-1], state % STATES, axis.sources[state // STATES].name))
+        if isinstance(axis, Slopes):
+            number, source = axis.slope_of(state)
+            if number:
+                found.append(Slope(axis.layers[-1], number, axis.sources[source].name))
     return tuple(reversed(found))
 
 

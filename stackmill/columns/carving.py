@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 from stackmill.columns.columns import BASE, CAP, CORE, FILL, LINER
 from stackmill.columns.curves import Curves, joined
 from stackmill.columns.inputs import StackInputs
-from stackmill.columns.outlines import Inside, Outline, Union, copies, primitive, union
+from stackmill.columns.outlines import Outline, Union, copies, primitive, union
 from stackmill.columns.regions import PresentLayer
 from stackmill.documents.stack import Feature
 
@@ -46,13 +46,15 @@ class Group:
     """
 
     outline: Outline
-    members: tuple[Inside, ...]
+    members: tuple[Union, ...]
     features: tuple[int, ...]
     depths: Array
 
     def curves(self) -> Curves:
         """Where what lies below can change."""
-        return joined([self.outline.walls, *(self.outline.offset(-float(depth)) for depth in self.depths)])
+        rings = [self.outline.offset(-float(depth)) for depth in self.depths]
+        between = [f.edges() for member in self.members for f in member.figures] if len(self.members) > 1 else []
+        return joined([self.outline.walls, *rings, *between])
 
 
 @dataclass(frozen=True)

@@ -51,9 +51,7 @@ class Seam:
         """One sentence for people, without the 'note:' before it."""
         one, other = self.between
         sides = f"{one} and its neighbour" if one == other else f"{one} and {other}"
-        return (
-            f"{self.region}: {self.layer} closes the {self.gap_nm:.0f} nm gap between {sides}, leaving a seam"
-        )
+        return f"{self.region}: {self.layer} closes the {self.gap_nm:.0f} nm gap between {sides}, leaving a seam"
 
 
 @dataclass(frozen=True)

@@ -43,11 +43,6 @@ class Source:
         top[list(self.films.inputs[:films])] += 1.0
         return top
 
-    def first_films(self, count: int) -> Films:
-        """The first few of its films."""
-        films = self.films
-        return Films(films.inputs[:count], films.thickness_nm[:count], films.sidewall[:count])
-
     def distance(self, x: Array, y: Array) -> Array:
         """From points to the area (same shape)."""
         return np.zeros(x.shape) if self.outline is None else self.outline.distance(x, y)
@@ -62,35 +57,46 @@ class Source:
 
 
 @dataclass(frozen=True)
+class Highest:
+    """What makes the surface at points: the number of the source, how far (nm) it is, and the one under foot.
+
+    The last is the highest whose own area the point lies in: the surface is flat where it is the first too.
+    """
+
+    owner: Key
+    distance: Array
+    under: Key
+
+    def pair(self, sources: int) -> Key:
+        """One number for owner and under."""
+        return self.owner * sources + self.under
+
+
+@dataclass(frozen=True)
 class Slopes:
     """The surface over its sources after some conformal layers, cut into flat tops and classes of slope.
 
-    A state is 9 times the number of the source that makes the surface there, plus 0 on its flat top or 1..8
-    for the class, from the wall down. layers: the conformal layers since the last flat ground or feature;
-    bounds[source] (9,): distances that part its classes; heights (states, layers, L): mean height of each
-    layer's top in each state.
+    A slope leads from one source's top to another's. A state is 9 times the number of the pair (from times the
+    number of sources, plus to), plus 0 on a flat top or 1..8 for the class, from the wall down. layers: the
+    conformal layers since the last other layer; bounds[pair] (9,): distances from the wall that part its
+    classes; feet[source]: where its slopes end; heights (states, layers, L): mean height of each layer's top.
     """
 
     sources: tuple[Source, ...]
     layers: tuple[int, ...]
     bounds: tuple[Array, ...]
-    edges: tuple[tuple[float, ...], ...]
+    feet: tuple[tuple[float, ...], ...]
     heights: Array
     inputs: StackInputs = field(repr=False)
 
     def state(self, x: Array, y: Array) -> Key:
-        """The state at points of the cell (same shape)."""
-        owner, distance = highest(self.sources, self.inputs, x, y)
-        state = owner * STATES
-        for number, bounds in enumerate(self.bounds):
-            here = (owner == number) & (distance > 0.0)
-            state[here] += np.clip(np.searchsorted(bounds, distance[here]), 1, CLASSES)
-        return state
+        """The state at points of the cell (any shape)."""
+        return _states(self.sources, self.inputs, self.bounds, x, y)
 
     @property
     def states(self) -> int:
         """How many states there can be."""
-        return len(self.sources) * STATES
+        return len(self.bounds) * STATES
 
     @property
     def competing(self) -> bool:
@@ -99,20 +105,26 @@ class Slopes:
 
     def curves(self) -> Curves:
         """Where the state changes, but for where two sources' slopes meet."""
-        return _curves(self.sources, self.edges)
+        return _curves(self.sources, self.bounds, self.feet)
+
+    def slope_of(self, state: int) -> tuple[int, int]:
+        """The class (0 for flat) of a state, and the source that makes it."""
+        return state % STATES, state // STATES // len(self.sources)
 
 
-def highest(sources: Sequence[Source], inputs: StackInputs, x: Array, y: Array) -> tuple[Key, Array]:
-    """Which source makes the surface at points, and how far it is: both as the points are shaped."""
-    owner = np.zeros(x.shape, dtype=np.int64)
-    distance = np.zeros(x.shape)
-    top = np.full(x.shape, float(inputs.nm(sources[0].flat())))
+def highest(sources: Sequence[Source], inputs: StackInputs, x: Array, y: Array) -> Highest:
+    """What makes the surface at points (any shape)."""
+    flat = [float(inputs.nm(source.flat())) for source in sources]
+    owner, under = np.zeros(x.shape, dtype=np.int64), np.zeros(x.shape, dtype=np.int64)
+    distance, top, ground = np.zeros(x.shape), np.full(x.shape, flat[0]), np.full(x.shape, flat[0])
     for number, source in enumerate(sources[1:], 1):
         away = source.distance(x, y)
         height = float(inputs.nm(source.height)) + _over(source, away)
         wins = height > top + _HIGHER_NM
         owner[wins], distance[wins], top[wins] = number, away[wins], height[wins]
-    return owner, distance
+        here = (away <= 0.0) & (flat[number] > ground + _HIGHER_NM)
+        under[here], ground[here] = number, flat[number]
+    return Highest(owner, distance, under)
 
 
 def _over(source: Source, away: Array) -> Array:
@@ -121,90 +133,77 @@ def _over(source: Source, away: Array) -> Array:
     return np.where(away > 0.0, -np.inf, 0.0)
 
 
-def slopes(
-    sources: Sequence[Source], layers: Sequence[int], inputs: StackInputs, cell: tuple[float, float]
-) -> Slopes:
-    """Cut a surface into flat tops and 8 classes of equal area on every source's slope."""
+def _states(sources: Sequence[Source], inputs: StackInputs, bounds: Sequence[Array], x: Array, y: Array) -> Key:
+    """9 (or one less than there are bounds, plus 1) states for each pair of sources, at points (any shape)."""
+    found = highest(sources, inputs, x, y)
+    pair, classes = found.pair(len(sources)), len(bounds[0]) - 1
+    state = pair * (classes + 1)
+    sloped = found.distance > 0.0
+    for number in np.unique(pair[sloped]):
+        here = sloped & (pair == number)
+        state[here] += np.clip(np.searchsorted(bounds[number], found.distance[here]), 1, classes)
+    return state
+
+
+def slopes(sources: Sequence[Source], layers: Sequence[int], inputs: StackInputs, cell: tuple[float, float]) -> Slopes:
+    """Cut a surface into flat tops and 8 classes of equal area on every slope."""
     found = tuple(sources)
-    bounds = _class_bounds(found, inputs, cell)
-    edges = tuple(
-        tuple(sorted({*b[1:].tolist(), *_feet(found, k, len(layers), inputs)})) for k, b in enumerate(bounds)
-    )
-    flat = np.stack(
-        [[s.flat(len(s.films.inputs) - len(layers) + 1 + k) for k in range(len(layers))] for s in found]
-    )
-    heights = np.repeat(flat, STATES, axis=0)
-    made = Slopes(found, tuple(layers), bounds, edges, heights, inputs)
-    found = survey(made.curves(), cell, [made])
-    return replace(made, heights=_mean_heights(made, found.spans))
+    feet = tuple(_feet(source, found, inputs) for source in found)
+    bounds = _class_bounds(found, feet, inputs, cell)
+    before = [len(s.films.inputs) - len(layers) + 1 for s in found]
+    flat = np.stack([[s.flat(n + k) for k in range(len(layers))] for s, n in zip(found, before, strict=True)])
+    heights = np.repeat(flat, len(found) * STATES, axis=0)
+    made = Slopes(found, tuple(layers), bounds, feet, heights, inputs)
+    spans = survey(made.curves(), cell, [made]).spans
+    return replace(made, heights=_mean_heights(made, spans))
 
 
-def _curves(sources: Sequence[Source], edges: Sequence[Sequence[float]]) -> Curves:
+def _curves(sources: Sequence[Source], bounds: Sequence[Array], feet: Sequence[tuple[float, ...]]) -> Curves:
     parts = []
-    for source, distances in zip(sources, edges, strict=True):
+    for number, source in enumerate(sources):
         if source.outline is not None:
-            parts += [source.outline.walls, *(source.outline.offset(d) for d in distances if d > 0.0)]
+            own = bounds[number * len(sources) : (number + 1) * len(sources)]
+            distances = {round(d, 9) for d in (*np.concatenate(own).tolist(), *feet[number]) if d > 0.0}
+            parts += [source.outline.walls, *(source.outline.offset(d) for d in sorted(distances))]
     return joined(parts)
 
 
-def _outermost(source: Source, ground: Source, inputs: StackInputs) -> float:
-    """How far a slope can stretch before it meets the top of the films on the ground."""
+def _feet(source: Source, sources: Sequence[Source], inputs: StackInputs) -> tuple[float, ...]:
+    """Distances at which a source's slope ends on the flat tops over each other one."""
     if source.outline is None or not source.films.inputs:
-        return 0.0
-    lowest = float(inputs.nm(ground.flat() - source.height))
-    return source.films.reach_nm if lowest <= 0.0 else source.films.distance_at(lowest)
-
-
-def _feet(sources: Sequence[Source], number: int, layers: int, inputs: StackInputs) -> list[float]:
-    """Distances at which a source's slope meets the flat top over another, for each of the layers."""
-    source, feet = sources[number], []
-    if source.outline is None:
-        return []
-    for k in range(layers):
-        films = source.first_films(len(source.films.inputs) - layers + 1 + k)
-        for other in sources:
-            flat = other.flat(len(other.films.inputs) - layers + 1 + k)
-            over = float(inputs.nm(flat - source.height))
-            feet.append(films.reach_nm if over <= 0.0 else films.distance_at(over))
-    return feet
+        return tuple(0.0 for _ in sources)
+    over = [float(inputs.nm(other.flat() - source.height)) for other in sources]
+    return tuple(source.films.reach_nm if h <= 0.0 else source.films.distance_at(h) for h in over)
 
 
 @dataclass(frozen=True)
 class _Shells:
-    """Which source makes the surface, and between which of its distances."""
+    """Slopes cut into many thin shells."""
 
     sources: Sequence[Source]
     inputs: StackInputs
-    distances: tuple[Array, ...]
+    bounds: Sequence[Array]
     competing: bool = False
 
     def state(self, x: Array, y: Array) -> Key:
-        """The number of the source and of the distances passed, at points (any shape)."""
-        owner, distance = highest(self.sources, self.inputs, x, y)
-        state = owner * (_SHELLS + 2)
-        for number, distances in enumerate(self.distances):
-            here = owner == number
-            state[here] += np.searchsorted(distances, distance[here])
-        return state
+        """The pair of sources and the shell, at points (any shape)."""
+        return _states(self.sources, self.inputs, self.bounds, x, y)
 
 
 def _class_bounds(
-    sources: Sequence[Source], inputs: StackInputs, cell: tuple[float, float]
+    sources: Sequence[Source],
+    feet: Sequence[tuple[float, ...]],
+    inputs: StackInputs,
+    cell: tuple[float, float],
 ) -> tuple[Array, ...]:
-    """Distances (9,) from each source between which its slope has equal areas."""
-    shells = [np.linspace(0.0, _outermost(s, sources[0], inputs), _SHELLS + 1) for s in sources]
-    curves = _curves(sources, [shell[1:].tolist() for shell in shells])
-    spans = survey(curves, cell, [_Shells(sources, inputs, tuple(shells))], _SHELL_NODES).spans
-    owner, distance = highest(sources, inputs, spans.middle, spans.y)
+    """For each pair of sources the distances (9,) between which the slope has equal areas."""
+    shells = [np.linspace(0.0, foot, _SHELLS + 1) for of_source in feet for foot in of_source]
+    spans = survey(_curves(sources, shells, feet), cell, [_Shells(sources, inputs, shells)], _SHELL_NODES).spans
+    state = _states(sources, inputs, shells, spans.middle, spans.y)
+    area = np.bincount(state, spans.share, minlength=len(shells) * (_SHELLS + 1))
     bounds = []
-    for number, shell in enumerate(shells):
-        here = (owner == number) & (distance > 0.0)
-        area = (
-            np.histogram(distance[here], bins=shell, weights=spans.share[here])[0]
-            if shell[-1]
-            else np.zeros(1)
-        )
-        grown = np.concatenate([[0.0], np.cumsum(area)])
+    for shell, of_pair in zip(shells, area.reshape(len(shells), _SHELLS + 1)[:, 1:], strict=True):
+        grown = np.concatenate([[0.0], np.cumsum(of_pair)])
         even = np.linspace(0.0, grown[-1], CLASSES + 1)
         bounds.append(np.interp(even, grown, shell) if grown[-1] > 0.0 else np.zeros(CLASSES + 1))
     return tuple(bounds)
@@ -231,16 +230,15 @@ def _mean_heights(made: Slopes, spans: Spans) -> Array:
 
 def _surface_shares(made: Slopes, k: int, x: Array, y: Array) -> Array:
     """The top (N, L) of the made slopes' k-th layer at points (N,), as shares of the inputs."""
-    under = [
-        replace(s, films=s.first_films(len(s.films.inputs) - len(made.layers) + 1 + k)) for s in made.sources
-    ]
-    owner, distance = highest(under, made.inputs, x, y)
+    later = len(made.layers) - 1 - k
+    sources = [replace(s, films=s.films.first(len(s.films.inputs) - later)) for s in made.sources]
+    found = highest(sources, made.inputs, x, y)
     shares = np.zeros((len(x), len(made.inputs.inputs)))
-    for number, source in enumerate(under):
-        here = np.flatnonzero(owner == number)
+    for number, source in enumerate(sources):
+        here = np.flatnonzero(found.owner == number)
         if here.size:
             shares[here] = source.height
-            of_films = source.films.shares(distance[here])
+            of_films = source.films.shares(found.distance[here])
             for column, film in enumerate(source.films.inputs):
                 shares[here, film] += of_films[:, column]
     return shares

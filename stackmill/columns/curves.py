@@ -18,6 +18,7 @@ TURN = 2.0 * np.pi
 SIDE_NM = 1e-4  # how far beside a curve the two sides are looked at
 SHORTEST_NM = 1e-3  # shorter pieces are nothing but rounding
 _TOUCHING = 1e-9
+_ANGLE = 1e-9
 
 
 @dataclass(frozen=True)
@@ -54,7 +55,7 @@ class Curves:
         return np.concatenate([upright, level, _to_arcs(self.arcs, x, y)], axis=-1)
 
     def at(self, fraction: float = 0.5) -> tuple[Array, Array, Array, Array]:
-        """A point part of the way along each curve, and the unit normal there (+x, +y, outward): x, y, nx, ny."""
+        """A point on each curve, and the unit normal there (+x, +y, outward): x, y, nx, ny."""
         v, h, a = self.upright, self.level, self.arcs
         angle = a[:, 3] + fraction * (a[:, 4] - a[:, 3])
         along_v, along_h = (s[:, 1] + fraction * (s[:, 2] - s[:, 1]) for s in (v, h))
@@ -131,8 +132,8 @@ def cut(curves: Curves, window: tuple[float, float, float, float]) -> Curves:
     v = _clipped(curves.upright, x0, x1, y0, y1)
     h = _clipped(curves.level, y0, y1, x0, x1)
     a = curves.arcs
-    upright = _cut_straight(v, h, a)
-    level = _cut_straight(h, v, a[:, [1, 0, 2, 3, 4]])
+    upright = _cut_straight(v, h, _upright_meets_arcs(v[:, 0], a))
+    level = _cut_straight(h, v, _level_meets_arcs(h[:, 0], a))
     arcs = _cut_arcs(a, v, h, window)
     cx, cy, r, start, stop = arcs.T
     middle = (start + stop) / 2
@@ -159,27 +160,48 @@ def _runs(rows: Array, sides: Array) -> tuple[Array, Array]:
     return np.column_stack([rows[first, :-1], rows[last, -1]]), sides[first]
 
 
-def straight_meets_circle(at: Array, arcs: Array) -> Array:
-    """Where upright lines x = at (V,) meet the circles of arcs (A, 5): y (V, A, 2), nan where they do not."""
-    reach = arcs[:, 2] ** 2 - (at[:, None] - arcs[:, 0]) ** 2
-    half = np.sqrt(np.where(reach > 0.0, reach, np.nan))
-    meet: Array = np.stack([arcs[:, 1] - half, arcs[:, 1] + half], axis=-1)
-    return meet
+def on_arc(arcs: Array, dx: Array | float, dy: Array | float) -> Mask:
+    """Whether directions (dx, dy) from the centres of arcs (..., 5) point at the arcs."""
+    angle = (np.arctan2(dy, dx) - arcs[..., 3]) % TURN
+    on: Mask = (angle <= arcs[..., 4] - arcs[..., 3] + _ANGLE) | (angle >= TURN - _ANGLE)
+    return on
 
 
-def circles_meet(one: Array, other: Array) -> Array:
-    """Where circles of arcs (A, 5) meet those of others (B, 5): points (A, B, 2, 2), nan for none."""
-    between = other[None, :, :2] - one[:, None, :2]
+def _upright_meets_arcs(at: Array, arcs: Array) -> Array:
+    """Where upright lines x = at (V,) meet arcs (A, 5): y (V, A, 2), nan where they do not."""
+    dx = (at[:, None] - arcs[:, 0])[..., None]
+    dy = _other_leg(dx, arcs)
+    return np.where(on_arc(arcs[:, None], dx, dy), arcs[:, 1:2] + dy, np.nan)
+
+
+def _level_meets_arcs(at: Array, arcs: Array) -> Array:
+    """Where level lines y = at (H,) meet arcs (A, 5): x (H, A, 2), nan where they do not."""
+    dy = (at[:, None] - arcs[:, 1])[..., None]
+    dx = _other_leg(dy, arcs)
+    return np.where(on_arc(arcs[:, None], dx, dy), arcs[:, 0:1] + dx, np.nan)
+
+
+def _other_leg(leg: Array, arcs: Array) -> Array:
+    """Other legs (..., A, 2) of right triangles in the circles of arcs; nan for legs (..., A, 1) too long."""
+    other2 = arcs[:, 2:3] ** 2 - leg**2
+    legs: Array = np.sqrt(np.where(other2 > 0.0, other2, np.nan)) * np.array([-1.0, 1.0])
+    return legs
+
+
+def _arcs_meet(arcs: Array) -> Array:
+    """Where arcs (A, 5) meet each other: points (A, A, 2, 2), nan for none."""
+    between = arcs[None, :, :2] - arcs[:, None, :2]
     d2 = np.sum(between**2, axis=-1)
-    r1, r2 = one[:, None, 2], other[None, :, 2]
+    r1, r2 = arcs[:, None, 2], arcs[None, :, 2]
     d2 = np.where(d2 > 0.0, d2, np.nan)
     along = (d2 + r1**2 - r2**2) / (2.0 * d2)
     across2 = r1**2 / d2 - along**2
     across = np.sqrt(np.where(across2 > 0.0, across2, np.nan))
     sideways = np.stack([-between[..., 1], between[..., 0]], axis=-1) * across[..., None]
-    middle = one[:, None, :2] + along[..., None] * between
-    meet: Array = np.stack([middle - sideways, middle + sideways], axis=2)
-    return meet
+    middle = arcs[:, None, :2] + along[..., None] * between
+    points = np.stack([middle - sideways, middle + sideways], axis=2)
+    away = points - arcs[None, :, None, :2]
+    return np.where(on_arc(arcs[None, :, None], away[..., 0], away[..., 1])[..., None], points, np.nan)
 
 
 def _distinct(rows: Array) -> Array:
@@ -191,7 +213,7 @@ def _distinct(rows: Array) -> Array:
 def _to_arcs(arcs: Array, x: Array, y: Array) -> Array:
     cx, cy, r, start, stop = np.moveaxis(arcs, -1, 0)
     dx, dy = x - cx, y - cy
-    along = (np.arctan2(dy, dx) - start) % TURN <= stop - start + 1e-12
+    along = on_arc(arcs, dx, dy)
     to_circle: Array = np.abs(np.hypot(dx, dy) - r)
     if bool(np.all(along)):
         return to_circle
@@ -206,13 +228,13 @@ def _clipped(straight: Array, low: float, high: float, start: float, stop: float
     return np.column_stack([inside[:, 0], ends])[ends[:, 1] - ends[:, 0] > SHORTEST_NM]
 
 
-def _cut_straight(lines: Array, crossing: Array, arcs: Array) -> Array:
-    """Cut upright lines at the level ones and arcs (or, with x and y exchanged, the other way round)."""
+def _cut_straight(lines: Array, crossing: Array, on_arcs: Array) -> Array:
+    """Cut upright lines at level ones and where they meet arcs (or the other way round)."""
     if not len(lines):
         return lines
     meets = (lines[:, :1] > crossing[:, 1] - SIDE_NM) & (lines[:, :1] < crossing[:, 2] + SIDE_NM)
     stops = np.where(meets, crossing[:, 0], np.nan)
-    stops = np.concatenate([stops, straight_meets_circle(lines[:, 0], arcs).reshape(len(lines), -1)], axis=1)
+    stops = np.concatenate([stops, on_arcs.reshape(len(lines), -1)], axis=1)
     which, start, stop = _pieces(stops, lines[:, 1], lines[:, 2], np.full(len(lines), SHORTEST_NM))
     return np.column_stack([lines[which, 0], start, stop])
 
@@ -221,22 +243,27 @@ def _cut_arcs(arcs: Array, upright: Array, level: Array, window: tuple[float, fl
     if not len(arcs):
         return arcs
     x0, x1, y0, y1 = window
-    at_x = np.concatenate([upright[:, 0], [x0, x1]])
-    at_y = np.concatenate([level[:, 0], [y0, y1]])
-    swapped = arcs[:, [1, 0, 2, 3, 4]]
-    y = straight_meets_circle(at_x, arcs).transpose(1, 0, 2)
-    x = straight_meets_circle(at_y, swapped).transpose(1, 0, 2)
+    upright = np.concatenate([upright, [[x, y0, y1] for x in (x0, x1)]])
+    level = np.concatenate([level, [[y, x0, x1] for y in (y0, y1)]])
+    y = _within(_upright_meets_arcs(upright[:, 0], arcs), upright)
+    x = _within(_level_meets_arcs(level[:, 0], arcs), level)
     points = [
-        np.stack([np.broadcast_to(at_x[None, :, None], y.shape), y], axis=-1).reshape(len(arcs), -1, 2),
-        np.stack([x, np.broadcast_to(at_y[None, :, None], x.shape)], axis=-1).reshape(len(arcs), -1, 2),
-        circles_meet(arcs, arcs).reshape(len(arcs), -1, 2),
+        np.stack([np.broadcast_to(upright[:, 0, None, None], y.shape), y], axis=-1).swapaxes(0, 1),
+        np.stack([x, np.broadcast_to(level[:, 0, None, None], x.shape)], axis=-1).swapaxes(0, 1),
+        _arcs_meet(arcs),
     ]
-    away = np.concatenate(points, axis=1) - arcs[:, None, :2]
+    away = np.concatenate([p.reshape(len(arcs), -1, 2) for p in points], axis=1) - arcs[:, None, :2]
     angle = (np.arctan2(away[..., 1], away[..., 0]) - arcs[:, 3:4]) % TURN
     span = arcs[:, 4] - arcs[:, 3]
     which, start, stop = _pieces(angle, np.zeros(len(arcs)), span, SHORTEST_NM / arcs[:, 2])
     first = arcs[which, 3]
     return np.column_stack([arcs[which, :3], first + start, first + stop])
+
+
+def _within(stops: Array, lines: Array) -> Array:
+    """Stops (N, A, 2) on lines (N, 3), nan beyond their ends."""
+    low, high = lines[:, 1, None, None] - SIDE_NM, lines[:, 2, None, None] + SIDE_NM
+    return np.where((stops >= low) & (stops <= high), stops, np.nan)
 
 
 def _pieces(stops: Array, low: Array, high: Array, shortest: Array) -> tuple[NDArray[np.intp], Array, Array]:

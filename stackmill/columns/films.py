@@ -1,8 +1,8 @@
 """The top of conformal films around a wall, as if a ball had rolled over it.
 
 A film of thickness t and sidewall share c lifts the surface to the highest point of half-ellipses with
-half-axes c t (in plan) and t (up) put on every point of it. Of several films in turn, the half-ellipses add up
-point by point of equal slope.
+half-axes c t (in plan) and t (up) put on every point of it. Of several films in turn, the half-ellipses add
+up point by point of equal slope.
 """
 
 from __future__ import annotations
@@ -29,6 +29,10 @@ class Films:
     def then(self, number: int, thickness_nm: float, sidewall: float) -> Films:
         """One more film on top."""
         return Films((*self.inputs, number), (*self.thickness_nm, thickness_nm), (*self.sidewall, sidewall))
+
+    def first(self, count: int) -> Films:
+        """The first few of them."""
+        return Films(self.inputs[:count], self.thickness_nm[:count], self.sidewall[:count])
 
     @property
     def flat_nm(self) -> float:
@@ -58,7 +62,7 @@ class Films:
         return np.where(distance_nm <= self.reach_nm, height, -np.inf)
 
     def distance_at(self, height_nm: float) -> float:
-        """How far from the wall their top is at this height over the wall's (0 or more); 0 if never so high."""
+        """How far from the wall their top is at this height over the wall's; 0 if never so high."""
         low, high = 0.0, self.reach_nm
         if height_nm >= self.flat_nm:
             return 0.0

@@ -70,9 +70,7 @@ def stack_inputs(stack: Stack) -> StackInputs:
         films.append(tuple(of_layer))
     values = np.array([i.thickness.value for i in inputs])
     materials = tuple(dict.fromkeys(_materials(stack)))
-    return StackInputs(
-        tuple(inputs), values, tuple(layers), tuple(films), tuple(first), tuple(features), materials
-    )
+    return StackInputs(tuple(inputs), values, tuple(layers), tuple(films), tuple(first), tuple(features), materials)
 
 
 def _films(name: str, layer: int, feature: Feature, inputs: list[ThicknessInput]) -> FeatureFilms:

@@ -15,7 +15,7 @@ FIELD = "field"
 
 @dataclass(frozen=True)
 class Slope:
-    """A class of slope in a column: the layer whose top it is, number from the wall down, what it slopes from."""
+    """A class of slope: the layer whose top it is, number from the wall down, what it slopes from."""
 
     layer: int
     number: int
@@ -52,17 +52,18 @@ def _sequence(column: Labelled, layers: Sequence[str], inputs: StackInputs, *, f
             met.setdefault((layer, feature), []).append((material, part))
     for (layer, feature), parts in met.items():
         origin = f"{layers[layer]} " if full else ""
-        word = f"{origin}{inputs.features[feature][1]}{_ring(parts, inputs)}"
+        several = len(inputs.films[layer][feature - inputs.first_feature[layer]].liner) > 1
+        word = f"{origin}{inputs.features[feature][1]}{_ring(parts, several, inputs)}"
         words.setdefault(layer, []).append(word)
     return " / ".join(word for layer in sorted(words) for word in words[layer]) or FIELD
 
 
-def _ring(parts: Sequence[tuple[int, int]], inputs: StackInputs) -> str:
-    """' liner' where a feature's core is missing, with the film's material where there are several."""
+def _ring(parts: Sequence[tuple[int, int]], several: bool, inputs: StackInputs) -> str:
+    """' liner' where a feature's core is missing, with the film's material where the liner is of several."""
     films = [material for material, part in parts if part == LINER]
     if not films or any(part == CORE for _, part in parts):
         return ""
-    return " liner" if len(films) == 1 else f" {inputs.materials[films[0]]} liner"
+    return f" {inputs.materials[films[0]]} liner" if several else " liner"
 
 
 def _numbered(names: Sequence[str]) -> tuple[str, ...]:

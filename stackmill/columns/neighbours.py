@@ -41,9 +41,7 @@ class _Starts:
     column: Index
 
 
-def neighbourhood(
-    plan: RegionPlan, pieces: Curves, spans: Spans, of_span: Index, columns: int
-) -> Neighbourhood:
+def neighbourhood(plan: RegionPlan, pieces: Curves, spans: Spans, of_span: Index, columns: int) -> Neighbourhood:
     """Find each column's centre and its distances.
 
     pieces: the borders in the cell; spans (N,): scanlines cut at all borders; of_span (N,): their columns.

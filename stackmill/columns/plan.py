@@ -54,9 +54,7 @@ def keys_of(axes: Sequence[Axis], x: Array, y: Array) -> tuple[Keys, Key, Key]:
         else:
             known.append(None)
     first = np.unique(key, return_index=True)[1]
-    combinations = (
-        np.stack([s[first] for s in states], axis=1) if states else np.zeros((1, 0), dtype=np.int64)
-    )
+    combinations = np.stack([s[first] for s in states], axis=1) if states else np.zeros((1, 0), dtype=np.int64)
     return Keys(tuple(axes), tuple(known)), combinations, key
 
 

@@ -10,14 +10,29 @@ from numpy.typing import NDArray
 
 from stackmill.columns.carving import LayerPlan
 from stackmill.columns.cover import Slopes, Source, slopes
+from stackmill.columns.curves import joined
 from stackmill.columns.inputs import StackInputs
 from stackmill.columns.outlines import Outline, Overlap, outline
 from stackmill.columns.plan import Axis
 from stackmill.columns.regions import PresentLayer
+from stackmill.columns.scan import survey
+from stackmill.errors import InputError
 
 Array = NDArray[np.float64]
 Key = NDArray[np.int64]
 Draw = Callable[[PresentLayer], LayerPlan]
+
+
+class OnSlopeError(InputError):
+    """A feature of a layer without fill lies on the slope of a conformal layer: layer, feature."""
+
+    def __init__(self, layer: str, feature: str) -> None:
+        super().__init__(
+            f"{feature!r} in {layer!r}, which has no fill, lies on the slope of a conformal layer",
+            cure="give that layer a fill, or make the layer below it planarised",
+        )
+        self.layer = layer
+        self.feature = feature
 
 
 @dataclass
@@ -86,6 +101,7 @@ class Rising:
             self.sources = [source.raised(thickness) for source in self.sources]
             return
         plan = self.draw(present)
+        self._refuse_on_slopes(present, plan)
         self.axes.append(plan)
         self.levels.append(Level(present, plan=len(self.axes) - 1, only_features=True))
         self.sources += [
@@ -93,6 +109,19 @@ class Rising:
             for source in self.sources
             for area in self._on_top(plan, source)
         ]
+
+    def _refuse_on_slopes(self, present: PresentLayer, plan: LayerPlan) -> None:
+        """Features are held to have flat tops; where they climb a slope they would not."""
+        below = self.axes[-1] if self.axes else None
+        if len(self.sources) == 1 or not isinstance(below, Slopes):
+            return
+        spans = survey(joined([below.curves(), plan.curves()]), self.cell, [below, plan]).spans
+        sloped = np.array([below.slope_of(state)[0] > 0 for state in range(below.states)])
+        climbs = sloped[below.state(spans.middle, spans.y)] & (plan.state(spans.middle, spans.y) > 0)
+        if climbs.any():
+            zone = plan.zones[int(plan.state(spans.middle, spans.y)[np.argmax(climbs)])]
+            assert zone.feature is not None
+            raise OnSlopeError(present.layer.name, present.layer.features[zone.feature].name)
 
     def _on_top(self, plan: LayerPlan, source: Source) -> list[Outline]:
         """The parts of a source's area that features lie on."""

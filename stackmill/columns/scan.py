@@ -15,7 +15,7 @@ from typing import Protocol
 import numpy as np
 from numpy.typing import NDArray
 
-from stackmill.columns.curves import SIDE_NM, TURN, Curves, cut, merged
+from stackmill.columns.curves import SIDE_NM, Curves, cut, merged, on_arc
 
 Array = NDArray[np.float64]
 Key = NDArray[np.int64]
@@ -92,9 +92,7 @@ class Survey:
     borders: Curves
 
 
-def survey(
-    curves: Curves, cell: tuple[float, float], divided: Sequence[Divided], nodes: int = _NODES
-) -> Survey:
+def survey(curves: Curves, cell: tuple[float, float], divided: Sequence[Divided], nodes: int = _NODES) -> Survey:
     """Cut the cell along scanlines wherever a state changes; `curves` hold all borders but competing ones."""
     window = (0.0, cell[0], 0.0, cell[1])
     pieces = cut(curves, window)
@@ -121,19 +119,23 @@ def _changes(pieces: Curves, cell: tuple[float, float], divided: Sequence[Divide
 
 def _scan(borders: Curves, cell: tuple[float, float], nodes: int) -> Spans:
     y, height = _scanlines(borders, cell, nodes)
-    breaks = [np.zeros((len(y), 1)), np.full((len(y), 1), cell[0]), *_crossings(borders, y)]
-    x = np.sort(np.clip(np.concatenate(breaks, axis=1), 0.0, cell[0]), axis=1)
-    width = np.diff(x, axis=1)
-    row, k = np.nonzero(width > _NOTHING * cell[0])
-    share = width[row, k] * height[row] / (cell[0] * cell[1])
-    return Spans(x[row, k], x[row, k + 1], y[row], share)
+    lines = np.arange(len(y))
+    ends = [np.zeros(len(y)), np.full(len(y), cell[0])]
+    met = [_on_upright(borders.upright, y), *_on_arcs(borders.arcs, y)]
+    row = np.concatenate([lines, lines, *(line for line, _ in met)])
+    x = np.clip(np.concatenate([*ends, *(x for _, x in met)]), 0.0, cell[0])
+    order = np.lexsort((x, row))
+    row, x = row[order], x[order]
+    wide = (row[1:] == row[:-1]) & (np.diff(x) > _NOTHING * cell[0])
+    row, x0, x1 = row[:-1][wide], x[:-1][wide], x[1:][wide]
+    return Spans(x0, x1, y[row], (x1 - x0) * height[row] / (cell[0] * cell[1]))
 
 
 def _scanlines(borders: Curves, cell: tuple[float, float], nodes: int) -> tuple[Array, Array]:
     """Scanlines: their y and the height each stands for; one a band where no border is round."""
     arcs = borders.arcs
-    top = np.where(_on(arcs, np.pi / 2), arcs[:, 1] + arcs[:, 2], -np.inf)
-    bottom = np.where(_on(arcs, -np.pi / 2), arcs[:, 1] - arcs[:, 2], np.inf)
+    top = np.where(on_arc(arcs, 0.0, 1.0), arcs[:, 1] + arcs[:, 2], -np.inf)
+    bottom = np.where(on_arc(arcs, 0.0, -1.0), arcs[:, 1] - arcs[:, 2], np.inf)
     ends = arcs[:, 1:2] + arcs[:, 2:3] * np.sin(arcs[:, 3:])
     turns = [top, bottom, ends.ravel(), borders.upright[:, 1:].ravel(), borders.level[:, 0]]
     edges = _band_edges(np.concatenate(turns), cell[1])
@@ -153,24 +155,21 @@ def _band_edges(turns: Array, height: float) -> Array:
     return np.concatenate([[0.0], y, [height]])
 
 
-def _on(arcs: Array, angle: float) -> NDArray[np.bool_]:
-    """Whether an angle is one of each arc's."""
-    on: NDArray[np.bool_] = (angle - arcs[:, 3]) % TURN <= arcs[:, 4] - arcs[:, 3]
-    return on
+def _on_upright(upright: Array, y: Array) -> tuple[NDArray[np.intp], Array]:
+    """Where scanlines (Y,) meet upright borders: numbers of the scanlines, and x."""
+    line, k = np.nonzero((y[:, None] >= upright[:, 1]) & (y[:, None] <= upright[:, 2]))
+    return line, upright[k, 0]
 
 
-def _crossings(borders: Curves, y: Array) -> list[Array]:
-    """Where scanlines (Y,) meet the borders: x (Y, ...), 0 for none."""
-    v, arcs = borders.upright, borders.arcs
-    meets = (y[:, None] >= v[:, 1]) & (y[:, None] <= v[:, 2])
-    found = [np.where(meets, v[:, 0], 0.0)]
-    cx, cy, r, start, stop = arcs.T
-    up = y[:, None] - cy
-    half = np.sqrt(np.clip(r**2 - up**2, 0.0, None))
+def _on_arcs(arcs: Array, y: Array) -> list[tuple[NDArray[np.intp], Array]]:
+    """Where scanlines (Y,) meet arcs left and right of their centres: numbers of the scanlines, and x."""
+    line, k = np.nonzero(np.abs(y[:, None] - arcs[:, 1]) < arcs[:, 2])
+    arc, up = arcs[k], y[line] - arcs[k, 1]
+    half = np.sqrt(np.clip(arc[:, 2] ** 2 - up**2, 0.0, None))
+    found = []
     for side in (-1.0, 1.0):
-        angle = (np.arctan2(up, side * half) - start) % TURN
-        meets = (np.abs(up) < r) & (angle <= stop - start)
-        found.append(np.where(meets, cx + side * half, 0.0))
+        on = on_arc(arc, side * half, up)
+        found.append((line[on], arc[on, 0] + side * half[on]))
     return found
 
 

@@ -90,9 +90,7 @@ def _measure_reader(limits: Limits) -> Callable[[Any], Measure]:
         measure = read_measure(_text_of(value, limits.kind), limits.kind)
         limits.check(measure.value, " ".join(value.replace("+/-", "±").split("±")[0].split()).rstrip(","))
         if measure.value == 0.0 and (measure.sd or measure.across_sd):
-            raise UnitsError(
-                f"{quoted(value)} is an uncertain nothing", "give the value you expect, and its ±"
-            )
+            raise UnitsError(f"{quoted(value)} is an uncertain nothing", "give the value you expect, and its ±")
         return measure
 
     return read
@@ -123,15 +121,11 @@ _THICKNESS = Limits(
 _SIGN = "check its sign and unit"
 # One atom across; a cell repeats, so 10 mm is a die, not a cell.
 _SIZE = Limits("length", 0.1, 1e7, "is smaller than an atom", "is larger than a die", _SIGN)
-_PLAN = Limits(
-    "length", -1e7, 1e7, "is further away than a die is wide", "is further away than a die is wide", _SIGN
-)
+_PLAN = Limits("length", -1e7, 1e7, "is further away than a die is wide", "is further away than a die is wide", _SIGN)
 # The largest wafer is 450 mm across.
 _ON_DIE = Limits("length", -4.5e8, 4.5e8, "is off any wafer", "is off any wafer", _SIGN)
 # Ions slower than 10 eV sputter nothing; above 50 keV they are implanted more than they mill.
-_ENERGY = Limits(
-    "energy", 10.0, 5e4, "is too slow to mill", "is beyond any ion mill", "mills run at 0.1 to 10 keV"
-)
+_ENERGY = Limits("energy", 10.0, 5e4, "is too slow to mill", "is beyond any ion mill", "mills run at 0.1 to 10 keV")
 _INCIDENCE = Limits(
     "angle",
     0.0,
@@ -144,9 +138,7 @@ _INCIDENCE = Limits(
 _HALF_ANGLE = Limits(
     "angle", 0.0, 90.0, "swings not at all", "swings past grazing", "write rocking ± 20 deg", above=True
 )
-_AZIMUTH = Limits(
-    "angle", -360.0, 360.0, "is no azimuth", "is no azimuth", "write an angle from 0 to 360 deg"
-)
+_AZIMUTH = Limits("angle", -360.0, 360.0, "is no azimuth", "is no azimuth", "write an angle from 0 to 360 deg")
 # 45 deg either way is no beam any more.
 _DIVERGENCE = Limits("angle", 0.0, 45.0, "is no half-angle", "is no beam", "a mill's beam has 1 to 10 deg")
 _ZERO_ERROR = Limits("angle", 0.0, 10.0, "is no error", "is no dial", "give the dial's sd, as in ± 1 deg")
@@ -180,22 +172,14 @@ _CHANCE = Limits(
     above=True,
     below=True,
 )
-_SIDEWALL = Limits(
-    "fraction", 0.0, 1.0, "leaves no side wall", "is more than on top", "write 1 to 100 %", above=True
-)
+_SIDEWALL = Limits("fraction", 0.0, 1.0, "leaves no side wall", "is more than on top", "write 1 to 100 %", above=True)
 # No step runs for a thousand hours.
 _DURATION = Limits("time", 0.0, 3.6e6, "is no time", "is longer than a month", "check its unit", above=True)
-_LATENESS = Limits(
-    "time", 0.0, 3.6e4, "is no time", "is not stopping by eye", "give the eye's sd, as in ± 20 s"
-)
+_LATENESS = Limits("time", 0.0, 3.6e4, "is no time", "is not stopping by eye", "give the eye's sd, as in ± 20 s")
 # 100 um/min etches through a wafer in minutes.
-_RATE = Limits(
-    "rate", 0.0, 1e5 / 60.0, "would grow, not mill", "is too fast to be true", "write 0 nm/min or more"
-)
+_RATE = Limits("rate", 0.0, 1e5 / 60.0, "would grow, not mill", "is too fast to be true", "write 0 nm/min or more")
 
-Thickness = Annotated[
-    Measure, PlainValidator(_measure_reader(_THICKNESS)), _schema(_THICKNESS, "600 nm ± 8 %")
-]
+Thickness = Annotated[Measure, PlainValidator(_measure_reader(_THICKNESS)), _schema(_THICKNESS, "600 nm ± 8 %")]
 Depth = Annotated[float, PlainValidator(_number_reader(_THICKNESS)), _schema(_THICKNESS, "300 nm")]
 Size = Annotated[float, PlainValidator(_number_reader(_SIZE)), _schema(_SIZE, "1.6 um")]
 PlanPosition = Annotated[float, PlainValidator(_number_reader(_PLAN)), _schema(_PLAN, "2.4 um")]
@@ -240,9 +224,7 @@ def _name(value: Any) -> Any:
     if len(text) > 80:
         raise refuse(f"the name {quoted(text)} has {len(text)} letters", "use at most 80")
     if "/" in text:
-        raise refuse(
-            f"the name {quoted(text)} has a / in it", "use another sign; LAYER / FEATURE points to a feature"
-        )
+        raise refuse(f"the name {quoted(text)} has a / in it", "use another sign; LAYER / FEATURE points to a feature")
     return text
 
 

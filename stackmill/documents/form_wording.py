@@ -42,9 +42,7 @@ def odd_character(character: str) -> Sentence:
 
 def twice(key: str, line: int) -> Sentence:
     """A key that stands twice in one block."""
-    return Sentence(
-        f"the key {quoted(key)} stands here for the second time", f"it is already in line {line}; keep one"
-    )
+    return Sentence(f"the key {quoted(key)} stands here for the second time", f"it is already in line {line}; keep one")
 
 
 def too_deep(deepest: int) -> Sentence:
@@ -105,9 +103,7 @@ _YAML_PROBLEMS = (
     ),
     (
         ("expected '-' indicator",),
-        Sentence(
-            "this line is not part of the list above it", "begin every item with a - in the same column"
-        ),
+        Sentence("this line is not part of the list above it", "begin every item with a - in the same column"),
     ),
     (
         ("unexpected end of stream", "document separator"),

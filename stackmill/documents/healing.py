@@ -33,9 +33,7 @@ _NAMES = (
 )
 
 
-def healed(
-    error: ValidationError, model: type[BaseModel], content: Any
-) -> tuple[Any, tuple[KeyPath, ...]] | None:
+def healed(error: ValidationError, model: type[BaseModel], content: Any) -> tuple[Any, tuple[KeyPath, ...]] | None:
     """The content with every mistake replaced, and where; None where one cannot be."""
     whole = copy.deepcopy(content)
     paths = []

@@ -47,9 +47,7 @@ def read_level(value: Any) -> Level:
         raise refuse(f"the band of {quoted(text)} is a share", "give it as a length, as in 50 % ± 30 nm")
     fraction, half_width = read_number(middle, "fraction"), read_number(half, "length")
     if not 0.0 <= fraction <= 1.0:
-        raise refuse(
-            f"{middle.strip()} lies outside the layer", "write 0 to 100 % of its height above its floor"
-        )
+        raise refuse(f"{middle.strip()} lies outside the layer", "write 0 to 100 % of its height above its floor")
     if not 0.1 <= half_width <= 1e6:
         raise refuse(f"a band of ± {half.strip()} cannot be hit or missed", "write a band such as ± 30 nm")
     return Level(False, fraction, half_width)
@@ -72,9 +70,7 @@ def _goal_reference(value: Any) -> Any:
             )
         return {**value, "layer": layer, "feature": name}
     if isinstance(feature, str) and "layer" not in value:
-        raise refuse(
-            f"{quoted(feature)} does not say in which layer it is", f"write LAYER / {feature}", "feature"
-        )
+        raise refuse(f"{quoted(feature)} does not say in which layer it is", f"write LAYER / {feature}", "feature")
     return value
 
 

@@ -27,9 +27,7 @@ KeyPath = tuple[str | int, ...]
 
 _Loader: Any = getattr(yaml, "CLoader", yaml.Loader)
 # Control characters, halves of characters, and the line breaks that only YAML would count as such.
-_ODD_CHARACTER = re.compile(
-    "[\x00-\x08\x0b\x0c\x0e-\x1f\x7f-\x9f\u2028\u2029\ud800-\udfff\ufeff\ufffe\uffff]"
-)
+_ODD_CHARACTER = re.compile("[\x00-\x08\x0b\x0c\x0e-\x1f\x7f-\x9f\u2028\u2029\ud800-\udfff\ufeff\ufffe\uffff]")
 _TAB_BEFORE_COMMENT = re.compile(r"^[^#\n]*?\t", re.MULTILINE)
 
 
@@ -213,9 +211,7 @@ class _Reader:
             opened = start.line + 1 if start is not None else 0
             line = mark.line if mark is not None else 0
             says = wording.yaml_problem(error.problem or "", self._line(line), opened)
-            if "maximum nesting depth" in (
-                error.problem or ""
-            ):  # the parser looks ahead, and has a limit too
+            if "maximum nesting depth" in (error.problem or ""):  # the parser looks ahead, and has a limit too
                 says = wording.too_deep(DEEPEST)
             if says.opened and opened:
                 mark = start

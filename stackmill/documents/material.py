@@ -41,9 +41,7 @@ def _exact(kind: str) -> PlainValidator:
 
 def _text(value: Any) -> str:
     if not isinstance(value, str):
-        raise UnitsError(
-            "something else stands where a number with its unit belongs", "write it like 2.2 g/cm3"
-        )
+        raise UnitsError("something else stands where a number with its unit belongs", "write it like 2.2 g/cm3")
     return value
 
 
@@ -86,9 +84,7 @@ BindingEnergy = Annotated[Measure, _quantity("binding_energy"), _written_as("910
 Temperature = Annotated[Measure, _quantity("temperature"), _written_as("1358 K")]
 EnergyEv = Annotated[float, _exact("energy"), _written_as("500 eV")]
 Finite = Annotated[float, Field(allow_inf_nan=False)]
-LabKind = Annotated[
-    MaterialKind | None, PlainValidator(_kind), WithJsonSchema({"enum": list(get_args(MaterialKind))})
-]
+LabKind = Annotated[MaterialKind | None, PlainValidator(_kind), WithJsonSchema({"enum": list(get_args(MaterialKind))})]
 Positive = Annotated[float, Field(gt=0.0, allow_inf_nan=False)]
 
 
@@ -315,9 +311,7 @@ class LabMaterial(Record):
                 "composition",
             )
         if self.composition is not None and self.density is None:
-            raise refuse(
-                "a composition needs a density beside it", "add density: 2.2 g/cm3 ± 5 %", "composition"
-            )
+            raise refuse("a composition needs a density beside it", "add density: 2.2 g/cm3 ± 5 %", "composition")
         if self.formation is not None and self.composition is None:
             raise refuse(
                 "a formation heat needs the composition it belongs to",

@@ -162,9 +162,7 @@ class _Ending(Record):
         given = [key for key, value in ends.items() if value is not None]
         if not given:
             name = quoted(str(getattr(self, "name", "")))
-            raise Refusal(
-                Sentence(f"step {name} never ends", "add for: 10 min, to: LAYER or seen: {layer: LAYER}")
-            )
+            raise Refusal(Sentence(f"step {name} never ends", "add for: 10 min, to: LAYER or seen: {layer: LAYER}"))
         if len(given) > 1:
             raise Refusal(
                 Sentence(f"a step with '{given[0]}' cannot have '{given[1]}' too", "keep one of them"),
@@ -179,9 +177,7 @@ class Process(_Ending):
     what: ClassVar[str] = "process step"
     kind: ClassVar[str] = "process"
     name: Name
-    rates: dict[Label, Rate] = Field(
-        min_length=1, examples=["{SiN PECVD: 90 nm/min ± 10 %, other: 0 nm/min}"]
-    )
+    rates: dict[Label, Rate] = Field(min_length=1, examples=["{SiN PECVD: 90 nm/min ± 10 %, other: 0 nm/min}"])
 
     def rate(self, material: str) -> Measure | None:
         """The rate of a material, listed or `other`; None where neither is given."""
@@ -230,11 +226,7 @@ def _kind_of(value: Any) -> str | None:
     if found is None:
         found = "beam" if _BEAM_KEYS & value.keys() else None
     if found is None:
-        near = [
-            nearest(str(key), [*_KEYS, *_BEAM_KEYS])
-            for key in value
-            if key not in ("name", "for", "to", "seen")
-        ]
+        near = [nearest(str(key), [*_KEYS, *_BEAM_KEYS]) for key in value if key not in ("name", "for", "to", "seen")]
         found = next((_KEYS.get(key, "beam") for key in near if key), None)
     return f"<{found}>" if found else None
 
@@ -278,8 +270,7 @@ class Recipe(Record):
         if not isinstance(steps, list | tuple):
             return steps
         return [
-            {"name": f"step {k + 1}", **step} if isinstance(step, Mapping) else step
-            for k, step in enumerate(steps)
+            {"name": f"step {k + 1}", **step} if isinstance(step, Mapping) else step for k, step in enumerate(steps)
         ]
 
     @model_validator(mode="after")

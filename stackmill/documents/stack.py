@@ -109,9 +109,7 @@ class Feature(Record):
                 )
             )
         if len(given) > 1:
-            says = Sentence(
-                f"feature {quoted(self.name)} has a {given[0]} and a {given[1]}", "keep one of them"
-            )
+            says = Sentence(f"feature {quoted(self.name)} has a {given[0]} and a {given[1]}", "keep one of them")
             raise Refusal(says, given[1])
         return self
 
@@ -146,14 +144,10 @@ class Layer(Record):
             cure = "make it planarised, or put the features in a layer of their own"
             yield Refusal(Sentence("a conformal layer cannot have features", cure), "features")
         if self.coverage == "conformal" and self.material == NO_FILL:
-            yield Refusal(
-                Sentence("a conformal layer needs a material", "name it instead of none"), "material"
-            )
+            yield Refusal(Sentence("a conformal layer needs a material", "name it instead of none"), "material")
         if self.material == NO_FILL and not self.features and self.coverage == "planarised":
             cure = "add its features, or remove the layer"
-            yield Refusal(
-                Sentence(f"layer {quoted(self.name)} has neither fill nor features", cure), "material"
-            )
+            yield Refusal(Sentence(f"layer {quoted(self.name)} has neither fill nor features", cure), "material")
         yield from _same_names("feature", [f.name for f in self.features], lambda k: ("features", k, "name"))
 
 
@@ -217,9 +211,7 @@ class Stack(Record):
             return
         if not self.regions:
             yield Refusal(Sentence("this stack has no regions", "leave the key out, or name one"), "regions")
-        yield from _same_names(
-            "layer", [layer.name for layer in self.layers], lambda k: ("layers", k, "name")
-        )
+        yield from _same_names("layer", [layer.name for layer in self.layers], lambda k: ("layers", k, "name"))
         yield from _same_names("region", [r.name for r in self.regions], lambda k: ("regions", k, "name"))
         patterned = next((k for k, layer in enumerate(self.layers) if layer.features), None)
         if self.cell is None and patterned is not None:
@@ -249,9 +241,7 @@ class Stack(Record):
                 yield Refusal(wording.no_such("layer", name, names), "absent", "layers", k)
             elif name == names[-1]:
                 cure = "keep at least the substrate"
-                yield Refusal(
-                    Sentence(f"region {quoted(region.name)} removes everything", cure), "absent", "layers", k
-                )
+                yield Refusal(Sentence(f"region {quoted(region.name)} removes everything", cure), "absent", "layers", k)
         for k, name in enumerate(region.absent.features_of):
             if name not in patterned:
                 yield Refusal(self._no_features(name, patterned, names), "absent", "features_of", k)
@@ -272,9 +262,7 @@ class Stack(Record):
         return wording.no_such("layer", name, list(patterned))
 
 
-def _same_names(
-    what: str, names: Iterable[str], path: Callable[[int], tuple[str | int, ...]]
-) -> Iterator[Refusal]:
+def _same_names(what: str, names: Iterable[str], path: Callable[[int], tuple[str | int, ...]]) -> Iterator[Refusal]:
     seen: set[str] = set()
     for k, name in enumerate(names):
         if name in seen:

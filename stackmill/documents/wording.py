@@ -24,7 +24,7 @@ class Sentence:
     opened: bool = False
 
 
-class Refusal(ValueError):  # noqa: N818 - never seen outside documents, where it is what a check says
+class Refusal(ValueError):
     """Raised by a model's checks: the sentence, and the key path inside the model at fault."""
 
     def __init__(self, says: Sentence, *path: str | int) -> None:
@@ -33,7 +33,7 @@ class Refusal(ValueError):  # noqa: N818 - never seen outside documents, where i
         self.path = path
 
 
-class Refusals(ValueError):  # noqa: N818 - as above
+class Refusals(ValueError):
     """Several refusals of one model at once."""
 
     def __init__(self, refusals: Iterable[Refusal]) -> None:
@@ -70,9 +70,7 @@ def no_block(what: str, keys: Sequence[str], shape: str) -> Sentence:
     """A file that is not a group of keys at all."""
     if shape == "nothing":
         return Sentence(f"this {what} is empty", f"begin with '{keys[0]}:'")
-    return Sentence(
-        f"a {what} is a group of keys, and this is {shape}", f"write its keys: {listed(keys, last='and')}"
-    )
+    return Sentence(f"a {what} is a group of keys, and this is {shape}", f"write its keys: {listed(keys, last='and')}")
 
 
 # --- the keys and values of a file --------------------------------------------------------------------------
@@ -190,9 +188,7 @@ def binds_back(path: str) -> Sentence:
 def cannot_bind(path: str, why: str, cure: str) -> Sentence:
     """A bound file that cannot be read. why: as where it is opened by itself."""
     if why == NO_SUCH_FILE:
-        return Sentence(
-            f"there is no file {quoted(path)}", cure or "its path counts from the folder of this file"
-        )
+        return Sentence(f"there is no file {quoted(path)}", cure or "its path counts from the folder of this file")
     return Sentence(f"{quoted(path)} cannot be read: {why}", cure)
 
 
@@ -219,9 +215,7 @@ def nowhere(what: str) -> Sentence:
 
 def too_slow(energy: str, gas: str, material: str, threshold: str) -> Sentence:
     """An energy that sputters nothing."""
-    return Sentence(
-        f"{energy} {gas} is below the {threshold} it takes to sputter {material}", "use more energy"
-    )
+    return Sentence(f"{energy} {gas} is below the {threshold} it takes to sputter {material}", "use more energy")
 
 
 def never_reached(step: str, target: str) -> Sentence:
@@ -233,9 +227,7 @@ def never_reached(step: str, target: str) -> Sentence:
 
 def already_passed(step: str, target: str) -> Sentence:
     """A step whose end lies behind it."""
-    return Sentence(
-        f"{target} has been reached before step {quoted(step)} begins", "aim deeper, or leave the step out"
-    )
+    return Sentence(f"{target} has been reached before step {quoted(step)} begins", "aim deeper, or leave the step out")
 
 
 def no_rate(step: str, materials: Sequence[str]) -> Sentence:
@@ -246,9 +238,7 @@ def no_rate(step: str, materials: Sequence[str]) -> Sentence:
 
 def touches_nothing(step: str) -> Sentence:
     """A strip or process whose materials the stack does not have."""
-    return Sentence(
-        f"step {quoted(step)} names no material of this stack", "check the names, or leave the step out"
-    )
+    return Sentence(f"step {quoted(step)} names no material of this stack", "check the names, or leave the step out")
 
 
 def covered_already(region: str, step: str) -> Sentence:
@@ -258,9 +248,7 @@ def covered_already(region: str, step: str) -> Sentence:
 
 def not_covered(region: str) -> Sentence:
     """A region uncovered that is bare."""
-    return Sentence(
-        f"region {quoted(region)} is not covered here", "cover it in an earlier step, or leave it out"
-    )
+    return Sentence(f"region {quoted(region)} is not covered here", "cover it in an earlier step, or leave it out")
 
 
 def keeps_more_than_there_is(what: str, thickness: str) -> Sentence:

@@ -53,7 +53,7 @@ class Sample:
     @property
     def draws(self) -> int:
         """How many dies and mills there are."""
-        return self.parameters.shape[1]
+        return int(self.parameters.shape[1])
 
     def thickness_deltas_nm(self) -> list[Array]:
         """How far off each thickness input is, for each region: a list of (L, D), in nm."""

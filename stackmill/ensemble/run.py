@@ -169,9 +169,7 @@ def _join(parts: Sequence[Outcome]) -> Outcome:
 
     first = parts[0]
     return Outcome(
-        layer_s=tuple(
-            np.concatenate([part.layer_s[r] for part in parts], axis=-1) for r in range(len(first.layer_s))
-        ),
+        layer_s=tuple(np.concatenate([part.layer_s[r] for part in parts], axis=-1) for r in range(len(first.layer_s))),
         exposed_s=along("exposed_s"),
         lost_s=along("lost_s"),
         lost_by=along("lost_by"),

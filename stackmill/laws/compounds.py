@@ -61,9 +61,7 @@ def effective_target(
         raise ValueError(
             f"the binding energy comes out as {bound:g} eV per atom; formation_ev_per_atom must not undo it"
         )
-    return EffectiveTarget(
-        z2=mean["z"], m2_u=mean["m_u"], us_ev=bound, q=mean["q"], w_ev=mean["w_ev"], s=mean["s"]
-    )
+    return EffectiveTarget(z2=mean["z"], m2_u=mean["m_u"], us_ev=bound, q=mean["q"], w_ev=mean["w_ev"], s=mean["s"])
 
 
 @dataclass(frozen=True)
@@ -90,9 +88,7 @@ def component_steady_state(*, share: ArrayLike, component_yield: ArrayLike) -> S
     """
     c, Y = _normalised(share), positive("component_yield", component_yield)
     if c.shape != Y.shape:
-        raise ValueError(
-            f"share and component_yield must have one value an element, not {c.shape} and {Y.shape}"
-        )
+        raise ValueError(f"share and component_yield must have one value an element, not {c.shape} and {Y.shape}")
     weight = c / Y
     return SteadyState(surface_share=weight / weight.sum(), total_yield=float(1.0 / weight.sum()))
 

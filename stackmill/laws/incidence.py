@@ -54,9 +54,7 @@ def yamamura_exponent(*, energy_ev: ArrayLike, eth_ev: ArrayLike, mass_ratio: Ar
     return np.asarray(np.minimum(fs * (1.0 + 2.5 * (1.0 - z) / z), 10.0))
 
 
-def yamamura_optimum_rad(
-    *, energy_ev: ArrayLike, z1: ArrayLike, z2: ArrayLike, atom_density_1e22: ArrayLike
-) -> Array:
+def yamamura_optimum_rad(*, energy_ev: ArrayLike, z1: ArrayLike, z2: ArrayLike, atom_density_1e22: ArrayLike) -> Array:
     """Incidence of greatest yield of `yamamura_angular` for heavy ions [rad].
 
     energy_ev: E [eV]; z1, z2: atomic numbers; atom_density_1e22: n [1e22 atoms/cm3].
@@ -69,9 +67,7 @@ def yamamura_optimum_rad(
     z1, z2 = positive("z1", z1), positive("z2", z2)
     L = z1 ** (2 / 3) + z2 ** (2 / 3)
     spacing_a = (positive("atom_density_1e22", atom_density_1e22) * 1e-2) ** (-1 / 3)
-    psi = (0.4685 / np.sqrt(L) / spacing_a) ** 1.5 * np.sqrt(
-        z1 * z2 / (np.sqrt(L) * positive("energy_ev", energy_ev))
-    )
+    psi = (0.4685 / np.sqrt(L) / spacing_a) ** 1.5 * np.sqrt(z1 * z2 / (np.sqrt(L) * positive("energy_ev", energy_ev)))
     return np.asarray(np.radians(90.0 - 286.0 * psi**0.45))
 
 
@@ -159,9 +155,7 @@ class IncidenceNodes:
     weight: Array
 
 
-def incidence_nodes(
-    *, incidence_rad: float, divergence_rad: float = 0.0, rocking_rad: float = 0.0
-) -> IncidenceNodes:
+def incidence_nodes(*, incidence_rad: float, divergence_rad: float = 0.0, rocking_rad: float = 0.0) -> IncidenceNodes:
     """Quadrature over a beam's divergence and a stage's rocking.
 
     incidence_rad: set incidence, 0 to pi/2. divergence_rad: half-angle that holds 63 % (1 - 1/e) of the
@@ -185,9 +179,7 @@ def incidence_nodes(
     cosine = np.cos(off) * np.cos(swing)[:, None] + np.sin(off) * np.sin(swing)[:, None] * np.cos(turn)
     share = swing_share[:, None] * beam_share / np.sum(beam_share * np.cos(off))
     lit = cosine > 0.0
-    return IncidenceNodes(
-        incidence_rad=np.arccos(np.clip(cosine[lit], -1.0, 1.0)), weight=(share * cosine)[lit]
-    )
+    return IncidenceNodes(incidence_rad=np.arccos(np.clip(cosine[lit], -1.0, 1.0)), weight=(share * cosine)[lit])
 
 
 def _swing(theta: float, half_angle: float) -> tuple[Array, Array]:
@@ -234,9 +226,7 @@ def flat_average(
     shape: Y(incidence)/Y(0) of an array of incidences [rad]; the rest as in `incidence_nodes`.
     For a parallel, unrocked beam it is shape(th) cos(th).
     """
-    nodes = incidence_nodes(
-        incidence_rad=incidence_rad, divergence_rad=divergence_rad, rocking_rad=rocking_rad
-    )
+    nodes = incidence_nodes(incidence_rad=incidence_rad, divergence_rad=divergence_rad, rocking_rad=rocking_rad)
     return float(np.sum(nodes.weight * shape(nodes.incidence_rad)))
 
 

@@ -44,7 +44,8 @@ class RateBelief:
         and an input that measurements have fixed completely (a zero on the diagonal) does no harm.
         """
         values, vectors = np.linalg.eigh(self.cov)
-        return (vectors * np.sqrt(np.clip(values, 0.0, None))) @ vectors.T
+        root: Array = (vectors * np.sqrt(np.clip(values, 0.0, None))) @ vectors.T
+        return root
 
 
 @dataclass(frozen=True)

@@ -86,14 +86,10 @@ def _estimated(lab: LabMaterial, atoms: Mapping[str, Atom]) -> Material:
         constants_source="effective-target",
         constants_seen=all(atom.seen for atom in used),
         tie=None,
-        angular=AngularData(
-            (), (), (), 0.4, "rule in the mass ratio; compound not measured", "angular-rule", True
-        ),
+        angular=AngularData((), (), (), 0.4, "rule in the mass ratio; compound not measured", "angular-rule", True),
         estimate=True,
         formation=None
         if formation is None
-        else Sourced(
-            formation.value, formation.sd, "eV per formula unit", "as the lab states it", LAB_SOURCE, True
-        ),
+        else Sourced(formation.value, formation.sd, "eV per formula unit", "as the lab states it", LAB_SOURCE, True),
         atoms=used,
     )

@@ -55,9 +55,7 @@ def material_from_entry(entry: LibraryEntry) -> Material:
 
 
 def _tie(fit: FitEntry) -> YieldTie:
-    rows = tuple(
-        YieldRow(row.ev, row.atoms_per_ion, row.ln, row.sd, row.source, row.seen) for row in fit.rows
-    )
+    rows = tuple(YieldRow(row.ev, row.atoms_per_ion, row.ln, row.sd, row.source, row.seen) for row in fit.rows)
     return YieldTie(
         factor=fit.factor,
         exponent=fit.exponent,
@@ -80,18 +78,14 @@ def _other_gases(entry: LibraryEntry) -> OtherGases | None:
     other = entry.other_gases
     if other is None:
         return None
-    return OtherGases(
-        MappingProxyType(dict(other.values)), other.factor, other.ln_sd, other.source, other.seen
-    )
+    return OtherGases(MappingProxyType(dict(other.values)), other.factor, other.ln_sd, other.source, other.seen)
 
 
 def _formation(entry: LibraryEntry) -> Sourced | None:
     heat = entry.formation
     if heat is None:
         return None
-    return Sourced(
-        heat.value.value, heat.value.sd, "eV per formula unit", heat.conditions, heat.source, heat.seen
-    )
+    return Sourced(heat.value.value, heat.value.sd, "eV per formula unit", heat.conditions, heat.source, heat.seen)
 
 
 def _melting(entry: LibraryEntry) -> Sourced | None:

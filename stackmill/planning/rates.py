@@ -8,6 +8,7 @@ import numpy as np
 
 from stackmill.documents.recipe import Beam
 from stackmill.jobs import Job
+from stackmill.materials.material import Material
 from stackmill.rates.model import rate_model
 from stackmill.rates.yields import angular_shape, normal_yield
 
@@ -59,7 +60,7 @@ def rate_rows(job: Job) -> list[RateRow]:
     return rows
 
 
-def basis(material) -> str:  # type: ignore[no-untyped-def]
+def basis(material: Material) -> str:
     """What a material's rate rests on, in a few words."""
     if material.measured_rates:
         return "measured on this mill"

@@ -91,10 +91,9 @@ def chance_curve(begin_s: Array, end_s: Array, weights: Array) -> ChanceCurve:
         return ChanceCurve(np.array([-np.inf]), np.array([0.0]))
     times, change = times[met], change[met]
     order = np.argsort(times, kind="stable")
-    time_s, first = np.unique(times[order], return_index=True)
-    running = np.cumsum(change[order])
-    after = np.append(first[1:], len(times)) - 1
-    return ChanceCurve(np.append(-np.inf, time_s), np.append(0.0, np.clip(running[after], 0.0, 1.0)))
+    time_s, running = times[order], np.cumsum(change[order])
+    last = np.append(time_s[1:] > time_s[:-1], True)  # of those at the same time
+    return ChanceCurve(np.append(-np.inf, time_s[last]), np.append(0.0, np.clip(running[last], 0.0, 1.0)))
 
 
 def find_window(ensemble: Ensemble, confidence: float) -> Window:

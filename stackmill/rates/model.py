@@ -15,11 +15,11 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from stackmill.rates import yields
 from stackmill.documents.mill import Mill
 from stackmill.documents.recipe import Beam
 from stackmill.materials.calibration import RateBelief, RateEvidence, condition
 from stackmill.materials.material import LabRate, Material
+from stackmill.rates import yields
 
 Array = NDArray[np.float64]
 
@@ -27,6 +27,7 @@ _NODES = 9  # Chebyshev nodes across the dial's error: ln rate is smooth there, 
 _ZERO_ERROR_REACH_SD = 5.0
 _LEAST_REACH_DEG = 0.5
 _STEEPEST_DEG = 89.5
+_ANY_EV = 1000.0  # the sd inside the measured energies is the same at all of them
 _PER_MATERIAL = ("rate", "energy", "angle")
 
 
@@ -80,17 +81,16 @@ class RateModel:
         double = beam.double[material].rate_nm_per_s(parameters[1])
         k = 2 + len(_PER_MATERIAL) * self.materials.index(material)
         ln_factor = parameters[0] + np.array(beam.terms[material]) @ parameters[k : k + 3]
-        return ((1.0 - doubly_charged) * single + 0.5 * doubly_charged * double) * np.exp(ln_factor)
+        rate: Array = ((1.0 - doubly_charged) * single + 0.5 * doubly_charged * double) * np.exp(ln_factor)
+        return rate
 
     def best_nm_per_s(self, step: int, material: str, doubly_charged: float) -> float:
         """The best value of a material's milling rate in a beam step, in nm/s."""
         best = self.belief.mean[:, None]
-        return float(
-            self.rate_nm_per_s(step, material, parameters=best, doubly_charged=np.array([doubly_charged]))[0]
-        )
+        return float(self.rate_nm_per_s(step, material, parameters=best, doubly_charged=np.array([doubly_charged]))[0])
 
     def ln_rate_sd(self, step: int, material: str) -> float:
-        """sd of ln rate of a material in a beam step, everything that is believed of the mill included."""
+        """Sd of ln rate of a material in a beam step, everything that is believed of the mill included."""
         beam = self.steps[step]
         assert beam is not None
         zero = self.belief.mean[1] + np.array([-0.5, 0.5])
@@ -142,10 +142,10 @@ def _prior(mill: Mill, materials: Mapping[str, Material]) -> RateBelief:
 
 
 def _rate_sd(material: Material, gas: str) -> float:
-    """sd of ln rate straight down, at the energies where the material was measured."""
-    anywhere = {"energy_ev": 1000.0, "gas": gas}
-    inside = yields.ln_yield_sd(material, **anywhere) ** 2 - yields.outside_ln_sd(material, **anywhere) ** 2
-    return float(np.sqrt(inside + material.density_rel_sd**2))
+    """Sd of ln rate straight down, at the energies where the material was measured."""
+    whole = float(yields.ln_yield_sd(material, energy_ev=_ANY_EV, gas=gas))
+    outside = float(yields.outside_ln_sd(material, energy_ev=_ANY_EV, gas=gas))
+    return float(np.sqrt(whole**2 - outside**2 + material.density_rel_sd**2))
 
 
 def _beam_rates(mill: Mill, step: Beam, materials: Mapping[str, Material]) -> BeamRates:
@@ -154,10 +154,7 @@ def _beam_rates(mill: Mill, step: Beam, materials: Mapping[str, Material]) -> Be
         {name: _curve(mill, step, material, energy_ev, current) for name, material in materials.items()}
         for energy_ev in (step.energy, 2.0 * step.energy)
     ]
-    terms = {
-        name: _terms(material, step.energy, step.incidence, mill.gas)
-        for name, material in materials.items()
-    }
+    terms = {name: _terms(material, step.energy, step.incidence, mill.gas) for name, material in materials.items()}
     return BeamRates(curves[0], curves[1], terms)
 
 
@@ -173,7 +170,12 @@ def _curve(mill: Mill, step: Beam, material: Material, energy_ev: float, current
 
 
 def _law_rate(
-    mill: Mill, material: Material, energy_ev: float, incidence_deg: Array, current: float, rocking_deg: float = 0.0
+    mill: Mill,
+    material: Material,
+    energy_ev: float,
+    incidence_deg: Array,
+    current: float,
+    rocking_deg: float = 0.0,
 ) -> Array:
     """What the laws give with the library's best values, all ions singly charged, in nm/s."""
     return yields.rate_nm_per_s(

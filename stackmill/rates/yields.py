@@ -105,9 +105,7 @@ def angular_shape(material: Material, *, energy_ev: ArrayLike, gas: str = REFERE
 
 def ln_yield_sd(material: Material, *, energy_ev: ArrayLike, gas: str = REFERENCE_GAS) -> Array:
     """Sd of ln(yield at normal incidence); shape of energy_ev. The density's sd is not in it."""
-    return np.asarray(
-        np.hypot(_tied(material, gas).ln_sd, outside_ln_sd(material, energy_ev=energy_ev, gas=gas))
-    )
+    return np.asarray(np.hypot(_tied(material, gas).ln_sd, outside_ln_sd(material, energy_ev=energy_ev, gas=gas)))
 
 
 def outside_ln_sd(material: Material, *, energy_ev: ArrayLike, gas: str = REFERENCE_GAS) -> Array:
@@ -146,9 +144,7 @@ def rate_nm_per_s(
     at 60 degrees times `angular_leverage`.
     """
     if not 0.0 <= doubly_charged < 1.0:
-        raise ValueError(
-            f"doubly_charged must be a share of the current from 0 to below 1, not {doubly_charged:g}"
-        )
+        raise ValueError(f"doubly_charged must be a share of the current from 0 to below 1, not {doubly_charged:g}")
     incidence = np.asarray(incidence_rad, dtype=np.float64)
     charges = ((energy_ev, 1.0 - doubly_charged), (2.0 * energy_ev, 0.5 * doubly_charged))
     total = np.zeros(incidence.size)
@@ -169,9 +165,7 @@ def rate_nm_per_s(
 @lru_cache(maxsize=256)
 def _nodes(incidence_rad: float, divergence_rad: float, rocking_rad: float) -> IncidenceNodes:
     """The same nodes serve every material of a step."""
-    return incidence_nodes(
-        incidence_rad=incidence_rad, divergence_rad=divergence_rad, rocking_rad=rocking_rad
-    )
+    return incidence_nodes(incidence_rad=incidence_rad, divergence_rad=divergence_rad, rocking_rad=rocking_rad)
 
 
 def _deviated(shape: AngularShape, material: Material, sds: float) -> Callable[[Array], Array]:
@@ -291,9 +285,7 @@ def _effective_constants(material: Material) -> Mapping[str, float]:
 
 
 @lru_cache(maxsize=64)
-def _averaged(
-    shares: tuple[float, ...], rows: tuple[tuple[float, ...], ...], formation: float
-) -> Mapping[str, float]:
+def _averaged(shares: tuple[float, ...], rows: tuple[tuple[float, ...], ...], formation: float) -> Mapping[str, float]:
     z, m_u, us_ev, q, w_ev, s = np.array(rows).T
     target = effective_target(
         share=shares, z=z, m_u=m_u, us_ev=us_ev, q=q, w_ev=w_ev, s=s, formation_ev_per_atom=formation

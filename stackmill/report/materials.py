@@ -62,13 +62,20 @@ def as_csv(materials: Sequence[Material]) -> str:
 def listed(materials: Sequence[Material], paper: Paper, *, markdown: bool) -> str:
     """The library as one table."""
     rows = [
-        [m.name, m.kind, f"{m.density.value:.4g}", f"{_rate(m):.3g}", f"± {100 * _rate_sd(m):.2g} %", _basis(m)]
+        [
+            m.name,
+            m.kind,
+            f"{m.density.value:.4g}",
+            f"{_rate(m):.3g}",
+            f"± {100 * _rate_sd(m):.2g} %",
+            _basis(m),
+        ]
         for m in materials
     ]
     headers = ["material", "kind", "g/cm3", "nm/min", "sd", "rests on"]
     note = wrapped(
-        f"Milling rates: argon, {_ENERGY_EV / 1e3:g} keV, {_INCIDENCE_DEG:g}° from the normal, {_CURRENT} mA/cm²; the sd is"
-        " the yield's at 1 keV and the density's. `stackmill materials NAME` shows every value and its source.",
+        f"Milling rates: argon, {_ENERGY_EV / 1e3:g} keV, {_INCIDENCE_DEG:g}° from the normal, {_CURRENT} mA/cm²;"
+        " the sd is the yield's at 1 keV and the density's. `stackmill materials NAME` shows every value and its source.",
         paper.width,
     )
     table = Grid(headers, rows, frozenset({2, 3, 4})).text("github" if markdown else "simple")
@@ -80,7 +87,11 @@ def _basis(m: Material) -> str:
 
 
 def _rate(m: Material) -> float:
-    at = {"energy_ev": _ENERGY_EV, "incidence_rad": np.radians(_INCIDENCE_DEG), "current_density_ma_per_cm2": _CURRENT}
+    at = {
+        "energy_ev": _ENERGY_EV,
+        "incidence_rad": np.radians(_INCIDENCE_DEG),
+        "current_density_ma_per_cm2": _CURRENT,
+    }
     return 60.0 * float(rate_nm_per_s(m, **at))
 
 
@@ -116,19 +127,19 @@ def _full(m: Material, citation: Callable[[str], str]) -> list[str]:
         lines.append(f"  law: {m.law} with {values} {told(m.constants_source, m.constants_seen)}")
     if m.tie:
         lines.append(
-            f"  tie to measured yields: factor {m.tie.factor:.3g}, exponent {m.tie.exponent:+.3f} in E/{m.tie.at_ev:g} eV,"
-            f" sd {100 * m.tie.ln_sd:.0f} % from {m.tie.range_ev[0]:g} to {m.tie.range_ev[1]:g} eV, rms {100 * m.tie.rms:.0f} %"
-            f" ({m.tie.basis})"
+            f"  tie to measured yields: factor {m.tie.factor:.3g}, exponent {m.tie.exponent:+.3f} in"
+            f" E/{m.tie.at_ev:g} eV, sd {100 * m.tie.ln_sd:.0f} % from {m.tie.range_ev[0]:g} to"
+            f" {m.tie.range_ev[1]:g} eV, rms {100 * m.tie.rms:.0f} % ({m.tie.basis})"
         )
         lines += [
-            f"    {row.energy_ev:g} eV: {row.atoms_per_ion:g} atoms/ion, {100 * (np.exp(row.ln_over_law) - 1):+.0f} % from"
-            f" the untied law {told(row.source, row.seen)}"
+            f"    {row.energy_ev:g} eV: {row.atoms_per_ion:g} atoms/ion,"
+            f" {100 * (np.exp(row.ln_over_law) - 1):+.0f} % from the untied law {told(row.source, row.seen)}"
             for row in m.tie.rows
         ]
     shape = angular_shape(m, energy_ev=_ENERGY_EV)
     lines.append(
-        f"  angular shape: Y(60°)/Y(0) = {float(shape.ratio(np.radians(60.0))):.3g} ± {100 * m.angular_sd:.0f} % at 1 keV argon,"
-        f" {m.angular.conditions} {told(m.angular.source, m.angular.seen)}"
+        f"  angular shape: Y(60°)/Y(0) = {float(shape.ratio(np.radians(60.0))):.3g}"
+        f" ± {100 * m.angular_sd:.0f} % at 1 keV argon, {m.angular.conditions} {told(m.angular.source, m.angular.seen)}"
     )
     lines += [f"  sources differ on {d.what}: {d.taken} taken, not {d.other}: {d.why}" for d in m.disagreements]
     lines += [f"  caution: {m.toxicity.note} {told(m.toxicity.source, m.toxicity.seen)}"] if m.toxicity else []

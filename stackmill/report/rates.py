@@ -51,7 +51,13 @@ def as_text(job: Job, rows: Sequence[RateRow], paper: Paper, *, markdown: bool, 
             f" {first.current_density_ma_per_cm2:.4g} mA/cm²"
         )
         cells = [
-            [r.material, f"{r.yield_atoms_per_ion:.3g}", f"{r.rate_nm_per_min:.3g}", f"± {100 * r.rate_rel_sd:.2g} %", r.source]
+            [
+                r.material,
+                f"{r.yield_atoms_per_ion:.3g}",
+                f"{r.rate_nm_per_min:.3g}",
+                f"± {100 * r.rate_rel_sd:.2g} %",
+                r.source,
+            ]
             for r in of_step
         ]
         headers = ["material", "atoms/ion", "nm/min", "sd", "rests on"]

@@ -17,7 +17,21 @@ from tabulate import tabulate
 
 SCHEMA_VERSION = 1
 
-_ASCII = {"±": "+/-", "–": "-", "—": "-", "·": ".", "°": " deg", "²": "2", "µ": "u", "μ": "u", "×": "x", "≥": ">=", "│": "|", "─": "-", "…": "..."}
+_ASCII = {
+    "±": "+/-",
+    "–": "-",
+    "—": "-",
+    "·": ".",
+    "°": " deg",
+    "²": "2",
+    "µ": "u",
+    "μ": "u",
+    "×": "x",
+    "≥": ">=",
+    "│": "|",
+    "─": "-",
+    "…": "...",
+}
 
 
 @dataclass(frozen=True)
@@ -58,7 +72,12 @@ def json_text(rows: Sequence[Mapping[str, Any]], envelope: Mapping[str, Any]) ->
     """Machine output: the envelope's fields, then `rows`."""
     from stackmill import __version__
 
-    document = {"schema_version": SCHEMA_VERSION, "stackmill_version": __version__, **envelope, "rows": list(rows)}
+    document = {
+        "schema_version": SCHEMA_VERSION,
+        "stackmill_version": __version__,
+        **envelope,
+        "rows": list(rows),
+    }
     return json.dumps(_finite(document), indent=2, ensure_ascii=False, allow_nan=False)
 
 

@@ -3,14 +3,21 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Callable, Sequence
+from collections.abc import Sequence
 from typing import Any
 
 from stackmill.planning.stops import Reach, StopTable
-from stackmill.planning.windows import Window
 from stackmill.report.render import Grid, Paper, csv_text, json_text, wrapped
+from stackmill.report.window_words import (
+    column_name,
+    goal_name,
+    goal_regions,
+    leg_name,
+    lost_by,
+    window_in_words,
+)
 from stackmill.report.words import step_in_words
-from stackmill.units import clock, format_time
+from stackmill.units import clock
 
 ROW_NAMES = (
     "region",
@@ -44,8 +51,8 @@ def machine_windows(table: StopTable) -> list[dict[str, Any]]:
         return []
     return [
         {
-            "goal": _goal_name(table),
-            "regions": list(_goal_regions(table)),
+            "goal": goal_name(table),
+            "regions": list(goal_regions(table)),
             "exposed_s": window.exposed_s,
             "lost_s": window.lost_s,
             "stop_s": window.stop_s,
@@ -53,13 +60,13 @@ def machine_windows(table: StopTable) -> list[dict[str, Any]]:
             "best_chance": window.best_chance,
             "confidence": window.confidence,
             "first_look_s": window.first_look_s,
-            "lost_by": _lost_by(table, window),
+            "lost_by": lost_by(table, window),
             "left_standing_share": window.left_standing,
             "provisional": table.provisional,
             "best_stop_s": window.best_stop_s,
-            "exposed_by": _column_name(table, *window.exposed_by),
+            "exposed_by": column_name(table, *window.exposed_by),
             "counted_from_s": window.leg_start_s,
-            "counted_from": _leg_name(table, window.leg),
+            "counted_from": leg_name(table, window.leg),
         }
     ]
 
@@ -198,7 +205,7 @@ def _notes(table: StopTable, *, every: bool) -> list[str]:
     for leg in range(1, len(table.ensemble.best_outcome.leg_start_s)):
         at = float(table.ensemble.best_outcome.leg_start_s[leg][0])
         notes.append(
-            f"Times after {clock(at)} count from the end of {_leg_name(table, leg)!r}, stopped by eye at about"
+            f"Times after {clock(at)} count from the end of {leg_name(table, leg)!r}, stopped by eye at about"
             f" {clock(at)}: start the stopwatch again there."
         )
     hidden = len(shown_columns(table, every=True)) - len(shown_columns(table, every=every))
@@ -208,107 +215,3 @@ def _notes(table: StopTable, *, every: bool) -> list[str]:
             " last down, and the widest of each region (--all shows every one)."
         )
     return notes
-
-
-def window_in_words(table: StopTable, window: Window) -> list[str]:
-    """The window, line by line."""
-    job = table.ensemble.inputs.job
-    assert job.goal is not None
-    sure = f"{100 * window.confidence:.3g} %"
-    since = _since(table, window)
-    lines = [f"Goal: {_goal_name(table)} in {', '.join(_goal_regions(table))}, {_goal_level(table)}."]
-    if window.exposed_s is None:
-        lines.append(
-            f"NO SAFE WINDOW at {sure}: the best stop, {clock(window.best_stop_s)}{since(window.best_stop_s)}, has a chance of"
-            f" {window.best_chance:.2f}."
-        )
-        lines.append(
-            f"  In conflict: {_column_name(table, *window.exposed_by)} is exposed last,"
-            f" {_lost_by(table, window) or 'nothing'} is lost first."
-        )
-    else:
-        assert window.stop_s is not None
-        assert window.chance is not None
-        lines.append(f"STOP AT {clock(window.stop_s)}{since(window.stop_s)}: chance {window.chance:.2f}.")
-        if window.lost_s is None:
-            lines.append(f"  Window at {sure}: from {clock(window.exposed_s)} on; nothing is lost after it.")
-        else:
-            lines.append(
-                f"  Window at {sure}: {clock(window.exposed_s)} to {clock(window.lost_s)}"
-                f" ({format_time(window.lost_s - window.exposed_s)}). Latest stop {clock(window.lost_s)}{since(window.lost_s)}."
-            )
-        lines.append(f"  Exposed last: {_column_name(table, *window.exposed_by)}. Lost first: {_lost_by(table, window) or 'nothing'}.")
-    if window.first_look_s is not None:
-        which = "Next look" if window.leg else "First look"
-        lines.append(f"  {which} no later than {clock(window.first_look_s)}{since(window.first_look_s)}: until then the chance of loss is under 5 %.")
-    lines.append(f"  Left standing at the stop: {100 * window.left_standing:.2g} % of the goal's area.")
-    lines += _planned_end(table, window)
-    if table.provisional:
-        lines.append("  PROVISIONAL: a facet or a shadow gets to the centre of a deciding column before; see *.")
-    return lines
-
-
-def _planned_end(table: StopTable, window: Window) -> list[str]:
-    """What the stop means for the recipe: steps left unused, or staying beyond its end."""
-    best = table.ensemble.best
-    recipe = table.ensemble.inputs.job.recipe
-    spans = best.spans[: len(recipe.steps)]
-    unused = [
-        span.name for span in spans if span.start_s[0] >= window.best_stop_s and span.length_s[0] > 0.0
-    ]
-    if unused:
-        return [f"  The stop leaves unused: {', '.join(unused)}."]
-    end = float(spans[-1].end_s[0])
-    if window.stop_s is not None and window.stop_s > end * (1 + 1e-9):
-        return [f"  The recipe itself ends at {clock(end)}: stay on in its last step."]
-    return []
-
-
-def _since(table: StopTable, window: Window) -> Callable[[float], str]:
-    def text(time_s: float) -> str:
-        if not window.leg:
-            return ""
-        return f" ({clock(max(time_s - window.leg_start_s, 0.0))} after {_leg_name(table, window.leg)!r} is stopped)"
-
-    return text
-
-
-def _leg_name(table: StopTable, leg: int) -> str:
-    if not leg:
-        return "start"
-    by_eye = [step.name for step in table.ensemble.inputs.job.recipe.steps if getattr(step, "seen", None)]
-    return by_eye[leg - 1]
-
-
-def _goal_name(table: StopTable) -> str:
-    goal = table.ensemble.inputs.job.goal
-    assert goal is not None
-    return goal.layer if goal.feature is None else f"{goal.layer} / {goal.feature}"
-
-
-def _goal_regions(table: StopTable) -> list[str]:
-    regions = table.ensemble.inputs.job.column_map.regions
-    return list(dict.fromkeys(regions[r].name for r, _ in table.ensemble.best_outcome.wanted))
-
-
-def _goal_level(table: StopTable) -> str:
-    goal = table.ensemble.inputs.job.goal
-    assert goal is not None
-    where = "its top" if goal.at.top else f"at {100 * goal.at.fraction:.3g} % ± {goal.at.half_width:.3g} nm"
-    return f"{where} clear over {100 * goal.clear:.3g} % of its area"
-
-
-def _column_name(table: StopTable, region: int, column: int) -> str:
-    found = table.ensemble.inputs.job.column_map.regions[region]
-    return f"{found.name}: {found.label(column)}"
-
-
-def _lost_by(table: StopTable, window: Window) -> str | None:
-    if window.lost_by is None:
-        return None
-    name = _column_name(table, *window.lost_by)
-    if window.lost_keep < 0:
-        return name
-    keep = table.ensemble.inputs.job.keeps[window.lost_keep]
-    what = keep.layer if keep.feature is None else f"{keep.layer} / {keep.feature}"
-    return f"{what} to keep at {name}"

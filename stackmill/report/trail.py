@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from stackmill.documents.recipe import Beam
 from stackmill.jobs import Job
+from stackmill.materials.material import LabRate
 from stackmill.planning.stops import StopTable
 from stackmill.rates.yields import trail
 
@@ -19,9 +20,8 @@ def why_rates(job: Job) -> str:
             first, *rest = trail(material, energy_ev=energy_ev, gas=job.mill.gas, citation=job.library.citation)
             lines += [f"- {first}", *(f"    {line}" for line in rest)]
         lines += [
-            f"    measured on this mill: {60 * m.rate.value:.4g} nm/min ± {100 * m.rate.rel_sd:.2g} % at {m.energy_ev:.4g} eV,"
-            f" {m.incidence_deg:.4g} deg, {m.current_density.value:.4g} mA/cm2"
-            f"{', the same day: the current of that day is in it' if m.same_day else '; the current error counts again'}"
+            f"    measured on this mill: {60 * m.rate.value:.4g} nm/min ± {100 * m.rate.rel_sd:.2g} %"
+            f" at {m.energy_ev:.4g} eV, {m.incidence_deg:.4g} deg, {m.current_density.value:.4g} mA/cm2, {_day(m)}"
             for m in material.measured_rates
         ]
     return "\n".join(lines)
@@ -30,13 +30,14 @@ def why_rates(job: Job) -> str:
 def why_stops(table: StopTable) -> str:
     """The trail of a stop table: the draws, the rates, and the inputs that widen the answer most."""
     job = table.ensemble.inputs.job
+    mill = job.mill
     lines = [
         "How the times are found",
         f"- {len(table.ensemble.weights)} draws (Latin hypercube, seed {table.ensemble.seed}) of"
         f" {len(table.ensemble.inputs.names)} uncertain inputs; thickness over rate, segment after segment",
-        f"- mill: {job.mill.gas}, {job.mill.current_density.value:.4g} mA/cm2 ± {100 * job.mill.current_density.rel_sd:.2g} %,"
-        f" divergence {job.mill.divergence:.3g} deg, doubly charged {100 * job.mill.doubly_charged.value:.3g} % of the current,"
-        f" dial zero ± {job.mill.stage.zero_error.sd:.3g} deg",
+        f"- mill: {mill.gas}, {mill.current_density.value:.4g} mA/cm2 ± {100 * mill.current_density.rel_sd:.2g} %,"
+        f" divergence {mill.divergence:.3g} deg, doubly charged {100 * mill.doubly_charged.value:.3g} % of the"
+        f" current, dial zero ± {mill.stage.zero_error.sd:.3g} deg",
         f"- inputs sha256 {job.inputs_sha256}",
         "",
         why_rates(job),
@@ -46,6 +47,10 @@ def why_stops(table: StopTable) -> str:
         lines += [f"- {100 * s.share:4.0f} %  {s.name}" for s in table.shares[:_SHARES_SHOWN]]
         lines.append(f"To narrow it: {_advice(table.shares[0].name)}.")
     return "\n".join(lines)
+
+
+def _day(measured: LabRate) -> str:
+    return "the same day, its current with it" if measured.same_day else "whose current's error counts again"
 
 
 def _advice(name: str) -> str:
@@ -58,4 +63,4 @@ def _advice(name: str) -> str:
         return "measure the current, or mill a coupon the same day"
     if name == "dial zero error":
         return "check the stage's zero"
-    return f"mill a coupon of {name.split(':')[0]} at this setting"
+    return f"mill a coupon of {name.split(':', maxsplit=1)[0]} at this setting"

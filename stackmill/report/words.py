@@ -48,7 +48,8 @@ def _end(step: Beam | Process) -> str:
         return f"for {format_time(step.for_)}"
     if step.seen is not None:
         within = f" within ± {step.seen.within.sd:.3g} s" if step.seen.within.sd else ""
-        return f"until {_target(step.seen)} is seen over {100 * step.seen.area:.3g} % of {' and '.join(step.seen.in_)}{within}"
+        where = f" of {' and '.join(step.seen.in_)}" if step.seen.in_ else ""
+        return f"until {_target(step.seen)} is seen over {100 * step.seen.area:.3g} %{where}{within}"
     assert step.to is not None
     where = f" in {', '.join(step.to.in_)}" if step.to.in_ else ""
     return f"planned to end at {_target(step.to)}{where}"

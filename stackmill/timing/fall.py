@@ -78,7 +78,7 @@ Step = Lowering | Strip | Cover
 
 @dataclass
 class _Falling:
-    """A column on its way down. left_nm (K, D): what is still there; passed_s (K + 1, D): when each boundary was met."""
+    """A column on its way down. left_nm (K, D): what is there still; passed_s (K + 1, D): when boundaries were met."""
 
     material: tuple[int, ...]
     left_nm: Array
@@ -198,7 +198,8 @@ def _bare(columns: Sequence[Sequence[_Falling]]) -> list[_Falling]:
 
 def _slowness(rate_nm_per_s: Array) -> Array:
     with np.errstate(divide="ignore"):
-        return np.minimum(1.0 / rate_nm_per_s, _STANDSTILL)
+        slowness: Array = np.minimum(1.0 / rate_nm_per_s, _STANDSTILL)
+        return slowness
 
 
 def _duration(step: Lowering, columns: Sequence[Sequence[_Falling]], slowness: Array) -> Array:
@@ -225,4 +226,5 @@ def area_quantile(times: Array, area: Array, share: float) -> Array:
     covered = np.cumsum(area[order], axis=0)
     need = share * float(area.sum()) * (1.0 - 1e-12)
     first = np.argmax(covered >= need, axis=0)
-    return np.take_along_axis(np.take_along_axis(times, order, axis=0), first[None], axis=0)[0]
+    met: Array = np.take_along_axis(np.take_along_axis(times, order, axis=0), first[None], axis=0)[0]
+    return met

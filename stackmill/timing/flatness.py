@@ -86,7 +86,9 @@ class _Pairs:
         self.wall |= np.abs(moved[:, None] - moved[None, :]) > _SAME_HEIGHT_NM
         self.height_nm = height_nm
 
-    def fall(self, speeds: SlopeSpeeds, material: NDArray[np.intp], speed: Array, start_s: float, span_s: float) -> None:
+    def fall(
+        self, speeds: SlopeSpeeds, material: NDArray[np.intp], speed: Array, start_s: float, span_s: float
+    ) -> None:
         """Let all columns fall for span_s, each in one material and at one speed (C,), from start_s on the clock."""
         other = np.broadcast_to(speed[None, :], self.slope.shape)
         slower = other > speed[:, None] * (1.0 + _SAME_SPEED)
@@ -143,13 +145,18 @@ def flat_until(
 
 
 def _fall_through(
-    pairs: _Pairs, speeds: SlopeSpeeds, columns: Sequence[Column], left: Sequence[Array], start_s: float, span_s: float
+    pairs: _Pairs,
+    speeds: SlopeSpeeds,
+    columns: Sequence[Column],
+    left: Sequence[Array],
+    start_s: float,
+    span_s: float,
 ) -> None:
     """One beam step, cut wherever any column passes from one material to the next."""
     with np.errstate(divide="ignore"):
         slowness = np.minimum(1.0 / speeds.flat_nm_per_s, NEVER)
     passed = [np.cumsum(thick * slowness[list(c.material)]) for thick, c in zip(left, columns, strict=True)]
-    moments = np.unique(np.concatenate([[0.0], *passed]))
+    moments = np.array(sorted({0.0, *(float(time) for times in passed for time in times)}))
     moments = moments[moments < min(span_s, NEVER)]
     ends = np.append(moments[1:], min(span_s, float(max(p[-1] for p in passed))))
     for begin, end in zip(moments.tolist(), ends.tolist(), strict=True):

@@ -158,7 +158,8 @@ def _keep_cuts(
 
 def _thickness(column: CutColumn, first: int, last: int) -> Array:
     top, floor = int(column.boundary[first]), int(column.boundary[last + 1])
-    return np.sum(column.thickness_nm[top:floor], axis=0)
+    thickness: Array = np.sum(column.thickness_nm[top:floor], axis=0)
+    return thickness
 
 
 RateOf = Callable[[int, str], Array]
@@ -208,7 +209,8 @@ def fall_steps(
 
 def _last_milling(job: Job) -> int:
     """The number of the last step that lowers or strips."""
-    return max(i for i, step in enumerate(job.recipe.steps) if not isinstance(step, CoverStep | UncoverStep))
+    milling = (i for i, step in enumerate(job.recipe.steps) if not isinstance(step, CoverStep | UncoverStep))
+    return max(milling, default=-1)
 
 
 def _going_on(steps: Sequence[Step], draws: int) -> list[Step]:

@@ -19,7 +19,15 @@ REPORT: list[str] = []
 def against(benchmark):
     """Gives measure(ours, reference, target=..., rounds=...): the median ratio of times, pair by pair."""
 
-    def measure(name: str, ours: Callable[[], object], reference: Callable[[], object], *, target: float, rounds: int = 7, scale: float = 1.0) -> float:
+    def measure(
+        name: str,
+        ours: Callable[[], object],
+        reference: Callable[[], object],
+        *,
+        target: float,
+        rounds: int = 7,
+        scale: float = 1.0,
+    ) -> float:
         ours(), reference()  # warm caches
         ratios = []
         for _ in range(rounds):
@@ -28,7 +36,10 @@ def against(benchmark):
         benchmark.extra_info.update(ratio=ratio, target=target)
         benchmark.pedantic(ours, rounds=1, warmup_rounds=0)
         verdict = "met" if ratio <= target else "MISSED"
-        REPORT.append(f"{name}: {ratio:.4g} times the reference (target at most {target:.4g}: {verdict}; {min(ratios):.4g} to {max(ratios):.4g})")
+        REPORT.append(
+            f"{name}: {ratio:.4g} times the reference"
+            f" (target at most {target:.4g}: {verdict}; {min(ratios):.4g} to {max(ratios):.4g})"
+        )
         return ratio
 
     return measure

@@ -34,7 +34,9 @@ def test_stops_cold_against_bare_imports(against):
 
 def numbers(draws: int):
     random = np.random.default_rng(1)
-    columns = [Column(tuple(random.integers(0, 5, 30).tolist()), random.uniform(20, 300, (30, draws))) for _ in range(12)]
+    columns = [
+        Column(tuple(random.integers(0, 5, 30).tolist()), random.uniform(20, 300, (30, draws))) for _ in range(12)
+    ]
     rates = random.uniform(0.3, 1.2, (3, 5, draws))
     steps = [Lowering(rate, np.full(draws, time)) for rate, time in zip(rates, (2000.0, 2000.0, 1e5), strict=True)]
     return columns, steps
@@ -53,7 +55,13 @@ def test_a_hundred_thousand_draws_against_one_cumsum(against):
         for _ in range(chunks):
             np.cumsum(flat, axis=1)
 
-    against("100 000 draws x 12 columns x 30 layers x 3 steps against numpy cumsum of as many numbers", ours, reference, target=10.0, rounds=3)
+    against(
+        "100 000 draws x 12 columns x 30 layers x 3 steps against numpy cumsum of as many numbers",
+        ours,
+        reference,
+        target=10.0,
+        rounds=3,
+    )
 
 
 def test_a_hundred_thousand_draws_against_solve_ivp(against):

@@ -103,9 +103,7 @@ def test_mutated_values(data: st.DataObject) -> None:
     k, part = data.draw(st.sampled_from(spots))
     key = part.split(": ")[0]
     value = data.draw(
-        st.sampled_from(
-            ["", "[]", "{}", "[[1]]", "{a: {b: c}}", "0", "-1 nm", "''", "x", "[a, a]", "1e300 mm"]
-        )
+        st.sampled_from(["", "[]", "{}", "[[1]]", "{a: {b: c}}", "0", "-1 nm", "''", "x", "[a, a]", "1e300 mm"])
     )
     lines[k] = lines[k].replace(part, f"{key}: {value}")
     read_or_refuse(READERS[text], "\n".join(lines))

@@ -6,16 +6,12 @@ from stackmill.documents.showing import in_order, report
 from stackmill.errors import InputError, InputErrors, Place
 
 
-def error(
-    line: int, column: int = 1, excerpt: str = "", file: str = "f.yaml", what: str = "wrong"
-) -> InputError:
+def error(line: int, column: int = 1, excerpt: str = "", file: str = "f.yaml", what: str = "wrong") -> InputError:
     return InputError(what, cure="mend it", place=Place(file, line, column, excerpt))
 
 
 def test_headline_line_and_caret() -> None:
-    assert report(error(3, 7, "  key: value")) == (
-        "f.yaml:3:7: error: wrong (mend it)\n      key: value\n          ^"
-    )
+    assert report(error(3, 7, "  key: value")) == ("f.yaml:3:7: error: wrong (mend it)\n      key: value\n          ^")
 
 
 def test_files_in_the_order_they_were_met_then_lines() -> None:

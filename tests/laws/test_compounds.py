@@ -34,6 +34,7 @@ def test_means_are_weighted_by_atoms_and_the_heat_is_added():
     assert target.w_ev == pytest.approx((2.0 + 2 * 1.0) / 3)
 
 
+@pytest.mark.closed_form
 def test_the_scale_of_the_shares_does_not_matter():
     small, large = (effective_target(share=[k, 2 * k], **TWO, formation_ev_per_atom=1.0) for k in (1.0, 33.3))
     assert small.us_ev == pytest.approx(large.us_ev, rel=1e-12)

@@ -79,8 +79,7 @@ def test_the_rule_is_bounded_with_one_maximum_from_be_to_pb(mass_ratio, energy, 
 @given(mass_ratio=st.floats(0.2, 4.0), energy=st.floats(150.0, 9000.0))
 def test_the_rule_is_smooth(mass_ratio, energy):
     here, there = (
-        ep_constants(mass_ratio=mass_ratio * k, eth_over_e=30.0 / (energy * k)).ratio(FINE[:-40])
-        for k in (1.0, 1.01)
+        ep_constants(mass_ratio=mass_ratio * k, eth_over_e=30.0 / (energy * k)).ratio(FINE[:-40]) for k in (1.0, 1.01)
     )
     assert np.abs(np.log(there / here)).max() < 0.05
 
@@ -93,9 +92,7 @@ def test_next_to_threshold_the_shape_is_held():
 
 
 def test_lighter_targets_rise_more():
-    rises = [
-        float(ep_constants(mass_ratio=r, eth_over_e=0.03).ratio(FINE).max()) for r in (0.2, 0.6, 1.5, 3.3)
-    ]
+    rises = [float(ep_constants(mass_ratio=r, eth_over_e=0.03).ratio(FINE).max()) for r in (0.2, 0.6, 1.5, 3.3)]
     assert rises == sorted(rises)
 
 
@@ -132,12 +129,8 @@ def test_divergence_against_a_dense_sum_over_the_cone(degrees, divergence):
     weight = (off * np.exp(-((off / half) ** 2)))[:, None] * np.ones(turn.size)
     cosine = np.cos(off)[:, None] * np.cos(theta) + np.sin(off)[:, None] * np.sin(theta) * np.cos(turn)
     lit = np.where(cosine > 0.0, cosine, 0.0)
-    dense = np.sum(weight * lit * steep(np.arccos(np.clip(cosine, -1, 1)))) / np.sum(
-        weight * np.cos(off)[:, None]
-    )
-    assert flat_average(steep, incidence_rad=theta, divergence_rad=half) == pytest.approx(
-        float(dense), rel=2e-3
-    )
+    dense = np.sum(weight * lit * steep(np.arccos(np.clip(cosine, -1, 1)))) / np.sum(weight * np.cos(off)[:, None])
+    assert flat_average(steep, incidence_rad=theta, divergence_rad=half) == pytest.approx(float(dense), rel=2e-3)
 
 
 @pytest.mark.independent
@@ -181,6 +174,7 @@ def test_a_shape_that_would_not_vanish_is_refused():
         eckstein_angular(incidence_rad=0.5, f=2.0, b=-0.1, c=0.7)
 
 
+@pytest.mark.closed_form
 def test_a_shape_broadcasts_over_energies():
     shape = AngularShape(f=np.array([2.0, 3.0]), b=np.array([0.5, 0.8]), c=np.array([0.7, 0.6]))
     table = shape.ratio(FINE[:, None])

@@ -105,7 +105,6 @@ def test_outside_its_range_a_law_computes_and_warns_once(name):
 @pytest.mark.closed_form
 def test_a_yield_is_inverse_in_the_binding_energy_far_above_threshold():
     soft, hard = (
-        float(sputtering.yamamura_tawara(energy_ev=9e4, **ARGON, **{**COPPER, "us_ev": us}))
-        for us in (1e-4, 2e-4)
+        float(sputtering.yamamura_tawara(energy_ev=9e4, **ARGON, **{**COPPER, "us_ev": us})) for us in (1e-4, 2e-4)
     )
     assert soft / hard == pytest.approx(2.0, rel=1e-2)

@@ -20,8 +20,14 @@ def prior(sd):
 def test_posterior_equals_the_normal_equations(seed, size, rows):
     random = np.random.default_rng(seed)
     sd = random.uniform(0.05, 0.6, size)
-    design, y, noise = random.normal(size=(rows, size)), random.normal(size=rows), random.uniform(0.02, 0.3, rows)
-    after = condition(prior(sd), [RateEvidence(d, float(r), float(n), "") for d, r, n in zip(design, y, noise, strict=True)])
+    design, y, noise = (
+        random.normal(size=(rows, size)),
+        random.normal(size=rows),
+        random.uniform(0.02, 0.3, rows),
+    )
+    after = condition(
+        prior(sd), [RateEvidence(d, float(r), float(n), "") for d, r, n in zip(design, y, noise, strict=True)]
+    )
     information = np.diag(1 / sd**2) + design.T @ np.diag(1 / noise**2) @ design
     cov = np.linalg.inv(information)
     np.testing.assert_allclose(after.cov, cov, rtol=1e-8, atol=1e-12)

@@ -13,7 +13,14 @@ from stackmill.documents.material import LibraryEntry, SourcesFile
 from stackmill.documents.reading import read_document
 from stackmill.laws.sputtering import LAWS
 from stackmill.materials.library import DATA, Library
-from stackmill.rates.yields import angular_shape, ln_yield_sd, normal_yield, rate_nm_per_s, threshold_ev, trail
+from stackmill.rates.yields import (
+    angular_shape,
+    ln_yield_sd,
+    normal_yield,
+    rate_nm_per_s,
+    threshold_ev,
+    trail,
+)
 
 LIBRARY = Library.load()
 NAMES = LIBRARY.names()
@@ -137,6 +144,7 @@ def test_the_mean_mass_is_that_of_the_composition(name):
     assert material.mean_mass_u == pytest.approx(mean, rel=1e-3)
 
 
+@pytest.mark.common_practice
 @pytest.mark.parametrize("gas", list(GASES))
 @pytest.mark.parametrize("name", NAMES)
 def test_every_material_mills_in_every_gas(name, gas):
@@ -147,9 +155,7 @@ def test_every_material_mills_in_every_gas(name, gas):
     assert np.all(yields > 0.0)
     assert np.all(np.diff(yields[:-1]) > 0.0)  # light targets turn down near 10 keV
     assert np.all(ln_yield_sd(material, energy_ev=energies, gas=gas) >= 0.09)
-    ratio = angular_shape(material, energy_ev=energies, gas=gas).ratio(
-        np.radians(np.arange(0, 91, 1.0))[:, None]
-    )
+    ratio = angular_shape(material, energy_ev=energies, gas=gas).ratio(np.radians(np.arange(0, 91, 1.0))[:, None])
     assert np.all(np.isfinite(ratio))
     assert ratio[0] == pytest.approx(np.ones(len(energies)))
     assert ratio[-1] == pytest.approx(np.zeros(len(energies)))

@@ -74,6 +74,7 @@ def _seconds(names: list[str]) -> float:
     return time.perf_counter() - begin
 
 
+@pytest.mark.regression
 def test_an_overlay_keeps_what_it_does_not_name():
     library = Library.load(
         lab(
@@ -119,12 +120,11 @@ def test_a_labs_own_aliases_are_found():
 
 
 def test_later_overlays_may_build_on_earlier_ones():
-    library = Library.load(
-        lab("materials:\n  - {name: a, like: W, density: 18 g/cm3 ± 1 %}\n  - {name: b, like: a}")
-    )
+    library = Library.load(lab("materials:\n  - {name: a, like: W, density: 18 g/cm3 ± 1 %}\n  - {name: b, like: a}"))
     assert library.get("b").density.value == 18.0
 
 
+@pytest.mark.regression
 def test_a_density_without_an_sd_gets_one_and_says_so():
     material = Library.load(lab("materials: [{name: Cu, density: 8.5 g/cm3}]")).get("Cu")
     assert material.density_rel_sd == pytest.approx(0.05)
@@ -184,13 +184,11 @@ def test_overlays_that_lead_nowhere(text, says):
         ("{name: a, like: W, formation: 3 eV}", "a formation heat needs the composition it belongs to"),
         ("{name: a, kind: plastic}", "'plastic' is no kind of material (write one of metal, semiconductor"),
         (
-            "{name: W, measured_rate: {rate: 0 nm/min, energy: 1 keV, incidence: 0 deg,"
-            " current_density: 1 mA/cm2}}",
+            "{name: W, measured_rate: {rate: 0 nm/min, energy: 1 keV, incidence: 0 deg, current_density: 1 mA/cm2}}",
             "a measured rate has to be above zero",
         ),
         (
-            "{name: W, measured_rate: {rate: 9 nm/min, energy: 1 keV, incidence: 0 deg,"
-            " current_density: 1 mA/cm2}}",
+            "{name: W, measured_rate: {rate: 9 nm/min, energy: 1 keV, incidence: 0 deg, current_density: 1 mA/cm2}}",
             "a measured rate needs its error (write it like 41 nm/min ± 4 %)",
         ),
         (

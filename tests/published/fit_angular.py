@@ -137,9 +137,7 @@ def fit_rule() -> Array:
             ln_top = -f * np.log(top) + b * (1.0 - 1.0 / top)
             angle = (np.arccos(top) * 2.0 / np.pi) ** (1.0 / c) * 90.0
             parts.append(
-                np.array(
-                    [(ln_top - np.log(told.ratio)) / told.ln_sd, (angle - told.angle_deg) / told.angle_sd]
-                )
+                np.array([(ln_top - np.log(told.ratio)) / told.ln_sd, (angle - told.angle_deg) / told.angle_sd])
             )
         for ratio in (0.19, 0.22, 0.6, 1.4, 2.2, 4.4):
             for closeness in (0.05, 0.1):
@@ -162,10 +160,7 @@ def fit_own(element: str) -> tuple[Array, Array, Array]:
         parts = [
             np.where(curve.mid, 1.0, 0.25)
             * (1.0 if curve.energy_ev >= 200.0 else 0.3)
-            * (
-                ln_shape(curve.incidence_rad, *constants(p, min(curve.closeness, NEAR_THRESHOLD)))
-                - curve.ln_ratio
-            )
+            * (ln_shape(curve.incidence_rad, *constants(p, min(curve.closeness, NEAR_THRESHOLD))) - curve.ln_ratio)
             for curve in data
         ]
         # the extrapolation to high energy is tied to the rule's, with little weight

@@ -172,9 +172,7 @@ def density_of(material: Material, target: EffectiveTarget) -> float:
 
 def constants_block(target: EffectiveTarget) -> str:
     """The `constants` block of a compound, as YAML text."""
-    values = ", ".join(
-        f"{name}: {getattr(target, name):.5g}" for name in ("z2", "m2_u", "us_ev", "q", "w_ev", "s")
-    )
+    values = ", ".join(f"{name}: {getattr(target, name):.5g}" for name in ("z2", "m2_u", "us_ev", "q", "w_ev", "s"))
     return f"constants:\n  values: {{{values}}}\n  source: effective-target\n  seen: yes\n"
 
 
@@ -209,10 +207,7 @@ def estimate_block(name: str, target: EffectiveTarget) -> str:
     ln_factor = float(np.log(tie_of_unmeasured(mean_mass_u=target.m2_u)))
     sd = math.hypot(ESTIMATE_LN_SD, ESTIMATES[name])
     basis = "no trustworthy yield is known; the rule in the mean atomic mass for compounds"
-    return (
-        _fit_lines(ln_factor, sd, ESTIMATE_RANGE_EV, rms=0.0, basis=basis, above=ESTIMATE_ABOVE)
-        + "  rows: []\n"
-    )
+    return _fit_lines(ln_factor, sd, ESTIMATE_RANGE_EV, rms=0.0, basis=basis, above=ESTIMATE_ABOVE) + "  rows: []\n"
 
 
 def alloy_block(name: str, library: Library) -> str:
@@ -222,15 +217,11 @@ def alloy_block(name: str, library: Library) -> str:
     assert host is not None
     basis = f"the yields of {host_name}; a dilute alloy of it, {100 * added:.0f} % added to the sd"
     sd = math.hypot(host.ln_sd, added)
-    text = _fit_lines(
-        math.log(host.factor), sd, host.range_ev, rms=host.rms, basis=basis, above=host.above_per_efold
-    )
+    text = _fit_lines(math.log(host.factor), sd, host.range_ev, rms=host.rms, basis=basis, above=host.above_per_efold)
     return text + "  rows: []\n"
 
 
-def _fit_lines(
-    ln_factor: float, sd: float, span: tuple[float, float], *, rms: float, basis: str, above: float
-) -> str:
+def _fit_lines(ln_factor: float, sd: float, span: tuple[float, float], *, rms: float, basis: str, above: float) -> str:
     return (
         f"fit:\n  factor: {math.exp(ln_factor):.4f}\n  exponent: 0\n  at: {REFERENCE_EV:g} eV\n"
         f"  ln_sd: {sd:.3f}\n  range: [{span[0]:g} eV, {span[1]:g} eV]\n"

@@ -130,9 +130,7 @@ def circulated_rates() -> dict[str, list[float]]:
     return rates
 
 
-def _row(
-    material: Material, energy: float, per_ion: float, line: Mapping[str, str], *, measured: bool
-) -> Row:
+def _row(material: Material, energy: float, per_ion: float, line: Mapping[str, str], *, measured: bool) -> Row:
     return Row(
         element=material.name,
         energy_ev=energy,
@@ -198,9 +196,7 @@ def disagreement_of(name: str) -> float:
     return 0.5 * abs(math.log(rates[1] / rates[0])) if len(rates) > 1 else 0.0
 
 
-def growth_outside(
-    data: Mapping[str, Sequence[Row]], everything: Mapping[str, Sequence[Row]]
-) -> tuple[float, float]:
+def growth_outside(data: Mapping[str, Sequence[Row]], everything: Mapping[str, Sequence[Row]]) -> tuple[float, float]:
     """By how much the sd grows for each factor e in energy below and above the rows.
 
     Below: rms miss of the 100 eV rows by the ties, over the distance. Above: rms miss of the rows beyond
@@ -249,9 +245,7 @@ def sd_at(tied: Tie, energy_ev: float, growth: tuple[float, float]) -> float:
     return math.hypot(tied.ln_sd, growth[0] * below + growth[1] * above)
 
 
-def leave_one_out(
-    data: Mapping[str, Sequence[Row]], scatter: float, growth: tuple[float, float]
-) -> list[LeftOut]:
+def leave_one_out(data: Mapping[str, Sequence[Row]], scatter: float, growth: tuple[float, float]) -> list[LeftOut]:
     """Every measured row foretold without itself. A doubtful row's own sd counts in the interval."""
     found = []
     for name, rows in data.items():
@@ -347,9 +341,7 @@ def evidence(library: Library) -> Evidence:
     """What the yield table says of all elements together."""
     elements = elements_of(library)
     everything = read_rows(elements)
-    data = {
-        name: [row for row in rows if row.energy_ev > LOWEST_TIED_EV] for name, rows in everything.items()
-    }
+    data = {name: [row for row in rows if row.energy_ev > LOWEST_TIED_EV] for name, rows in everything.items()}
     return Evidence(elements, everything, data, pooled_scatter(data), growth_outside(data, everything))
 
 

@@ -91,8 +91,7 @@ def test_doubly_charged_ions_are_half_as_many_at_twice_the_energy():
 @pytest.mark.closed_form
 def test_rates_follow_current_and_density():
     one, two = (
-        float(rate_nm_per_s(SI, energy_ev=800.0, incidence_rad=0.3, current_density_ma_per_cm2=j))
-        for j in (1, 2)
+        float(rate_nm_per_s(SI, energy_ev=800.0, incidence_rad=0.3, current_density_ma_per_cm2=j)) for j in (1, 2)
     )
     assert two == pytest.approx(2.0 * one)
     light = replace(SI, density=replace(SI.density, value=SI.density.value / 2))
@@ -114,9 +113,7 @@ def test_an_angular_deviation_acts_as_its_sd_says():
     )
     assert np.log(float(ratio)) == pytest.approx(SIO2.angular_sd)
     assert angular_leverage([0.0, np.radians(30.0), theta]) == pytest.approx([0.0, 1.0 / 3.0, 1.0])
-    straight = [
-        float(rate_nm_per_s(SIO2, incidence_rad=0.0, angular_deviation=d, **BEAM)) for d in (0.0, 2.0)
-    ]
+    straight = [float(rate_nm_per_s(SIO2, incidence_rad=0.0, angular_deviation=d, **BEAM)) for d in (0.0, 2.0)]
     assert straight[0] == straight[1]
 
 
@@ -127,12 +124,11 @@ def test_own_constants_step_from_argon_to_another_gas_as_the_rule_does():
     rule = {gas: angular_shape(rule_material, energy_ev=700.0, gas=gas) for gas in ("argon", "neon")}
     for letter in "fbc":
         step = getattr(own["neon"], letter) - getattr(own["argon"], letter)
-        assert step == pytest.approx(
-            getattr(rule["neon"], letter) - getattr(rule["argon"], letter), abs=1e-12
-        )
+        assert step == pytest.approx(getattr(rule["neon"], letter) - getattr(rule["argon"], letter), abs=1e-12)
         assert abs(float(step)) > 1e-4
 
 
+@pytest.mark.closed_form
 def test_a_shape_vanishes_at_grazing_however_its_constants_extrapolate():
     wild = replace(W, angular=replace(W.angular, b=(-0.5, 0.1, 0.0)))
     ratio = angular_shape(wild, energy_ev=[200.0, 5000.0]).ratio(np.radians([[60.0], [89.99], [90.0]]))
@@ -140,25 +136,21 @@ def test_a_shape_vanishes_at_grazing_however_its_constants_extrapolate():
     assert ratio[-1] == pytest.approx([0.0, 0.0])
 
 
+@pytest.mark.independent
 def test_divergence_and_rocking_reach_the_rate():
     theta = np.radians(60.0)
     plain = float(rate_nm_per_s(SI, incidence_rad=theta, **BEAM))
-    assert float(rate_nm_per_s(SI, incidence_rad=theta, divergence_rad=0.1, **BEAM)) != pytest.approx(
-        plain, rel=1e-3
-    )
-    assert float(rate_nm_per_s(SI, incidence_rad=theta, rocking_rad=0.3, **BEAM)) != pytest.approx(
-        plain, rel=1e-3
-    )
+    assert float(rate_nm_per_s(SI, incidence_rad=theta, divergence_rad=0.1, **BEAM)) != pytest.approx(plain, rel=1e-3)
+    assert float(rate_nm_per_s(SI, incidence_rad=theta, rocking_rad=0.3, **BEAM)) != pytest.approx(plain, rel=1e-3)
 
 
 @pytest.mark.common_practice
 def test_heavier_gases_sputter_heavy_targets_more():
-    yields = [
-        float(normal_yield(W, energy_ev=1000.0, gas=gas)) for gas in ("neon", "argon", "krypton", "xenon")
-    ]
+    yields = [float(normal_yield(W, energy_ev=1000.0, gas=gas)) for gas in ("neon", "argon", "krypton", "xenon")]
     assert yields == sorted(yields)
 
 
+@pytest.mark.regression
 def test_another_gas_is_less_sure():
     for material, added in ((CU, OTHER_GAS_LN_SD), (W, W.other_gases.ln_sd)):
         argon, xenon = (float(ln_yield_sd(material, energy_ev=500.0, gas=gas)) for gas in ("argon", "xenon"))

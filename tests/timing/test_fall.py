@@ -84,7 +84,10 @@ def test_a_flat_stack_with_a_5_nm_film_takes_the_sum_of_thickness_over_rate():
 
 @pytest.mark.closed_form
 def test_a_material_that_does_not_mill_is_never_passed_but_a_film_of_no_thickness_is():
-    run = fall([[column([0, 1, 0], [10.0, 5.0, 10.0]), column([0, 1, 0], [10.0, 0.0, 10.0])]], [lowering([1.0, 0.0], 1e6)])
+    run = fall(
+        [[column([0, 1, 0], [10.0, 5.0, 10.0]), column([0, 1, 0], [10.0, 0.0, 10.0])]],
+        [lowering([1.0, 0.0], 1e6)],
+    )
     assert run.reach(0, 0, 1)[0] == 10.0
     assert np.isinf(run.reach(0, 0, 2)[0])
     assert run.reach(0, 1, 3)[0] == 20.0
@@ -126,11 +129,17 @@ def test_a_step_that_does_not_count_lowers_without_moving_the_clock():
 @settings(max_examples=100, deadline=None)
 @given(
     st.lists(st.floats(0, 1e4), min_size=1, max_size=9).flatmap(
-        lambda t: st.tuples(st.just(t), st.lists(st.floats(0.01, 1), min_size=len(t), max_size=len(t)), st.floats(0.01, 1))
+        lambda t: st.tuples(
+            st.just(t), st.lists(st.floats(0.01, 1), min_size=len(t), max_size=len(t)), st.floats(0.01, 1)
+        )
     )
 )
 def test_area_quantile_by_trying_every_time(case):
     times, area, share = case
     ours = area_quantile(np.array(times)[:, None], np.array(area), share)[0]
-    enough = [t for t in sorted(times) if sum(a for a, x in zip(area, times, strict=True) if x <= t) >= share * sum(area) * (1 - 1e-9)]
+    enough = [
+        t
+        for t in sorted(times)
+        if sum(a for a, x in zip(area, times, strict=True) if x <= t) >= share * sum(area) * (1 - 1e-9)
+    ]
     assert ours == enough[0]

@@ -49,7 +49,12 @@ def beam(*rates, time=1e6):
 
 def kink(curve, limit):
     """Fastest chord up to a slope, by a scalar search of its own."""
-    found = minimize_scalar(lambda p: -(vertical(curve, p) - curve[0]) / p, bounds=(1e-6, limit), method="bounded", options={"xatol": 1e-12})
+    found = minimize_scalar(
+        lambda p: -(vertical(curve, p) - curve[0]) / p,
+        bounds=(1e-6, limit),
+        method="bounded",
+        options={"xatol": 1e-12},
+    )
     return -found.fun
 
 
@@ -97,8 +102,18 @@ def test_a_shadow_falls_on_what_lies_low_beside_what_stands_high():
 def test_a_slope_is_never_flat_a_strip_leaves_a_wall_and_a_cover_does_not():
     columns = [column((2, 400.0), (0, 1e5)), column((0, 1e5)), column((0, 1e5))]
     distance = [[np.inf, 300.0, 1e9], [1e9, np.inf, 1e9], [1e9, 1e9, np.inf]]
-    steps = [Cover(frozenset([0]), True), Strip(frozenset([2])), Cover(frozenset([0]), False), beam(1.0, 0.9, 0.5)]
+    steps = [
+        Cover(frozenset([0]), True),
+        Strip(frozenset([2])),
+        Cover(frozenset([0]), False),
+        beam(1.0, 0.9, 0.5),
+    ]
     none = until(columns, steps, distance, [None, None, None, speeds(OXIDE, TUNGSTEN, OXIDE)], [False, False, True])
     assert none[2] == 0.0
-    bare = until(columns, [Strip(frozenset([2])), beam(1.0, 0.9, 0.5)], distance, [None, speeds(OXIDE, TUNGSTEN, OXIDE)])
+    bare = until(
+        columns,
+        [Strip(frozenset([2])), beam(1.0, 0.9, 0.5)],
+        distance,
+        [None, speeds(OXIDE, TUNGSTEN, OXIDE)],
+    )
     assert bare[0] == pytest.approx(300.0 / 0.5542, rel=1e-3)

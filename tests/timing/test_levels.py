@@ -10,7 +10,15 @@ from stackmill.timing.levels import CutColumn
 
 
 def times(cut: CutColumn, level: int, rates):
-    run = fall([[cut.done()]], [Lowering(np.array(rates)[:, None] * np.ones(cut.thickness_nm[0].shape), np.full(cut.thickness_nm[0].shape, 1e6))])
+    run = fall(
+        [[cut.done()]],
+        [
+            Lowering(
+                np.array(rates)[:, None] * np.ones(cut.thickness_nm[0].shape),
+                np.full(cut.thickness_nm[0].shape, 1e6),
+            )
+        ],
+    )
     return run.reach(0, 0, cut.levels[level])
 
 

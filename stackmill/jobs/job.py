@@ -18,8 +18,8 @@ from stackmill.documents.overriding import Override, assembled, overrides
 from stackmill.documents.recipe import DEFAULT_RECIPE, Beam, Cover, Process, Recipe, Strip
 from stackmill.documents.stack import NO_FILL, Stack
 from stackmill.errors import InputError, InputErrors, UsageError
-from stackmill.job_files import FileReader, JobDocuments, kind_of, read_source
-from stackmill.job_materials import Found, find_materials, unknown_materials
+from stackmill.jobs.files import FileReader, JobDocuments, kind_of, read_source
+from stackmill.jobs.materials import Found, find_materials, unknown_materials
 from stackmill.units import quoted
 
 if TYPE_CHECKING:
@@ -141,13 +141,8 @@ def bare_job(
 
     Raises InputErrors.
     """
-    layers = [
-        {"name": f"layer {k + 1}", "material": name, "thickness": "100 nm"}
-        for k, name in enumerate(materials)
-    ]
-    stack = read_tree(
-        json.dumps({"title": "named materials", "layers": layers}, ensure_ascii=False), "--material"
-    )
+    layers = [{"name": f"layer {k + 1}", "material": name, "thickness": "100 nm"} for k, name in enumerate(materials)]
+    stack = read_tree(json.dumps({"title": "named materials", "layers": layers}, ensure_ascii=False), "--material")
     options = {
         "energy": energy,
         "incidence": incidence,
@@ -172,9 +167,7 @@ def _around_stack(
     goal = options.get("goal")
     end = Override((*_RECIPE_STEP, "to"), goal or _last_layer(stack), "--goal" if goal else "default recipe")
     moved = [
-        Override(("stack", *change.keys), change.text, change.label)
-        if change.keys[0] in _LONE_STACK_KEYS
-        else change
+        Override(("stack", *change.keys), change.text, change.label) if change.keys[0] in _LONE_STACK_KEYS else change
         for change in changes
     ]
     return tree, [end, *found, *moved]
@@ -209,7 +202,7 @@ def _refuse_other_kind(tree: Tree) -> None:
 
 def _job(reader: FileReader) -> Job:
     """The job of some files. Raises InputErrors with whatever is wrong in them or does not fit together."""
-    from stackmill.job_checks import check_fit
+    from stackmill.jobs.checks import check_fit
 
     documents = reader.read()
     if documents is None:

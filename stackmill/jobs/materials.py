@@ -12,7 +12,7 @@ from stackmill.documents.reading import Document
 from stackmill.documents.recipe import OTHER, Cover, Process, Recipe, Strip
 from stackmill.documents.stack import NO_FILL, Film, Stack
 from stackmill.errors import InputError
-from stackmill.job_files import JobDocuments
+from stackmill.jobs.files import JobDocuments
 
 if TYPE_CHECKING:
     from stackmill.documents.material import LabMaterial
@@ -72,9 +72,7 @@ def unknown_materials(trees: Iterable[Tree]) -> list[InputError]:
         for scalar in _scalars(tree.root, ""):
             if scalar.text and scalar.text not in seen and scalar.text not in library:
                 says = wording.unknown_material(scalar.text, library.near(scalar.text))
-                errors.append(
-                    InputError(says.what, cure=says.cure, place=tree.place_of(scalar), key=scalar.text)
-                )
+                errors.append(InputError(says.what, cure=says.cure, place=tree.place_of(scalar), key=scalar.text))
             seen.add(scalar.text)
     return errors
 

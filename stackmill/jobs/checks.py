@@ -14,8 +14,8 @@ from stackmill.documents.recipe import OTHER, Beam, Cover, Process, Recipe, Seen
 from stackmill.documents.stack import NO_FILL, Feature, Layer, Line, Region, Stack, Via
 from stackmill.documents.wording import Sentence
 from stackmill.errors import InputError
-from stackmill.job_files import JobDocuments
-from stackmill.job_materials import Found, in_stack
+from stackmill.jobs.files import JobDocuments
+from stackmill.jobs.materials import Found, in_stack
 from stackmill.units import plain, quoted
 
 if TYPE_CHECKING:
