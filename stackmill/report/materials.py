@@ -75,7 +75,8 @@ def listed(materials: Sequence[Material], paper: Paper, *, markdown: bool) -> st
     headers = ["material", "kind", "g/cm3", "nm/min", "sd", "rests on"]
     note = wrapped(
         f"Milling rates: argon, {_ENERGY_EV / 1e3:g} keV, {_INCIDENCE_DEG:g}° from the normal, {_CURRENT} mA/cm²;"
-        " the sd is the yield's at 1 keV and the density's. `stackmill materials NAME` shows every value and its source.",
+        " the sd is the yield's at 1 keV and the density's."
+        " `stackmill materials NAME` shows every value and its source.",
         paper.width,
     )
     table = Grid(headers, rows, frozenset({2, 3, 4})).text("github" if markdown else "simple")

@@ -221,7 +221,8 @@ def _time_to_end(column: _Falling, above: int, slowness: Array) -> Array:
 def area_quantile(times: Array, area: Array, share: float) -> Array:
     """The moment (D,) when `share` of the area is down: times (W, D) of W columns with areas (W,)."""
     if len(times) == 1:
-        return times[0]
+        only: Array = times[0]
+        return only
     order = np.argsort(times, axis=0)
     covered = np.cumsum(area[order], axis=0)
     need = share * float(area.sum()) * (1.0 - 1e-12)

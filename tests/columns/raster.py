@@ -69,10 +69,13 @@ def rolled(z, thickness, sidewall, step):
     return best
 
 
-def paint(stack, region, step):
-    """Build a region up on a square raster of the given step (nm), which must divide the cell."""
-    x = (np.arange(round(stack.cell.x / step)) + 0.5) * step
-    y = ((np.arange(round(stack.cell.y / step)) + 0.5) * step)[:, None]
+def paint(stack, region, step, shift=0.5):
+    """Build a region up on a square raster of the given step (nm), which must divide the cell.
+
+    With shift=0 points lie on all straight edges that are multiples of the step, where distances come out exact.
+    """
+    x = (np.arange(round(stack.cell.x / step)) + shift) * step
+    y = ((np.arange(round(stack.cell.y / step)) + shift) * step)[:, None]
     shape = (y.size, x.size)
     z = np.zeros(shape)
     layers, feature, depth = [], {}, {}

@@ -140,16 +140,30 @@ def test_flat_tops_are_those_of_a_rolled_raster(name, step):
 
 
 @pytest.mark.independent
-@pytest.mark.parametrize("name", ["crowded", "stepped"])
-def test_slopes_approach_those_of_a_rolled_raster_as_it_gets_finer(name):
+def test_slopes_from_straight_walls_and_corners_are_those_of_a_rolled_raster():
+    stack = dies.stepped()
+    (region,) = build(stack).regions
+    painted_die = raster.paint(stack, stack.regions[0], 10.0, shift=0.0)
+    inside = (painted_die.x[None, :] + 1e-3, painted_die.y + 1e-3)  # each point stands for the square up and right
+    columns = region.plan(*inside)
+    for c in np.flatnonzero(region.slope > 0):
+        tops = painted_die.top[columns == c]
+        steepest = np.ptp(tops)  # a class is about two points wide: sampling errs by part of its own fall
+        assert abs(tops.mean() - region.top_nm[c]) < 0.5 * steepest + 1.0, region.label(c)
+    everywhere = painted_die.top.mean() - region.area @ region.top_nm
+    assert abs(everywhere) < 0.3
+
+
+@pytest.mark.independent
+def test_slopes_from_round_walls_approach_those_of_a_rolled_raster():
+    stack = dies.crowded()
+    (region,) = build(stack).regions
     errors = []
-    for step in (20.0, 10.0, 5.0):
-        _, painted_die, region = painted(name, step)
-        columns = region.plan(painted_die.x[None, :], painted_die.y)
-        sloped = region.slope[columns] > 0
-        errors.append(np.abs(np.mean((painted_die.top - region.top_nm[columns])[sloped])))
-    assert errors[2] < 4.0
-    assert errors[2] < 0.62 * errors[1] < 0.62**2 * errors[0]
+    for step in (20.0, 5.0):
+        top = raster.paint(stack, stack.regions[0], step).top
+        errors.append(abs(float(top.mean() - region.area @ region.top_nm)))
+    assert errors[1] < 0.5 * errors[0]
+    assert errors[1] < 2.5
 
 
 @pytest.mark.independent

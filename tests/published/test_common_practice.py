@@ -6,6 +6,7 @@ import numpy as np
 import pytest
 
 from stackmill.materials.library import Library
+from stackmill.laws.ions import ion_speed_m_per_s
 from stackmill.rates.yields import rate_nm_per_s
 
 LIBRARY = Library.load()
@@ -59,3 +60,12 @@ def test_gold_and_copper_mill_faster_than_the_refractory_metals():
     for slow in ("W", "Ta", "Ti", "TiN"):
         for fast in ("Au", "Cu"):
             assert _rate(fast, 500.0, 0.0) > 1.5 * _rate(slow, 500.0, 0.0)
+
+
+@pytest.mark.common_practice
+@pytest.mark.parametrize("energy_ev", [2000.0, 5000.0, 10_000.0])
+def test_an_ion_crosses_the_chamber_in_under_50_us(energy_ev):
+    speed = float(ion_speed_m_per_s(energy_ev=energy_ev, mass_u=39.948))
+    assert speed == pytest.approx(np.sqrt(2 * energy_ev * 1.602176634e-19 / (39.948 * 1.66053906892e-27)))
+    for chamber_m in (0.1, 0.5, 1.0):
+        assert chamber_m / speed < 50e-6

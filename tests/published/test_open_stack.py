@@ -35,7 +35,8 @@ def heights(region, column, layer):
 @pytest.mark.published
 def test_every_level_lies_at_its_published_height(job):
     array = job.column_map.regions[0]
-    published = {row["level"]: row for row in csv.DictReader((HERE / "levels.csv").open()) if row["bottom_um"]}
+    with (HERE / "levels.csv").open(encoding="utf-8") as file:
+        published = {row["level"]: row for row in csv.DictReader(file) if row["bottom_um"]}
     assert len(published) == 11
     for level, row in published.items():
         layer = job.column_map.layers.index(level)

@@ -1,0 +1,97 @@
+"""The ensemble of draws, held against linear error propagation, and its habits."""
+
+from __future__ import annotations
+
+import numpy as np
+import pytest
+from uncertainties import ufloat
+
+from stackmill.ensemble.inputs import Inputs
+from stackmill.ensemble.run import run
+from stackmill.jobs import load_job
+from stackmill.planning.stops import stop_table
+
+LINEAR = """
+stack:
+  layers:
+    - {name: top, material: SiO2, thickness: 500 nm ± 4 %, coverage: planarised}
+    - {name: middle, material: W, thickness: 200 nm ± 6 %}
+    - {name: bottom, material: SiO2, thickness: 400 nm ± 5 %, coverage: planarised}
+    - {name: substrate, material: Si, thickness: 300 um}
+mill: {gas: argon, current_density: 0.5 mA/cm2, stage: {zero_error: ± 0 deg}}
+materials:
+  materials:
+    - {name: SiO2, measured_rate: {rate: 40 nm/min ± 1 %, energy: 1 keV, incidence: 45 deg, current_density: 0.5 mA/cm2}}
+    - {name: W, measured_rate: {rate: 20 nm/min ± 1 %, energy: 1 keV, incidence: 45 deg, current_density: 0.5 mA/cm2}}
+recipe:
+  steps: [{name: mill, energy: 1 keV, incidence: 45 deg, motion: rotating, for: 1 h}]
+"""
+
+
+@pytest.fixture(scope="module")
+def linear():
+    return load_job(LINEAR)
+
+
+@pytest.mark.independent
+def test_sd_equals_linear_propagation_where_the_time_is_nearly_linear(linear):
+    oxide, tungsten = ufloat(40.0, 0.4), ufloat(20.0, 0.2)
+    top, middle, bottom = ufloat(500, 20), ufloat(200, 12), ufloat(400, 20)
+    judge = 60 * ((top + bottom) / oxide + middle / tungsten)
+    ensemble = run(linear, seed=5)
+    times = ensemble.outcome.layer_s[0][0, 3]
+    assert float(ensemble.best_outcome.layer_s[0][0, 3, 0]) == pytest.approx(judge.nominal_value, rel=1e-3)
+    assert times.std() == pytest.approx(judge.std_dev, rel=0.02)
+
+
+@pytest.mark.closed_form
+def test_a_rate_measured_without_the_days_current_carries_the_currents_error_again():
+    same = load_job(LINEAR.replace("0.5 mA/cm2, stage", "0.5 mA/cm2 ± 6 %, stage"))
+    inputs = Inputs.of(same)
+    assert inputs.model.ln_rate_sd(0, "SiO2") == pytest.approx(np.hypot(0.01, 0.06), rel=1e-3)
+    text = LINEAR.replace("0.5 mA/cm2, stage", "0.5 mA/cm2 ± 6 %, stage")
+    today = load_job(text.replace("current_density: 0.5 mA/cm2}}", "current_density: 0.5 mA/cm2, same_day: yes}}"))
+    assert Inputs.of(today).model.ln_rate_sd(0, "SiO2") == pytest.approx(0.01, rel=1e-3)
+    assert Inputs.of(today).model.best_nm_per_s(0, "W", 0.0) * 60 == pytest.approx(20.0, rel=0.01)
+    # a rate of today says something of today's current, and so of materials that were not measured
+    assert Inputs.of(today).model.ln_rate_sd(0, "Si") < Inputs.of(same).model.ln_rate_sd(0, "Si")
+
+
+@pytest.mark.independent
+def test_drawn_rates_have_the_sd_that_the_belief_says(linear):
+    job = load_job("stacks/two-metal/job.yaml")
+    ensemble = run(job)
+    sample = ensemble.inputs.sample(ensemble.z)
+    for step in (3, 4, 5):
+        for name in ("SiO2 PECVD", "W", "AlCu", "TiN"):
+            drawn = np.log(sample.rate_nm_per_s(step, name)).std()
+            assert drawn == pytest.approx(ensemble.inputs.model.ln_rate_sd(step, name), rel=0.03)
+
+
+@pytest.mark.regression
+def test_the_same_answer_for_any_number_of_threads_and_another_for_another_seed(linear):
+    one, two, other = run(linear, jobs=1), run(linear, jobs=3), run(linear, seed=1)
+    np.testing.assert_array_equal(one.outcome.layer_s[0], two.outcome.layer_s[0])
+    assert (one.outcome.layer_s[0] != other.outcome.layer_s[0]).any()
+
+
+@pytest.mark.closed_form
+def test_regions_share_a_thickness_but_not_its_across_die_part():
+    text = LINEAR.replace("500 nm ± 4 %", '"500 nm ± 4 %, across die ± 3 %"').replace(
+        "mill: {gas", "  regions: [{name: here}, {name: there}]\nmill: {gas"
+    )
+    ensemble = run(load_job(text))
+    here, there = (deltas[0] for deltas in ensemble.inputs.sample(ensemble.z).thickness_deltas_nm())
+    assert np.corrcoef(here, there)[0, 1] == pytest.approx(16 / 25, abs=0.05)
+    assert here.std() == pytest.approx(25.0, rel=0.02)
+
+
+@pytest.mark.independent
+def test_variance_shares_of_a_nearly_linear_time(linear):
+    job = load_job(LINEAR + "goal: {layer: bottom, at: top}\n")
+    table = stop_table(job)
+    time = 60 * np.array([20.0 / 40, 12.0 / 20, 500 / 40 * 0.01, 200 / 20 * 0.01])
+    want = time**2 / np.sum(time**2)
+    shares = {s.name: s.share for s in table.shares}
+    names = ["thickness of top", "thickness of middle", "SiO2: rate", "W: rate"]
+    assert [shares[name] for name in names] == pytest.approx(list(want), abs=0.03)
