@@ -21,13 +21,14 @@ def check(
 
     Example: stackmill check job.yaml
     """
-    from stackmill.cli.output import gathered_warnings, paper, write
+    from stackmill.cli.output import gathered_warnings, paper, say_notes, write
     from stackmill.jobs import load_job, overrides
     from stackmill.report.describe import describe
 
     with gathered_warnings(quiet=quiet, strict=strict):
         job = load_job(file, overrides=overrides(set_ or []))
         text = describe(job, paper(output, ascii_only))
+    say_notes(job.notes, quiet=quiet)
     write(text, output, force=force)
     if not quiet:
         typer.echo("in order", err=True)

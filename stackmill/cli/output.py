@@ -6,7 +6,7 @@ import os
 import shutil
 import sys
 import warnings
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
 from pathlib import Path
 
@@ -61,6 +61,12 @@ def write(text: str, output: str, *, force: bool) -> None:
     except OSError as error:
         reason = (error.strerror or str(error)).lower()
         raise FileAccessError(f"cannot be written: {reason}", place=Place(output)) from error
+
+
+def say_notes(notes: Sequence[str], *, quiet: bool) -> None:
+    """What a job has to say besides its answer, on standard error."""
+    for note in () if quiet else notes:
+        sys.stderr.write(f"note: {note}\n")
 
 
 @contextmanager

@@ -50,7 +50,7 @@ def rates(
 
     Example: stackmill rates --material W --material Al --energy "1 keV" --incidence "45 deg"
     """
-    from stackmill.cli.output import chosen_format, gathered_warnings, paper, write
+    from stackmill.cli.output import chosen_format, gathered_warnings, paper, say_notes, write
     from stackmill.errors import UsageError
     from stackmill.jobs import bare_job, load_job, overrides
     from stackmill.planning.rates import rate_rows
@@ -75,6 +75,7 @@ def rates(
                 raise UsageError("--set goes with a file", cure="use the options for the setting")
             job = bare_job(material or [], gas=gas, **settings)
         rows = rate_rows(job)
+    say_notes(job.notes, quiet=quiet)
     if form is Format.json:
         text = report.as_json(job, rows, warned)
     elif form is Format.csv:

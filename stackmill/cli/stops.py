@@ -55,7 +55,7 @@ def stops(
 
     Example: stackmill stops job.yaml --confidence "95 %"
     """
-    from stackmill.cli.output import chosen_format, gathered_warnings, paper, write
+    from stackmill.cli.output import chosen_format, gathered_warnings, paper, say_notes, write
     from stackmill.jobs import load_job, overrides
     from stackmill.planning.stops import stop_table
     from stackmill.report import stops as report
@@ -73,6 +73,7 @@ def stops(
             confidence=confidence,
         )
         table = stop_table(job, seed=seed, jobs=jobs)
+    say_notes(job.notes, quiet=quiet)
     if form is Format.json:
         text = report.as_json(table, warned)
     elif form is Format.csv:

@@ -33,6 +33,14 @@ def variance_shares(ensemble: Ensemble, window: Window) -> tuple[Share, ...]:
         return ()
     away = z - z.mean(axis=1, keepdims=True)
     off = moment - moment.mean()
-    share = (away @ off) ** 2 / ((away**2).sum(axis=1) * (off @ off))
-    order = np.argsort(-share)
-    return tuple(Share(ensemble.inputs.names[k], float(share[k])) for k in order)
+    shares: dict[str, float] = {}
+    for name, share in zip(ensemble.inputs.names, (away @ off) ** 2 / ((away**2).sum(axis=1) * (off @ off)), strict=True):
+        group = _group(name, ensemble)
+        shares[group] = shares.get(group, 0.0) + float(share)
+    return tuple(Share(name, shares[name]) for name in sorted(shares, key=lambda name: -shares[name]))
+
+
+def _group(name: str, ensemble: Ensemble) -> str:
+    """A material's unknowns count together: a measured rate ties them, so that none moves alone."""
+    material, colon, _ = name.partition(": ")
+    return f"{material}: rate" if colon and material in ensemble.inputs.model.materials else name
