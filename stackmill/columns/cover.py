@@ -24,7 +24,7 @@ Key = NDArray[np.int64]
 CLASSES = 8
 STATES = CLASSES + 1  # of each source: its flat top, and the classes of the slope from it
 _SHELLS = 16
-_SHELL_NODES = 4
+_SHELL_NODES = 6
 _HIGHER_NM = 1e-9
 
 

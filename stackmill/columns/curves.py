@@ -127,18 +127,42 @@ def circles(centres: Array, radius: float) -> Curves:
 
 
 def cut(curves: Curves, window: tuple[float, float, float, float]) -> Curves:
-    """Cut every curve wherever it meets another, and keep what lies in the window (x0, x1, y0, y1)."""
+    """Cut every curve wherever it meets another, and keep what lies in the window (x0, x1, y0, y1).
+
+    Curves that only touch are cut where one of them ends.
+    """
     x0, x1, y0, y1 = window
     v = _clipped(curves.upright, x0, x1, y0, y1)
     h = _clipped(curves.level, y0, y1, x0, x1)
     a = curves.arcs
-    upright = _cut_straight(v, h, _upright_meets_arcs(v[:, 0], a))
-    level = _cut_straight(h, v, _level_meets_arcs(h[:, 0], a))
-    arcs = _cut_arcs(a, v, h, window)
+    ends = Curves(v, h, a).ends()
+    upright = _cut_straight(v, h, _upright_meets_arcs(v[:, 0], a), ends)
+    level = _cut_straight(h, v, _level_meets_arcs(h[:, 0], a), ends[:, ::-1])
+    arcs = _cut_arcs(a, v, h, ends, window)
     cx, cy, r, start, stop = arcs.T
     middle = (start + stop) / 2
     x, y = cx + r * np.cos(middle), cy + r * np.sin(middle)
     return Curves(upright, level, arcs[(x >= x0) & (x <= x1) & (y >= y0) & (y <= y1)])
+
+
+def chopped(curves: Curves, longest: float) -> Curves:
+    """The curves in pieces that are no longer than that."""
+    lengths = curves.arcs[:, 2] * (curves.arcs[:, 4] - curves.arcs[:, 3])
+    return Curves(
+        _chop(curves.upright, curves.upright[:, 2] - curves.upright[:, 1], longest),
+        _chop(curves.level, curves.level[:, 2] - curves.level[:, 1], longest),
+        _chop(curves.arcs, lengths, longest),
+    )
+
+
+def _chop(rows: Array, lengths: Array, longest: float) -> Array:
+    counts = np.maximum(np.ceil(lengths / longest), 1).astype(np.intp)
+    which = np.repeat(np.arange(len(rows)), counts)
+    nth = np.arange(len(which)) - np.repeat(np.cumsum(counts) - counts, counts)
+    chopped_rows = rows[which]
+    start, size = chopped_rows[:, -2].copy(), (chopped_rows[:, -1] - chopped_rows[:, -2]) / counts[which]
+    chopped_rows[:, -2], chopped_rows[:, -1] = start + nth * size, start + (nth + 1) * size
+    return chopped_rows
 
 
 def merged(pieces: Curves, sides: Array) -> tuple[Curves, Array]:
@@ -228,18 +252,21 @@ def _clipped(straight: Array, low: float, high: float, start: float, stop: float
     return np.column_stack([inside[:, 0], ends])[ends[:, 1] - ends[:, 0] > SHORTEST_NM]
 
 
-def _cut_straight(lines: Array, crossing: Array, on_arcs: Array) -> Array:
-    """Cut upright lines at level ones and where they meet arcs (or the other way round)."""
+def _cut_straight(lines: Array, crossing: Array, on_arcs: Array, ends: Array) -> Array:
+    """Cut upright lines at level ones, where they meet arcs, and at ends (N, 2) of curves that lie on them."""
     if not len(lines):
         return lines
     meets = (lines[:, :1] > crossing[:, 1] - SIDE_NM) & (lines[:, :1] < crossing[:, 2] + SIDE_NM)
     stops = np.where(meets, crossing[:, 0], np.nan)
-    stops = np.concatenate([stops, on_arcs.reshape(len(lines), -1)], axis=1)
+    touches = np.where(np.abs(ends[:, 0] - lines[:, :1]) < SIDE_NM, ends[:, 1], np.nan)
+    stops = np.concatenate([stops, on_arcs.reshape(len(lines), -1), touches], axis=1)
     which, start, stop = _pieces(stops, lines[:, 1], lines[:, 2], np.full(len(lines), SHORTEST_NM))
     return np.column_stack([lines[which, 0], start, stop])
 
 
-def _cut_arcs(arcs: Array, upright: Array, level: Array, window: tuple[float, float, float, float]) -> Array:
+def _cut_arcs(
+    arcs: Array, upright: Array, level: Array, ends: Array, window: tuple[float, float, float, float]
+) -> Array:
     if not len(arcs):
         return arcs
     x0, x1, y0, y1 = window
@@ -251,6 +278,7 @@ def _cut_arcs(arcs: Array, upright: Array, level: Array, window: tuple[float, fl
         np.stack([np.broadcast_to(upright[:, 0, None, None], y.shape), y], axis=-1).swapaxes(0, 1),
         np.stack([x, np.broadcast_to(level[:, 0, None, None], x.shape)], axis=-1).swapaxes(0, 1),
         _arcs_meet(arcs),
+        _touching(arcs, ends),
     ]
     away = np.concatenate([p.reshape(len(arcs), -1, 2) for p in points], axis=1) - arcs[:, None, :2]
     angle = (np.arctan2(away[..., 1], away[..., 0]) - arcs[:, 3:4]) % TURN
@@ -258,6 +286,12 @@ def _cut_arcs(arcs: Array, upright: Array, level: Array, window: tuple[float, fl
     which, start, stop = _pieces(angle, np.zeros(len(arcs)), span, SHORTEST_NM / arcs[:, 2])
     first = arcs[which, 3]
     return np.column_stack([arcs[which, :3], first + start, first + stop])
+
+
+def _touching(arcs: Array, ends: Array) -> Array:
+    """Those of the ends (N, 2) of curves that lie on the circle of each arc (A, N, 2), else nan."""
+    away = np.hypot(ends[:, 0] - arcs[:, :1], ends[:, 1] - arcs[:, 1:2])
+    return np.where(np.abs(away - arcs[:, 2:3])[..., None] < SIDE_NM, ends, np.nan)
 
 
 def _within(stops: Array, lines: Array) -> Array:

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from stackmill.columns.curves import SIDE_NM, Curves, periodic_distances
+from stackmill.columns.curves import SIDE_NM, Curves, chopped, periodic_distances
 from stackmill.columns.plan import RegionPlan
 from stackmill.columns.scan import Spans
 
@@ -17,6 +17,7 @@ Mask = NDArray[np.bool_]
 
 _STARTS = 5  # places of each kind in a column from which its centre is looked for
 _ROUNDS = 12
+_PIECES = 100  # pieces along the cell, where borders may end at places that are not known exactly
 _AT_ONCE = 1_000_000  # distances held in memory together
 _POINTS = np.pi / 4 * np.arange(8)
 _COMPASS = np.stack([np.cos(_POINTS), np.sin(_POINTS)], axis=1)
@@ -49,6 +50,8 @@ def neighbourhood(plan: RegionPlan, pieces: Curves, spans: Spans, of_span: Index
     if columns == 1:
         middle = np.array([[plan.cell[0] / 2, plan.cell[1] / 2]])
         return Neighbourhood(middle, np.full((1, 1), np.inf))
+    if plan.competing:
+        pieces = chopped(pieces, max(plan.cell) / _PIECES)
     sides = _sides(pieces, plan)
     real = sides[:, 0] != sides[:, 1]
     borders, sides = pieces.chosen(real), sides[real]

@@ -71,16 +71,17 @@ class Sample:
             regions.append(deltas)
         return regions
 
-    def rate_nm_per_s(self, step: int, material: str) -> Array:
-        """Milling rate (D,) of a material in a step of the recipe."""
-        what = self.inputs.job.recipe.steps[step]
+    def rate_nm_per_s(self, step: int) -> Array:
+        """Milling rates (M, D) of the column map's materials in a step of the recipe."""
+        job = self.inputs.job
+        what = job.recipe.steps[step]
         if isinstance(what, Process):
-            return self._process_rate(what, material)
+            return np.stack([self._process_rate(what, name) for name in job.column_map.materials])
         charged = self.inputs.job.mill.doubly_charged
         share = np.full(self.draws, charged.value)
         if charged.sd:
             share = np.clip(share + charged.sd * self.rows["doubly charged share"], 0.0, 1.0)
-        return self.inputs.model.rate_nm_per_s(step, material, parameters=self.parameters, doubly_charged=share)
+        return self.inputs.model.rate_nm_per_s(step, parameters=self.parameters, doubly_charged=share)
 
     def _process_rate(self, step: Process, material: str) -> Array:
         name = material if material in step.rates else OTHER

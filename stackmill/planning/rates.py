@@ -39,8 +39,9 @@ def rate_rows(job: Job) -> list[RateRow]:
     for i, step in enumerate(job.recipe.steps):
         if not isinstance(step, Beam):
             continue
+        best, sd = model.best_nm_per_s(i, job.mill.doubly_charged.value), model.ln_rate_sd(i)
         current = (step.current_density or job.mill.current_density).value
-        for name, material in job.milled_materials.items():
+        for m, (name, material) in enumerate(job.milled_materials.items()):
             shape = angular_shape(material, energy_ev=step.energy, gas=job.mill.gas)
             at_angle = float(shape.ratio(np.radians(step.incidence)))
             rows.append(
@@ -52,8 +53,8 @@ def rate_rows(job: Job) -> list[RateRow]:
                     current_density_ma_per_cm2=current,
                     yield_atoms_per_ion=at_angle
                     * float(normal_yield(material, energy_ev=step.energy, gas=job.mill.gas)),
-                    rate_nm_per_min=60.0 * model.best_nm_per_s(i, name, job.mill.doubly_charged.value),
-                    rate_rel_sd=model.ln_rate_sd(i, name),
+                    rate_nm_per_min=60.0 * float(best[m]),
+                    rate_rel_sd=float(sd[m]),
                     source=basis(material),
                 )
             )

@@ -93,22 +93,21 @@ def _flat_until(ensemble: Ensemble) -> list[Array]:
 def _slope_speeds(ensemble: Ensemble) -> list[SlopeSpeeds | None]:
     """One for each step of the best fall, the last beam's once more for going on after the recipe's end."""
     job, best = ensemble.inputs.job, ensemble.inputs.best()
+    names = job.column_map.materials
+    known: dict[tuple[object, ...], SlopeSpeeds] = {}
     speeds: list[SlopeSpeeds | None] = []
     for i, step in enumerate(job.recipe.steps):
         if not isinstance(step, Beam):
             speeds.append(None)
             continue
-        names = job.column_map.materials
-        shapes = {n: angular_shape(job.materials[n], energy_ev=step.energy, gas=job.mill.gas) for n in names}
-        flat = {name: float(best.rate_nm_per_s(i, name)[0]) for name in names}
-        speeds.append(
-            SlopeSpeeds(
-                slope_grid(),
-                speeds_of(shapes, flat, step),
-                shadow_multiple(step, job.mill.divergence),
-                any_slope=step.motion.kind != "rotating",
-            )
-        )
+        setting = (step.energy, step.incidence, step.motion, step.current_density)
+        if setting not in known:
+            shapes = {n: angular_shape(job.materials[n], energy_ev=step.energy, gas=job.mill.gas) for n in names}
+            flat = dict(zip(names, best.rate_nm_per_s(i)[:, 0].tolist(), strict=True))
+            shadow = shadow_multiple(step, job.mill.divergence)
+            table = speeds_of(shapes, flat, step)
+            known[setting] = SlopeSpeeds(slope_grid(), table, shadow, any_slope=step.motion.kind != "rotating")
+        speeds.append(known[setting])
     beams = [s for s in speeds if s is not None]
     return speeds + ([beams[-1]] if beams else [None]) * (len(ensemble.best.spans) - len(speeds))
 

@@ -7,7 +7,6 @@ stopwatch is started again there and what was uncertain before no longer matters
 
 from __future__ import annotations
 
-from collections import Counter
 from collections.abc import Sequence
 from dataclasses import dataclass
 
@@ -196,14 +195,16 @@ def _lost_by(outcome: Outcome, weights: Array) -> tuple[tuple[int, int] | None, 
 
 
 def _most(choices: NDArray[np.intp], weights: Array) -> int:
-    shares: Counter[int] = Counter()
-    for choice, weight in zip(choices.tolist(), weights.tolist(), strict=True):
-        shares[choice] += weight
-    return max(sorted(shares), key=lambda choice: shares[choice])
+    return int(np.argmax(np.bincount(choices, weights)))
 
 
 def quantiles(times: Array, weights: Array, shares: Sequence[float]) -> list[Array]:
     """For rows of draws (..., D): the least time at or under which lies each share of the weight (...)."""
+    if (weights == weights[0]).all():
+        # Equal draws need no full sort: the k-th of them is the answer.
+        ranks = [max(int(np.ceil(share * len(weights) * (1.0 - 1e-12))) - 1, 0) for share in shares]
+        parted = np.partition(times, ranks, axis=-1)
+        return [parted[..., rank] for rank in ranks]
     order = np.argsort(times, axis=-1)
     total = np.cumsum(weights[order], axis=-1)
     found = []

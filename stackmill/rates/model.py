@@ -32,32 +32,34 @@ _PER_MATERIAL = ("rate", "energy", "angle")
 
 
 @dataclass(frozen=True)
-class AngleCurve:
-    """ln of a milling rate (nm/s) near one setting of the dial, as a Chebyshev series in the zero error.
-
-    coefficients (9,); reach_deg: the series holds for zero errors up to this, and is clipped there.
-    """
-
-    coefficients: Array
-    reach_deg: float
-
-    def rate_nm_per_s(self, zero_error_deg: Array) -> Array:
-        """Milling rate (D,) in nm/s at zero errors (D,) in degrees."""
-        x = np.clip(zero_error_deg / self.reach_deg, -1.0, 1.0)
-        return np.exp(np.polynomial.chebyshev.chebval(x, self.coefficients))
-
-
-@dataclass(frozen=True)
 class BeamRates:
-    """The rate curves of one beam step.
+    """The rate curves of one beam step, near its setting of the dial, for all M materials.
 
-    single, double: material name -> curve, as if all current were carried by singly charged ions of the
-    step's energy and of twice that energy; terms: material name -> how ln rate moves with its unknowns.
+    single, double (M, 9): ln rate (nm/s) as Chebyshev series in the zero error, as if all current were carried
+    by singly charged ions of the step's energy, and of twice that energy; reach_deg: the series hold for zero
+    errors up to this, and are clipped there; terms (M, 3): how ln rate moves with each material's unknowns.
     """
 
-    single: Mapping[str, AngleCurve]
-    double: Mapping[str, AngleCurve]
-    terms: Mapping[str, tuple[float, float, float]]
+    single: Array
+    double: Array
+    reach_deg: float
+    terms: Array
+
+    def ln_single(self, zero_error_deg: Array) -> Array:
+        """Ln rate (M, D), nm/s, of singly charged ions at zero errors (D,) in degrees."""
+        return self._series(self.single, zero_error_deg)
+
+    def rate_nm_per_s(self, zero_error_deg: Array, doubly_charged: Array) -> Array:
+        """Milling rate (M, D) in nm/s at zero errors (D,) in degrees, for charge shares (D,)."""
+        single = np.exp(self._series(self.single, zero_error_deg))
+        double = np.exp(self._series(self.double, zero_error_deg))
+        rate: Array = (1.0 - doubly_charged) * single + 0.5 * doubly_charged * double
+        return rate
+
+    def _series(self, coefficients: Array, zero_error_deg: Array) -> Array:
+        x = np.clip(zero_error_deg / self.reach_deg, -1.0, 1.0)
+        series: Array = coefficients @ np.polynomial.chebyshev.chebvander(x, _NODES - 1).T
+        return series
 
 
 @dataclass(frozen=True)
@@ -73,32 +75,37 @@ class RateModel:
     belief: RateBelief
     evidence: tuple[RateEvidence, ...]
 
-    def rate_nm_per_s(self, step: int, material: str, *, parameters: Array, doubly_charged: Array) -> Array:
-        """Milling rate (D,) in nm/s of a material in a beam step, for parameters (P, D) and charge shares (D,)."""
-        beam = self.steps[step]
-        assert beam is not None
-        single = beam.single[material].rate_nm_per_s(parameters[1])
-        double = beam.double[material].rate_nm_per_s(parameters[1])
-        k = 2 + len(_PER_MATERIAL) * self.materials.index(material)
-        ln_factor = parameters[0] + np.array(beam.terms[material]) @ parameters[k : k + 3]
-        rate: Array = ((1.0 - doubly_charged) * single + 0.5 * doubly_charged * double) * np.exp(ln_factor)
+    def rate_nm_per_s(self, step: int, *, parameters: Array, doubly_charged: Array) -> Array:
+        """Milling rates (M, D) in nm/s in a beam step, for parameters (P, D) and charge shares (D,)."""
+        beam = self.beam(step)
+        each = parameters[2:].reshape(len(self.materials), len(_PER_MATERIAL), -1)
+        ln_factor = parameters[0] + np.einsum("mk,mkd->md", beam.terms, each)
+        rate: Array = beam.rate_nm_per_s(parameters[1], doubly_charged) * np.exp(ln_factor)
         return rate
 
-    def best_nm_per_s(self, step: int, material: str, doubly_charged: float) -> float:
-        """The best value of a material's milling rate in a beam step, in nm/s."""
-        best = self.belief.mean[:, None]
-        return float(self.rate_nm_per_s(step, material, parameters=best, doubly_charged=np.array([doubly_charged]))[0])
-
-    def ln_rate_sd(self, step: int, material: str) -> float:
-        """Sd of ln rate of a material in a beam step, everything that is believed of the mill included."""
+    def beam(self, step: int) -> BeamRates:
+        """The curves of a step that mills with the beam."""
         beam = self.steps[step]
         assert beam is not None
-        zero = self.belief.mean[1] + np.array([-0.5, 0.5])
-        k = 2 + len(_PER_MATERIAL) * self.materials.index(material)
-        design = np.zeros(len(self.belief.names))
-        design[:2] = 1.0, float(np.diff(np.log(beam.single[material].rate_nm_per_s(zero)))[0])
-        design[k : k + 3] = beam.terms[material]
-        return float(np.sqrt(design @ self.belief.cov @ design))
+        return beam
+
+    def best_nm_per_s(self, step: int, doubly_charged: float) -> Array:
+        """The best values of the milling rates (M,) in a beam step, in nm/s."""
+        best = self.belief.mean[:, None]
+        return self.rate_nm_per_s(step, parameters=best, doubly_charged=np.array([doubly_charged]))[:, 0]
+
+    def ln_rate_sd(self, step: int) -> Array:
+        """Sd of ln rate (M,) in a beam step, everything that is believed of the mill included."""
+        beam = self.beam(step)
+        around = beam.ln_single(self.belief.mean[1] + np.array([-0.5, 0.5]))
+        design = np.zeros((len(self.materials), len(self.belief.names)))
+        design[:, 0] = 1.0
+        design[:, 1] = around[:, 1] - around[:, 0]
+        for m, terms in enumerate(beam.terms):
+            k = 2 + len(_PER_MATERIAL) * m
+            design[m, k : k + len(_PER_MATERIAL)] = terms
+        sd: Array = np.sqrt(np.einsum("mp,pq,mq->m", design, self.belief.cov, design))
+        return sd
 
 
 def rate_model(mill: Mill, steps: Sequence[object], materials: Mapping[str, Material]) -> RateModel:
@@ -149,24 +156,20 @@ def _rate_sd(material: Material, gas: str) -> float:
 
 
 def _beam_rates(mill: Mill, step: Beam, materials: Mapping[str, Material]) -> BeamRates:
-    current = (step.current_density or mill.current_density).value
-    curves = [
-        {name: _curve(mill, step, material, energy_ev, current) for name, material in materials.items()}
-        for energy_ev in (step.energy, 2.0 * step.energy)
-    ]
-    terms = {name: _terms(material, step.energy, step.incidence, mill.gas) for name, material in materials.items()}
-    return BeamRates(curves[0], curves[1], terms)
-
-
-def _curve(mill: Mill, step: Beam, material: Material, energy_ev: float, current: float) -> AngleCurve:
     reach = max(_ZERO_ERROR_REACH_SD * mill.stage.zero_error.sd, _LEAST_REACH_DEG)
     angle = np.pi * (np.arange(_NODES) + 0.5) / _NODES
     incidence_deg = np.clip(np.abs(step.incidence + reach * np.cos(angle)), 0.0, _STEEPEST_DEG)
-    rate = _law_rate(mill, material, energy_ev, incidence_deg, current, step.motion.half_angle)
+    current = (step.current_density or mill.current_density).value
     # The Chebyshev transform, written out: chebfit would solve a least-squares problem for the same numbers.
     transform = np.cos(np.outer(np.arange(_NODES), angle)) * (2.0 / _NODES)
     transform[0] *= 0.5
-    return AngleCurve(transform @ np.log(rate), reach)
+    single, double = (
+        np.log([_law_rate(mill, m, energy_ev, incidence_deg, current, step.motion.half_angle) for m in materials.values()])
+        @ transform.T
+        for energy_ev in (step.energy, 2.0 * step.energy)
+    )
+    terms = np.array([_terms(m, step.energy, step.incidence, mill.gas) for m in materials.values()])
+    return BeamRates(single, double, reach, terms)
 
 
 def _law_rate(

