@@ -1,4 +1,8 @@
-"""How far columns are from each other in plan: each one's centre, and from there to all others."""
+"""How far columns are from each other in plan: each one's centre, and from there to all others.
+
+Distances are exact to rounding but where slopes from several heights meet: there borders are known by points, and
+distances to about a hundredth of the cell.
+"""
 
 from __future__ import annotations
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from stackmill.planning.stops import StopTable
 from stackmill.planning.windows import Window
+from stackmill.report.words import percent
 from stackmill.units import clock, format_time
 
 
@@ -15,18 +16,23 @@ def window_in_words(table: StopTable, window: Window) -> list[str]:
         which = "Next look" if window.leg else "First look"
         lines.append(f"  {which} no later than {_at(table, window, window.first_look_s)}:")
         lines[-1] += " until then the chance of loss is under 5 %."
-    lines.append(f"  Left standing at the stop: {100 * window.left_standing:.2g} % of the goal's area.")
-    lines += _planned_end(table, window)
+    if window.best_chance > 0.0:
+        lines.append(f"  Left standing at the stop: {percent(window.left_standing)} of the goal's area.")
+    if window.stop_s is not None:
+        lines += _planned_end(table, window.stop_s)
     if table.provisional:
         lines.append("  PROVISIONAL: a facet or a shadow gets to the centre of a deciding column before; see *.")
     return lines
 
 
 def _no_window(table: StopTable, window: Window) -> list[str]:
-    stop = _at(table, window, window.best_stop_s)
-    sure = f"{100 * window.confidence:.3g} %"
+    verdict = "NO STOP SUCCEEDS in any draw: by the time the goal is exposed, something is lost."
+    if window.best_chance > 0.0:
+        stop = _at(table, window, window.best_stop_s)
+        verdict = f"NO SAFE WINDOW at {percent(window.confidence)}: the best stop, {stop}, has a chance of"
+        verdict += f" {window.best_chance:.2f}."
     return [
-        f"NO SAFE WINDOW at {sure}: the best stop, {stop}, has a chance of {window.best_chance:.2f}.",
+        verdict,
         f"  In conflict: {column_name(table, *window.exposed_by)} is exposed last,"
         f" {lost_by(table, window) or 'nothing'} is lost first.",
     ]
@@ -35,7 +41,7 @@ def _no_window(table: StopTable, window: Window) -> list[str]:
 def _safe_window(table: StopTable, window: Window) -> list[str]:
     assert window.exposed_s is not None
     assert window.stop_s is not None
-    sure = f"{100 * window.confidence:.3g} %"
+    sure = percent(window.confidence)
     lines = [f"STOP AT {_at(table, window, window.stop_s)}: chance {window.chance:.2f}."]
     if window.lost_s is None:
         lines.append(f"  Window at {sure}: from {clock(window.exposed_s)} on; nothing is lost after it.")
@@ -56,15 +62,15 @@ def _at(table: StopTable, window: Window, time_s: float) -> str:
     return f"{clock(time_s)} ({since} after {leg_name(table, window.leg)!r} is stopped)"
 
 
-def _planned_end(table: StopTable, window: Window) -> list[str]:
+def _planned_end(table: StopTable, stop_s: float) -> list[str]:
     """What the stop means for the recipe: steps left unused, or staying beyond its end."""
     recipe = table.ensemble.inputs.job.recipe
     spans = table.ensemble.best.spans[: len(recipe.steps)]
-    unused = [span.name for span in spans if span.start_s[0] >= window.best_stop_s and span.length_s[0] > 0.0]
+    unused = [span.name for span in spans if span.start_s[0] >= stop_s and span.length_s[0] > 0.0]
     if unused:
         return [f"  The stop leaves unused: {', '.join(unused)}."]
     end = float(spans[-1].end_s[0])
-    if window.stop_s is not None and window.stop_s > end * (1 + 1e-9):
+    if stop_s > end * (1 + 1e-9):
         return [f"  The recipe itself ends at {clock(end)}: stay on in its last step."]
     return []
 

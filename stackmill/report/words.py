@@ -59,6 +59,11 @@ def _target(target: Target | Seen) -> str:
     return target.layer if target.feature is None else f"{target.layer} / {target.feature}"
 
 
+def percent(share: float) -> str:
+    """A share as people read it: one decimal at most."""
+    return f"{100.0 * share:.1f}".removesuffix(".0") + " %"
+
+
 def moment(seconds: float | None) -> str:
     """A time on the clock; `never` for None."""
     return "never" if seconds is None else clock(seconds)

@@ -150,7 +150,7 @@ def mirrored(shape):
 
 
 @pytest.mark.independent
-@settings(max_examples=40, deadline=None)
+@settings(max_examples=25, deadline=None)
 @given(stacks())
 def test_areas_add_up_segments_chain_and_the_grid_agrees(stack):
     if not sound(stack):

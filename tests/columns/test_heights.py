@@ -35,7 +35,8 @@ def test_films_are_carved_inside_a_feature_bottom_beats_sides_beats_top():
     features:
       - {name: bar, material: Cu, line: {along: y, centre: 500 nm, width: 400 nm},
          cap: {material: Co, thickness: 20 nm},
-         base: {material: TiN, thickness: 30 nm}, liner: [{material: TaN, thickness: 10 nm}, {material: Ta, thickness: 15 nm}]}
+         base: {material: TiN, thickness: 30 nm},
+         liner: [{material: TaN, thickness: 10 nm}, {material: Ta, thickness: 15 nm}]}
 """,
         cell="{x: 1 um, y: 1 um}",
     )
