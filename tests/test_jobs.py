@@ -138,8 +138,7 @@ def test_options_are_checked_like_files() -> None:
     assert [error.headline() for error in refused.value.errors] == [
         "--confidence: error: 1.5 has no unit (write 1.5 %)",
         "--energy: error: 1 has no unit (write 1 keV)",
-        "--incidence: error: 95 deg does not hit the surface"
-        " (0 deg is straight down, and it must stay below 90 deg)",
+        "--incidence: error: 95 deg does not hit the surface (0 deg is straight down, and it must stay below 90 deg)",
         "--motion: error: 'dancing' is no motion (write rotating, still or rocking ± 20 deg)",
     ]
 
@@ -212,9 +211,7 @@ def test_override_texts() -> None:
 
 
 def test_complaints_of_all_files_at_once(folder: Path) -> None:
-    (folder / "stack.yaml").write_text(
-        STACK.replace("500 nm", "500").replace("AlCu", "AlCuu"), encoding="utf-8"
-    )
+    (folder / "stack.yaml").write_text(STACK.replace("500 nm", "500").replace("AlCu", "AlCuu"), encoding="utf-8")
     (folder / "mill.yaml").write_text(MILL.replace("argon", "agron"), encoding="utf-8")
     (folder / "recipe.yaml").write_text(RECIPE.replace("to: oxide", "to: oxyde"), encoding="utf-8")
     (folder / "job.yaml").write_text(JOB.replace("layer: oxide", "layer: oxid"), encoding="utf-8")
@@ -235,9 +232,7 @@ def refusals(stack: str, job: str = "", *, recipe: str = "") -> list[str]:
         "stack": stack,
         "recipe": recipe or "steps: [{energy: 1 keV, incidence: 0 deg, motion: still, for: 1 min}]",
     }
-    text = "".join(
-        f"{key}:\n" + "".join(f"  {line}\n" for line in block.splitlines()) for key, block in blocks.items()
-    )
+    text = "".join(f"{key}:\n" + "".join(f"  {line}\n" for line in block.splitlines()) for key, block in blocks.items())
     with pytest.raises(InputErrors) as refused:
         load_job(text + job)
     return [error.what for error in refused.value.errors]
@@ -262,9 +257,7 @@ def test_goals_that_no_region_has(regions: str, goal: str, complaints: list[str]
 
 def test_a_step_may_end_on_a_layer_that_is_absent(folder: Path) -> None:
     """Reaching an absent layer is reaching the next present one below."""
-    (folder / "stack.yaml").write_text(
-        STACK.replace("features_of: [metal 2]", "layers: [metal 2]"), encoding="utf-8"
-    )
+    (folder / "stack.yaml").write_text(STACK.replace("features_of: [metal 2]", "layers: [metal 2]"), encoding="utf-8")
     (folder / "recipe.yaml").write_text(
         RECIPE.replace("to: oxide", "to: {layer: metal 2, in: field}"), encoding="utf-8"
     )
@@ -343,9 +336,7 @@ def test_in_broken_files_a_labs_materials_are_not_taken_for_unknown(folder: Path
 
 def test_a_labs_own_materials(folder: Path) -> None:
     (folder / "lab.yaml").write_text("materials: [{name: my oxide, like: SiO2}]", encoding="utf-8")
-    (folder / "stack.yaml").write_text(
-        STACK.replace("material: SiO2,", "material: my oxide,"), encoding="utf-8"
-    )
+    (folder / "stack.yaml").write_text(STACK.replace("material: SiO2,", "material: my oxide,"), encoding="utf-8")
     (folder / "job.yaml").write_text(JOB + "materials: lab.yaml\n", encoding="utf-8")
     assert "my oxide" in load_job(folder / "job.yaml").milled_materials
     (folder / "job.yaml").write_text(JOB + "materials: [lab.yaml]\n", encoding="utf-8")
@@ -366,22 +357,15 @@ def test_a_missing_file_is_no_input_error(tmp_path: Path) -> None:
     (tmp_path / "job.yaml").write_text("stack: x\n", encoding="utf-8")
     with pytest.raises(FileAccessError) as refused:
         load_job(tmp_path / "jop.yaml")
-    assert (
-        refused.value.headline()
-        == f"{tmp_path}/jop.yaml: error: there is no such file (did you mean job.yaml?)"
-    )
+    assert refused.value.headline() == f"{tmp_path}/jop.yaml: error: there is no such file (did you mean job.yaml?)"
     assert refused.value.exit_code == 4
     with pytest.raises(FileAccessError, match="a folder"):
         load_job(tmp_path)
 
 
-@pytest.mark.parametrize(
-    ("text", "kind"), [(MILL, "mill"), (RECIPE, "recipe"), ("materials: []\n", "materials")]
-)
+@pytest.mark.parametrize(("text", "kind"), [(MILL, "mill"), (RECIPE, "recipe"), ("materials: []\n", "materials")])
 def test_other_kinds_of_file_need_a_job(text: str, kind: str) -> None:
-    with pytest.raises(
-        InputErrors, match=f"this is a {kind} file .give a job file that names it as '{kind}:'"
-    ):
+    with pytest.raises(InputErrors, match=f"this is a {kind} file .give a job file that names it as '{kind}:'"):
         load_job(text)
 
 
@@ -397,9 +381,7 @@ def test_step_errors_for_timing_have_their_place(folder: Path) -> None:
 
 def test_notes_tell_of_materials_the_stack_lacks(folder: Path) -> None:
     (folder / "recipe.yaml").write_text(RECIPE.replace("other: 0", "W: 5 nm/min, other: 0"), encoding="utf-8")
-    assert load_job(folder / "job.yaml").notes == (
-        "step 'etch' also names W, which this stack does not have",
-    )
+    assert load_job(folder / "job.yaml").notes == ("step 'etch' also names W, which this stack does not have",)
 
 
 def test_steps_keep_their_order_and_kind(folder: Path) -> None:

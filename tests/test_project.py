@@ -33,9 +33,7 @@ def test_the_top_level_is_what_was_agreed():
         "tests",
         "docs",
     }
-    tracked = subprocess.run(
-        ["git", "ls-files"], cwd=ROOT, capture_output=True, text=True, check=True
-    ).stdout.split()
+    tracked = subprocess.run(["git", "ls-files"], cwd=ROOT, capture_output=True, text=True, check=True).stdout.split()
     top = {path.split("/")[0] for path in tracked}
     assert {name for name in top if not name.startswith(".")} <= allowed
 
@@ -65,12 +63,9 @@ def test_every_test_of_a_number_says_what_it_is_worth():
         }
         for node in ast.walk(tree):
             if isinstance(node, ast.FunctionDef) and node.name.startswith("test_") and not whole:
-                labels = {
-                    a.attr for d in node.decorator_list for a in ast.walk(d) if isinstance(a, ast.Attribute)
-                }
+                labels = {a.attr for d in node.decorator_list for a in ast.walk(d) if isinstance(a, ast.Attribute)}
                 tests_numbers = any(
-                    isinstance(n, ast.Attribute)
-                    and n.attr in ("approx", "assert_allclose", "assert_array_equal")
+                    isinstance(n, ast.Attribute) and n.attr in ("approx", "assert_allclose", "assert_array_equal")
                     for n in ast.walk(node)
                 )
                 if tests_numbers and not labels & LABELS:

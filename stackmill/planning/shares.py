@@ -34,7 +34,9 @@ def variance_shares(ensemble: Ensemble, window: Window) -> tuple[Share, ...]:
     away = z - z.mean(axis=1, keepdims=True)
     off = moment - moment.mean()
     shares: dict[str, float] = {}
-    for name, share in zip(ensemble.inputs.names, (away @ off) ** 2 / ((away**2).sum(axis=1) * (off @ off)), strict=True):
+    for name, share in zip(
+        ensemble.inputs.names, (away @ off) ** 2 / ((away**2).sum(axis=1) * (off @ off)), strict=True
+    ):
         group = _group(name, ensemble)
         shares[group] = shares.get(group, 0.0) + float(share)
     return tuple(Share(name, shares[name]) for name in sorted(shares, key=lambda name: -shares[name]))

@@ -13,6 +13,7 @@ from stackmill.jobs import Job
 from stackmill.planning.shares import Share, variance_shares
 from stackmill.planning.windows import Window, find_window, quantiles
 from stackmill.rates.facets import shadow_multiple, slope_grid, speeds_of
+from stackmill.rates.model import setting
 from stackmill.rates.yields import angular_shape
 from stackmill.timing.flatness import SlopeSpeeds, flat_until
 
@@ -100,14 +101,13 @@ def _slope_speeds(ensemble: Ensemble) -> list[SlopeSpeeds | None]:
         if not isinstance(step, Beam):
             speeds.append(None)
             continue
-        setting = (step.energy, step.incidence, step.motion, step.current_density)
-        if setting not in known:
+        if setting(step) not in known:
             shapes = {n: angular_shape(job.materials[n], energy_ev=step.energy, gas=job.mill.gas) for n in names}
             flat = dict(zip(names, best.rate_nm_per_s(i)[:, 0].tolist(), strict=True))
             shadow = shadow_multiple(step, job.mill.divergence)
             table = speeds_of(shapes, flat, step)
-            known[setting] = SlopeSpeeds(slope_grid(), table, shadow, any_slope=step.motion.kind != "rotating")
-        speeds.append(known[setting])
+            known[setting(step)] = SlopeSpeeds(slope_grid(), table, shadow, any_slope=step.motion.kind != "rotating")
+        speeds.append(known[setting(step)])
     beams = [s for s in speeds if s is not None]
     return speeds + ([beams[-1]] if beams else [None]) * (len(ensemble.best.spans) - len(speeds))
 
@@ -117,8 +117,7 @@ def _rows(ensemble: Ensemble, flat: list[Array], confidence: float) -> list[Reac
     rows = []
     for r, region in enumerate(job.column_map.regions):
         best = ensemble.best_outcome.layer_s[r][..., 0]
-        leg, times = _from_leg(ensemble, ensemble.outcome.layer_s[r], best)
-        early, late = quantiles(times, ensemble.weights, [(1 - confidence) / 2, (1 + confidence) / 2])
+        leg, early, late = _bounds(ensemble, ensemble.outcome.layer_s[r], best, confidence)
         highest = float(region.top_nm.max())
         for c in range(len(region.area)):
             count = int(region.segments[c])
@@ -148,12 +147,22 @@ def _rows(ensemble: Ensemble, flat: list[Array], confidence: float) -> list[Reac
     return rows
 
 
-def _from_leg(ensemble: Ensemble, times: Array, best: Array) -> tuple[NDArray[np.intp], Array]:
-    """The leg (...) in which each level is met at best values, and its times (..., D) counted from that leg."""
+def _bounds(ensemble: Ensemble, times: Array, best: Array, confidence: float) -> tuple[NDArray[np.intp], Array, Array]:
+    """For levels met at best (C, layers) and in draws (C, layers, D): their leg, early and late times.
+
+    The leg is the one in which a level is met at best values; early and late are counted from its start.
+    """
+    shares = [(1 - confidence) / 2, (1 + confidence) / 2]
     best_start = ensemble.best_outcome.leg_start_s[:, 0]
     leg = np.sum(best[..., None] > best_start[1:], axis=-1)
-    shift = best_start[:, None] - ensemble.outcome.leg_start_s
-    return leg, times + shift[leg]
+    early, late = np.zeros_like(best), np.zeros_like(best)
+    for k, start in enumerate(best_start):
+        here = (leg == k) & (best > 0.0)
+        shifted = times[here] + (start - ensemble.outcome.leg_start_s[k]) if k else times[here]
+        early[here], late[here] = quantiles(shifted, ensemble.weights, shares)
+    at_once = (best <= 0.0) & (times > 0.0).any(axis=-1)
+    early[at_once], late[at_once] = quantiles(times[at_once], ensemble.weights, shares)
+    return leg, early, late
 
 
 def step_at(ensemble: Ensemble, time_s: float) -> str | None:

@@ -111,7 +111,11 @@ class RateModel:
 def rate_model(mill: Mill, steps: Sequence[object], materials: Mapping[str, Material]) -> RateModel:
     """The rate model of a recipe on a mill, with every measured rate of the materials taken in."""
     names = tuple(materials)
-    beams = tuple(_beam_rates(mill, step, materials) if isinstance(step, Beam) else None for step in steps)
+    known: dict[tuple[object, ...], BeamRates] = {}
+    for step in steps:
+        if isinstance(step, Beam) and setting(step) not in known:
+            known[setting(step)] = _beam_rates(mill, step, materials)
+    beams = tuple(known[setting(step)] if isinstance(step, Beam) else None for step in steps)
     prior = _prior(mill, materials)
     evidence = tuple(
         _evidence(mill, material, names, measured)
@@ -119,6 +123,11 @@ def rate_model(mill: Mill, steps: Sequence[object], materials: Mapping[str, Mate
         for measured in material.measured_rates
     )
     return RateModel(names, beams, condition(prior, evidence), evidence)
+
+
+def setting(step: Beam) -> tuple[object, ...]:
+    """What the rates of a step depend on: steps of one setting share their curves."""
+    return step.energy, step.incidence, step.motion, step.current_density
 
 
 def parameter_names(materials: Sequence[str]) -> tuple[str, ...]:
@@ -164,7 +173,9 @@ def _beam_rates(mill: Mill, step: Beam, materials: Mapping[str, Material]) -> Be
     transform = np.cos(np.outer(np.arange(_NODES), angle)) * (2.0 / _NODES)
     transform[0] *= 0.5
     single, double = (
-        np.log([_law_rate(mill, m, energy_ev, incidence_deg, current, step.motion.half_angle) for m in materials.values()])
+        np.log(
+            [_law_rate(mill, m, energy_ev, incidence_deg, current, step.motion.half_angle) for m in materials.values()]
+        )
         @ transform.T
         for energy_ev in (step.energy, 2.0 * step.energy)
     )

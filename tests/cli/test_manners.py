@@ -65,19 +65,43 @@ def test_version_and_no_arguments(capsys):
     assert main([]) == 2
 
 
-STOP_NAMES = (
-    "region column layer time_s time_early_s time_late_s depth_nm height_nm step flat_ok basis present area_share"
-).split()
-WINDOW_NAMES = (
-    "goal regions exposed_s lost_s stop_s chance best_chance confidence first_look_s lost_by left_standing_share"
-    " provisional"
-).split()
+STOP_NAMES = [
+    "region",
+    "column",
+    "layer",
+    "time_s",
+    "time_early_s",
+    "time_late_s",
+    "depth_nm",
+    "height_nm",
+    "step",
+    "flat_ok",
+    "basis",
+    "present",
+    "area_share",
+]
+WINDOW_NAMES = [
+    "goal",
+    "regions",
+    "exposed_s",
+    "lost_s",
+    "stop_s",
+    "chance",
+    "best_chance",
+    "confidence",
+    "first_look_s",
+    "lost_by",
+    "left_standing_share",
+    "provisional",
+]
 
 
 def test_stops_as_json_has_the_pinned_names(capsys):
     assert main(["stops", LOOK, "-f", "json"]) == 0
     answer = json.loads(capsys.readouterr().out)
-    assert {"schema_version", "stackmill_version", "inputs_sha256", "seed", "warnings", "rows", "windows"} <= set(answer)
+    assert {"schema_version", "stackmill_version", "inputs_sha256", "seed", "warnings", "rows", "windows"} <= set(
+        answer
+    )
     assert all(list(row) == STOP_NAMES for row in answer["rows"])
     assert set(WINDOW_NAMES) <= set(answer["windows"][0])
     assert answer["windows"][0]["regions"] == ["array"]
@@ -157,7 +181,12 @@ def test_ascii_on_request_and_on_a_terminal_that_knows_no_other(capsys):
 
 def test_a_closed_pipe_ends_quietly():
     ends = subprocess.run(
-        f"{sys.executable} -m stackmill materials | head -n 1", shell=True, capture_output=True, text=True, cwd=ROOT, check=False
+        f"{sys.executable} -m stackmill materials | head -n 1",
+        shell=True,
+        capture_output=True,
+        text=True,
+        cwd=ROOT,
+        check=False,
     )
     assert ends.stderr == ""
 

@@ -1,4 +1,3 @@
-
 """What the four kinds of file come out as, and that the records hold library users to the same limits."""
 
 from __future__ import annotations

@@ -44,7 +44,9 @@ def brute(table):
 
 
 @pytest.mark.independent
-@pytest.mark.parametrize(("level", "upper", "lower"), [("top", None, 0.0), ("50 % ± 30 nm", 30.0, -30.0), ("50 % ± 150 nm", 150.0, -150.0)])
+@pytest.mark.parametrize(
+    ("level", "upper", "lower"), [("top", None, 0.0), ("50 % ± 30 nm", 30.0, -30.0), ("50 % ± 150 nm", 150.0, -150.0)]
+)
 def test_exposed_lost_and_chance_by_brute_force(level, upper, lower):
     table = forecast(JOB.replace("LEVEL", level))
     top, bar, under, oxide, metal = brute(table)
@@ -91,7 +93,9 @@ def test_early_and_late_are_the_quantiles_of_the_draws():
 @pytest.mark.closed_form
 def test_a_look_takes_out_what_was_uncertain_before_it():
     blind = forecast(JOB.replace("LEVEL", "top"))
-    look = "{name: mill, energy: 1 keV, incidence: 45 deg, motion: rotating, seen: {layer: metal, in: array, area: 50 %}}"
+    look = (
+        "{name: mill, energy: 1 keV, incidence: 45 deg, motion: rotating, seen: {layer: metal, in: array, area: 50 %}}"
+    )
     plan = "{name: on, energy: 1 keV, incidence: 45 deg, motion: rotating, for: 1 min}"
     text = JOB.replace("LEVEL", "50 % ± 100 nm")
     i, j = text.index("{name: mill, energy"), text.index("]}\ngoal")

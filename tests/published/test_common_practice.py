@@ -5,8 +5,8 @@ from __future__ import annotations
 import numpy as np
 import pytest
 
-from stackmill.materials.library import Library
 from stackmill.laws.ions import ion_speed_m_per_s
+from stackmill.materials.library import Library
 from stackmill.rates.yields import rate_nm_per_s
 
 LIBRARY = Library.load()
