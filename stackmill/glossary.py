@@ -5,10 +5,10 @@ Code, help, docs and files use exactly these words. docs/glossary.md is generate
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from stackmill.frozen import frozen
 
 
-@dataclass(frozen=True)
+@frozen
 class Word:
     """A word, what it means, and the unit it has inside the program ('' where it has none)."""
 

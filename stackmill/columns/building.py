@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
@@ -29,6 +28,7 @@ from stackmill.columns.rise import Level, Rising
 from stackmill.columns.scan import survey
 from stackmill.columns.seams import seams
 from stackmill.documents.stack import Region, Stack
+from stackmill.frozen import frozen
 
 Array = NDArray[np.float64]
 Key = NDArray[np.int64]
@@ -38,7 +38,7 @@ _THIN_NM = 1e-9
 _FREE_STANDING_NM = 1e-6
 
 
-@dataclass(frozen=True)
+@frozen
 class Segment:
     """A segment of one column: numbers in the map's tables and its thickness shares (L,)."""
 
@@ -54,7 +54,7 @@ class Segment:
         return self.material, self.layer, self.feature, self.part
 
 
-@dataclass(frozen=True)
+@frozen
 class Stacked:
     """One distinct column: segments and classes of slope from the top down, and its top (L,)."""
 

@@ -7,7 +7,6 @@ from the innermost out, base; the ring of a liner film is that film down to the 
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
@@ -18,12 +17,13 @@ from stackmill.columns.inputs import StackInputs
 from stackmill.columns.outlines import Outline, Union, copies, primitive, union
 from stackmill.columns.regions import PresentLayer
 from stackmill.documents.stack import Feature
+from stackmill.frozen import frozen
 
 Array = NDArray[np.float64]
 Key = NDArray[np.int64]
 
 
-@dataclass(frozen=True)
+@frozen
 class Zone:
     """A kind of place in a layer: a feature's number in it (None: fill), and the liner ring from outside.
 
@@ -37,7 +37,7 @@ class Zone:
 FILL_ZONE = Zone(None)
 
 
-@dataclass(frozen=True)
+@frozen
 class Group:
     """Features of one layer alike in material and films, which merge where they overlap.
 
@@ -57,7 +57,7 @@ class Group:
         return joined([self.outline.walls, *rings, *between])
 
 
-@dataclass(frozen=True)
+@frozen
 class LayerPlan:
     """A layer with features in plan.
 
@@ -130,7 +130,7 @@ def make_up(feature: Feature) -> object:
     return (feature.material, *((film.material, film.thickness) if film else None for film in films))
 
 
-@dataclass(frozen=True)
+@frozen
 class Cut:
     """A segment before it is put in its place: numbers of material and feature, part, thickness (L,)."""
 
@@ -140,7 +140,7 @@ class Cut:
     shares: Array
 
 
-@dataclass(frozen=True)
+@frozen
 class Section:
     """What a layer has in one zone, top down; `cuts[stretch]` grows with the layer's height there."""
 

@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
+from dataclasses import field
 from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
+
+from stackmill.frozen import frozen
 
 if TYPE_CHECKING:
     from stackmill.columns.plan import RegionPlan
@@ -21,7 +23,7 @@ PARTS = ("fill", "core", "cap", "base", "liner")
 FILL, CORE, CAP, BASE, LINER = range(5)
 
 
-@dataclass(frozen=True)
+@frozen
 class ThicknessInput:
     """One uncertain thickness.
 
@@ -34,7 +36,7 @@ class ThicknessInput:
     thickness: Measure
 
 
-@dataclass(frozen=True)
+@frozen
 class Seam:
     """A gap that a conformal layer closes: the films from both sides meet in its middle.
 
@@ -54,7 +56,7 @@ class Seam:
         return f"{self.region}: {self.layer} closes the {self.gap_nm:.0f} nm gap between {sides}, leaving a seam"
 
 
-@dataclass(frozen=True)
+@frozen
 class RegionColumns:
     """The C distinct columns of one region, largest first, each of up to S segments from the top down.
 
@@ -108,7 +110,7 @@ class RegionColumns:
         return self.plan(x[None, :], y[:, None])
 
 
-@dataclass(frozen=True)
+@frozen
 class ColumnMap:
     """All regions of a die with their columns.
 

@@ -7,7 +7,7 @@ and the conformal films laid over it since, which lean out from its walls. The g
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, field, replace
+from dataclasses import field, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -17,6 +17,7 @@ from stackmill.columns.films import Films
 from stackmill.columns.inputs import StackInputs
 from stackmill.columns.outlines import Outline
 from stackmill.columns.scan import Spans, survey
+from stackmill.frozen import frozen
 
 Array = NDArray[np.float64]
 Key = NDArray[np.int64]
@@ -28,7 +29,7 @@ _SHELL_NODES = 6
 _HIGHER_NM = 1e-9
 
 
-@dataclass(frozen=True)
+@frozen
 class Source:
     """A flat top: name; outline (None: all of the plan); height (L,) as shares of the inputs; films."""
 
@@ -56,7 +57,7 @@ class Source:
         return replace(self, films=self.films.then(number, thickness_nm, sidewall))
 
 
-@dataclass(frozen=True)
+@frozen
 class Highest:
     """What makes the surface at points: the number of the source, how far (nm) it is, and the one under foot.
 
@@ -72,7 +73,7 @@ class Highest:
         return self.owner * sources + self.under
 
 
-@dataclass(frozen=True)
+@frozen
 class Slopes:
     """The surface over its sources after some conformal layers, cut into flat tops and classes of slope.
 
@@ -139,7 +140,7 @@ def _states(sources: Sequence[Source], inputs: StackInputs, bounds: Sequence[Arr
     pair, classes = found.pair(len(sources)), len(bounds[0]) - 1
     state = pair * (classes + 1)
     sloped = found.distance > 0.0
-    for number in np.unique(pair[sloped]):
+    for number in np.unique(pair[sloped], return_index=True)[0]:
         here = sloped & (pair == number)
         state[here] += np.clip(np.searchsorted(bounds[number], found.distance[here]), 1, classes)
     return state
@@ -176,7 +177,7 @@ def _feet(source: Source, sources: Sequence[Source], inputs: StackInputs) -> tup
     return tuple(source.films.reach_nm if h <= 0.0 else source.films.distance_at(h) for h in over)
 
 
-@dataclass(frozen=True)
+@frozen
 class _Shells:
     """Slopes cut into many thin shells."""
 

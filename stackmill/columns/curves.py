@@ -6,10 +6,10 @@ fixed distance from such edges.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-
 import numpy as np
 from numpy.typing import NDArray
+
+from stackmill.frozen import frozen
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
@@ -21,7 +21,7 @@ _TOUCHING = 1e-9
 _ANGLE = 1e-9
 
 
-@dataclass(frozen=True)
+@frozen
 class Curves:
     """Curves of the plan (nm, rad).
 

@@ -7,18 +7,19 @@ up point by point of equal slope.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
 from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
+
+from stackmill.frozen import frozen
 
 Array = NDArray[np.float64]
 
 _ANGLES = 4001
 
 
-@dataclass(frozen=True)
+@frozen
 class Films:
     """Conformal films laid down one after the other: inputs (their numbers), thickness and sidewall share."""
 

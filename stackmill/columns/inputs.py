@@ -7,18 +7,18 @@ derivative at the same time.
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from stackmill.columns.columns import ThicknessInput
 from stackmill.documents.stack import NO_FILL, Feature, Film, Stack
+from stackmill.frozen import frozen
 
 Array = NDArray[np.float64]
 
 
-@dataclass(frozen=True)
+@frozen
 class FeatureFilms:
     """Numbers of a feature's inputs: cap and base (None without), liner films from the outermost in."""
 
@@ -27,7 +27,7 @@ class FeatureFilms:
     liner: tuple[int, ...]
 
 
-@dataclass(frozen=True)
+@frozen
 class StackInputs:
     """All L inputs of a stack and where they belong.
 

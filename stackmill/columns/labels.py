@@ -4,16 +4,16 @@ from __future__ import annotations
 
 from collections import Counter
 from collections.abc import Sequence
-from dataclasses import dataclass
 
 from stackmill.columns.columns import CORE, FILL, LINER
 from stackmill.columns.cover import CLASSES
 from stackmill.columns.inputs import StackInputs
+from stackmill.frozen import frozen
 
 FIELD = "field"
 
 
-@dataclass(frozen=True)
+@frozen
 class Slope:
     """A class of slope: the layer whose top it is, number from the wall down, what it slopes from."""
 
@@ -22,7 +22,7 @@ class Slope:
     source: str
 
 
-@dataclass(frozen=True)
+@frozen
 class Labelled:
     """A column to be named: (material, layer, feature, part) of its segments, and its slopes, top down."""
 

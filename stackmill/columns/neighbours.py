@@ -6,14 +6,13 @@ distances to about a hundredth of the cell.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-
 import numpy as np
 from numpy.typing import NDArray
 
 from stackmill.columns.curves import SIDE_NM, Curves, chopped, periodic_distances
 from stackmill.columns.plan import RegionPlan
 from stackmill.columns.scan import Spans
+from stackmill.frozen import frozen
 
 Array = NDArray[np.float64]
 Index = NDArray[np.intp]
@@ -29,7 +28,7 @@ _FAR_LINE = np.array([0.0, 1e12, -1e12])  # from everywhere: less than nothing o
 _FAR_ARC = np.array([0.0, 0.0, 1e12, 0.0, 1.0])
 
 
-@dataclass(frozen=True)
+@frozen
 class Neighbourhood:
     """See RegionColumns: centre_nm (C, 2), edge_distance_nm (C, C)."""
 
@@ -37,7 +36,7 @@ class Neighbourhood:
     edge_distance_nm: Array
 
 
-@dataclass(frozen=True)
+@frozen
 class _Starts:
     """Points x, y (N,) that lie in a column (N,), sorted by column."""
 
@@ -119,7 +118,8 @@ def _starts(plan: RegionPlan, borders: Curves, spans: Spans, of_span: Index) -> 
     for own in np.split(order, np.flatnonzero(np.diff(of_span[order])) + 1):
         picked += [own[:_STARTS], own[_STARTS :: max(1, len(own) // _STARTS)]]
     spots = np.concatenate(picked)
-    middles = np.unique(np.round(borders.arcs[:, :2] % np.array(plan.cell), 6), axis=0)
+    rounded = np.round(borders.arcs[:, :2] % np.array(plan.cell), 6)
+    middles = np.unique(rounded, return_index=True, axis=0)[0]
     x = np.concatenate([spans.middle[spots], middles[:, 0]])
     y = np.concatenate([spans.y[spots], middles[:, 1]])
     column = np.concatenate([of_span[spots], plan.column(middles[:, 0], middles[:, 1])])

@@ -3,13 +3,13 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from stackmill.columns.curves import NOTHING, SIDE_NM, TURN, Curves, circles, cut, joined, merged
 from stackmill.documents.stack import Block, Line, Shape, Via
+from stackmill.frozen import frozen
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
@@ -18,7 +18,7 @@ Inside = Callable[[Array, Array], Mask]
 _CORNER_POINTS = 64
 
 
-@dataclass(frozen=True)
+@frozen
 class Rectangle:
     """Edges x0, x1, y0, y1 (nm), infinite where it spans the cell."""
 
@@ -46,7 +46,7 @@ class Rectangle:
         return Rectangle(self.x0 + dx, self.x1 + dx, self.y0 + dy, self.y1 + dy)
 
 
-@dataclass(frozen=True)
+@frozen
 class Disc:
     """Centre and radius (nm)."""
 
@@ -123,7 +123,7 @@ def _shifts(low: float, high: float, period: float, reach_nm: float) -> range:
     return range(first, last + 1)
 
 
-@dataclass(frozen=True)
+@frozen
 class Outline:
     """An area of the plan with its walls.
 
@@ -162,7 +162,7 @@ class Outline:
         ends = self.walls.ends()
         x0, x1, y0, y1 = self.window
         within = (ends[:, 0] > x0) & (ends[:, 0] < x1) & (ends[:, 1] > y0) & (ends[:, 1] < y1)
-        ends = np.unique(np.round(ends[within], 6), axis=0)
+        ends = np.unique(np.round(ends[within], 6), return_index=True, axis=0)[0]
         angle = TURN * (np.arange(_CORNER_POINTS) + 0.5) / _CORNER_POINTS
         around = ends[:, :, None] + 10 * SIDE_NM * np.stack([np.cos(angle), np.sin(angle)])
         full = self.inside(around[:, 0], around[:, 1]).sum(axis=1) - _CORNER_POINTS // 2
@@ -189,7 +189,7 @@ def union(figures: Sequence[Primitive], cell: tuple[float, float], reach_nm: flo
     return outline([copy.edges() for copy in near], Union(near), cell, reach)
 
 
-@dataclass(frozen=True)
+@frozen
 class Union:
     """Whether points lie in any of several figures."""
 
@@ -203,7 +203,7 @@ class Union:
         return found
 
 
-@dataclass(frozen=True)
+@frozen
 class Overlap:
     """Whether points lie in all of several areas."""
 

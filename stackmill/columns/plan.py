@@ -3,13 +3,13 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from stackmill.columns.carving import LayerPlan
 from stackmill.columns.cover import Slopes
+from stackmill.frozen import frozen
 
 Array = NDArray[np.float64]
 Index = NDArray[np.intp]
@@ -19,7 +19,7 @@ Axis = LayerPlan | Slopes
 _LARGEST_KEY = 2**50
 
 
-@dataclass(frozen=True)
+@frozen
 class Keys:
     """One number for each combination of the axes' states.
 
@@ -58,7 +58,7 @@ def keys_of(axes: Sequence[Axis], x: Array, y: Array) -> tuple[Keys, Key, Key]:
     return Keys(tuple(axes), tuple(known)), combinations, key
 
 
-@dataclass(frozen=True)
+@frozen
 class RegionPlan:
     """The plan of one region. column_of (K,): the column of each combination that `keys` numbers."""
 

@@ -6,16 +6,16 @@ Only the facts: documents know the lines of the file and the words.
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass
 
 from stackmill.columns.carving import make_up
 from stackmill.columns.outlines import copies, overlap, primitive
 from stackmill.documents.stack import Feature, Layer, Line, Stack, Via
+from stackmill.frozen import frozen
 
 _ROUNDING_NM = 1e-6
 
 
-@dataclass(frozen=True)
+@frozen
 class Overlapping:
     """Two features of one layer that share an area of the plan but not material and films."""
 
@@ -24,7 +24,7 @@ class Overlapping:
     other: str
 
 
-@dataclass(frozen=True)
+@frozen
 class OutsideCell:
     """A feature whose centre is not in the cell."""
 
@@ -32,7 +32,7 @@ class OutsideCell:
     feature: str
 
 
-@dataclass(frozen=True)
+@frozen
 class FilmsTooThick:
     """A feature that its films would fill.
 

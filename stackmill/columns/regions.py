@@ -2,12 +2,11 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-
 from stackmill.documents.stack import NO_FILL, Layer, Region, Stack
+from stackmill.frozen import frozen
 
 
-@dataclass(frozen=True)
+@frozen
 class PresentLayer:
     """One layer as it is in a region.
 

@@ -7,7 +7,6 @@ a band the widths are smooth but for square roots at its ends, which y = middle 
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
 from functools import cache
 from itertools import pairwise
 from typing import Protocol
@@ -16,6 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from stackmill.columns.curves import SIDE_NM, Curves, cut, merged, on_arc
+from stackmill.frozen import frozen
 
 Array = NDArray[np.float64]
 Key = NDArray[np.int64]
@@ -27,7 +27,7 @@ _HALVINGS = 36
 _NOTHING = 1e-9
 
 
-@dataclass(frozen=True)
+@frozen
 class Spans:
     """Pieces of scanlines between neighbouring curves: x0, x1, y (N,) in nm; share (N,) of the cell."""
 
@@ -84,7 +84,7 @@ class Divided(Protocol):
         """The state at points (any shape) of the cell."""
 
 
-@dataclass(frozen=True)
+@frozen
 class Survey:
     """The cell cut up: spans of scanlines, and the borders (pieces of curves) at which some state changes."""
 
@@ -150,7 +150,8 @@ def _scanlines(borders: Curves, cell: tuple[float, float], nodes: int) -> tuple[
 
 
 def _band_edges(turns: Array, height: float) -> Array:
-    y = np.unique(turns[(turns > _NOTHING * height) & (turns < (1.0 - _NOTHING) * height)])
+    inside = turns[(turns > _NOTHING * height) & (turns < (1.0 - _NOTHING) * height)]
+    y = np.unique(inside, return_index=True)[0]  # asking for an index keeps numpy.ma unloaded
     y = y[np.diff(y, prepend=0.0) > _NOTHING * height]
     return np.concatenate([[0.0], y, [height]])
 

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
 
 import numpy as np
 
@@ -11,9 +10,10 @@ from stackmill.columns.columns import Seam
 from stackmill.columns.curves import SIDE_NM
 from stackmill.columns.outlines import Disc, Primitive, Union, copies, primitive
 from stackmill.columns.regions import PresentLayer
+from stackmill.frozen import frozen
 
 
-@dataclass(frozen=True)
+@frozen
 class Gap:
     """The narrowest open place between two features: width, and its middle."""
 

@@ -8,12 +8,12 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable
-from dataclasses import dataclass
 from typing import Annotated, Any
 
 from pydantic import BeforeValidator, PlainValidator, WithJsonSchema
 
 from stackmill.documents.wording import refuse
+from stackmill.frozen import frozen
 from stackmill.units import (
     KINDS,
     Measure,
@@ -27,7 +27,7 @@ from stackmill.units import (
 )
 
 
-@dataclass(frozen=True)
+@frozen
 class Limits:
     """What a quantity of this kind can be, in its inside unit, with words for what lies outside.
 

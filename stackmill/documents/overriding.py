@@ -3,14 +3,14 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
 
 from stackmill.documents import wording
 from stackmill.documents.marks import Block, Items, Node, Scalar, Tree, read_tree
 from stackmill.errors import InputError, Place, UsageError
+from stackmill.frozen import frozen
 
 
-@dataclass(frozen=True)
+@frozen
 class Override:
     """A value for a key path of the job, from `--set` or another option. label: the option, for messages."""
 

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
 from pathlib import Path
 from typing import Any, Generic, TypeVar
 
@@ -14,6 +13,7 @@ from stackmill.documents.healing import healed
 from stackmill.documents.marks import MOST_BYTES, Block, KeyPath, Tree, read_tree
 from stackmill.documents.wording import Sentence
 from stackmill.errors import FileAccessError, InputError, InputErrors, Place
+from stackmill.frozen import frozen
 
 Source = Path | str | bytes | Tree
 """Where a document comes from: a file, its text, or part of a file that has been read."""
@@ -28,7 +28,7 @@ class Record(BaseModel):
 M = TypeVar("M", bound=BaseModel)
 
 
-@dataclass(frozen=True)
+@frozen
 class Document(Generic[M]):
     """A record with the tree it was read from. Key paths are as in the file: ('layers', 2, 'thickness').
 

@@ -3,19 +3,19 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
-from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from stackmill.documents.recipe import OTHER, Beam, Process
+from stackmill.frozen import frozen
 from stackmill.jobs import Job
 from stackmill.rates.model import RateModel, rate_model
 
 Array = NDArray[np.float64]
 
 
-@dataclass(frozen=True)
+@frozen
 class Inputs:
     """The uncertain inputs of a job, by name: the rows (N,) of every draw."""
 
@@ -42,7 +42,7 @@ class Inputs:
         return self.sample(np.zeros((len(self.names), 1)))
 
 
-@dataclass(frozen=True)
+@frozen
 class Sample:
     """D dies and mills that may be true. rows: name -> (D,); parameters (P, D) of the rate model."""
 

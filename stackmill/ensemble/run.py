@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
@@ -12,6 +11,7 @@ from numpy.typing import NDArray
 from stackmill.documents.recipe import Beam, Process
 from stackmill.ensemble.draws import latin_hypercube
 from stackmill.ensemble.inputs import Inputs, Sample
+from stackmill.frozen import frozen
 from stackmill.jobs import Job
 from stackmill.timing.fall import NEVER, Fall, area_quantile, fall
 from stackmill.timing.plan import LOST_SHARE, Ground, Spot, fall_steps, ground
@@ -23,7 +23,7 @@ SEED = 2026
 CHUNK = 2048  # draws that fall together: few enough for a processor's cache, and the same for any --jobs
 
 
-@dataclass(frozen=True)
+@frozen
 class Outcome:
     """What the draws reach, and when, on the clock (s); inf where never.
 
@@ -46,7 +46,7 @@ class Outcome:
     end_s: Array
 
 
-@dataclass(frozen=True)
+@frozen
 class Ensemble:
     """The best-value fall and all draws of a job.
 
@@ -115,7 +115,7 @@ def _outcome(job: Job, where: Ground, run_down: Fall) -> Outcome:
     def reach(spot: Spot) -> Array:
         return run_down.reach(spot.region, spot.column, spot.above)
 
-    draws = where.columns[0][0].thickness_nm.shape[1]
+    draws = where.columns[0][0].draws
     layer_s = tuple(
         np.stack([[run_down.reach(r, c, int(above)) for above in row] for c, row in enumerate(boundaries)])
         for r, boundaries in enumerate(where.layer_above)

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Iterator, Sequence
-from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
 from stackmill.documents import wording
@@ -14,6 +13,7 @@ from stackmill.documents.recipe import OTHER, Beam, Cover, Process, Recipe, Seen
 from stackmill.documents.stack import NO_FILL, Feature, Layer, Line, Region, Stack, Via
 from stackmill.documents.wording import Sentence
 from stackmill.errors import InputError
+from stackmill.frozen import frozen
 from stackmill.jobs.files import JobDocuments
 from stackmill.jobs.materials import Found, in_stack
 from stackmill.units import plain, quoted
@@ -24,7 +24,7 @@ if TYPE_CHECKING:
 Complaint = tuple[Sentence, KeyPath]
 
 
-@dataclass(frozen=True)
+@frozen
 class Fit:
     """How the files of a job fit together. column_map: None where the stack has errors."""
 

@@ -20,6 +20,7 @@ from stackmill.documents.reading import Document, checked_further, read_bytes
 from stackmill.documents.recipe import Recipe
 from stackmill.documents.stack import Stack
 from stackmill.errors import FileAccessError, InputError, InputErrors, Place
+from stackmill.frozen import frozen
 
 _KINDS = {"layers": "stack", "steps": "recipe", "gas": "mill", "materials": "materials", "stack": "job"}
 _TELLING = {kind: key for key, kind in _KINDS.items()}
@@ -27,7 +28,7 @@ _BOUND = ("stack", "mill", "recipe")
 M = TypeVar("M", bound=BaseModel)
 
 
-@dataclass(frozen=True)
+@frozen
 class JobDocuments:
     """The documents of a job. `job` is the job file, or what stands in for it where FILE is a lone stack.
 

@@ -5,7 +5,6 @@ from __future__ import annotations
 import hashlib
 import json
 from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass
 from functools import cached_property
 from pathlib import Path
 from typing import TYPE_CHECKING
@@ -18,6 +17,7 @@ from stackmill.documents.overriding import Override, assembled, overrides
 from stackmill.documents.recipe import DEFAULT_RECIPE, Beam, Cover, Process, Recipe, Strip
 from stackmill.documents.stack import NO_FILL, Stack
 from stackmill.errors import InputError, InputErrors, UsageError
+from stackmill.frozen import frozen
 from stackmill.jobs.files import FileReader, JobDocuments, kind_of, read_source
 from stackmill.jobs.materials import Found, find_materials, unknown_materials
 from stackmill.units import quoted
@@ -41,7 +41,7 @@ _OPTIONS: Mapping[str, tuple[str, ...]] = {
 }
 
 
-@dataclass(frozen=True)
+@frozen
 class Job:
     """Everything a forecast needs, checked.
 

@@ -12,15 +12,16 @@ library's values, so that a measured rate, which is linear in them, is taken in 
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
+from stackmill.frozen import frozen
+
 Array = NDArray[np.float64]
 
 
-@dataclass(frozen=True)
+@frozen
 class RateBelief:
     """What is believed of the rate model's parameters.
 
@@ -48,7 +49,7 @@ class RateBelief:
         return root
 
 
-@dataclass(frozen=True)
+@frozen
 class RateEvidence:
     """One measured rate, as the conditioning sees it.
 

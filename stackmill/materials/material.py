@@ -6,10 +6,11 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 
 from stackmill.constants import ATOMS_1E22_PER_MOL_CM3
+from stackmill.frozen import frozen
 from stackmill.units import Measure
 
 
-@dataclass(frozen=True, slots=True)
+@frozen
 class Sourced:
     """A number with everything it must not travel without.
 
@@ -25,7 +26,7 @@ class Sourced:
     seen: bool
 
 
-@dataclass(frozen=True, slots=True)
+@frozen
 class YieldRow:
     """A measured yield: energy [eV], atoms/ion, ln(measured/law) before the tie, sd of that ln, source."""
 
@@ -37,7 +38,7 @@ class YieldRow:
     seen: bool
 
 
-@dataclass(frozen=True, slots=True)
+@frozen
 class YieldTie:
     """yield = law x factor x (E/at_ev)^exponent, and how well that is known.
 
@@ -57,7 +58,7 @@ class YieldTie:
     rows: tuple[YieldRow, ...] = ()
 
 
-@dataclass(frozen=True, slots=True)
+@frozen
 class AngularData:
     """f, b, c of the angular shape as polynomials in s = sqrt(Eth/E), lowest power first; empty: mass rule.
 
@@ -73,7 +74,7 @@ class AngularData:
     seen: bool
 
 
-@dataclass(frozen=True, slots=True)
+@frozen
 class OtherGases:
     """Constants and factor of Yamamura-Tawara for the gases the main law does not know; ln_sd is added."""
 
@@ -84,7 +85,7 @@ class OtherGases:
     seen: bool
 
 
-@dataclass(frozen=True, slots=True)
+@frozen
 class Atom:
     """An element as a constituent of a compound: what an effective target is averaged from."""
 
@@ -99,7 +100,7 @@ class Atom:
     seen: bool
 
 
-@dataclass(frozen=True, slots=True)
+@frozen
 class LabRate:
     """A milling rate measured on this mill: rate [nm/s], energy [eV], incidence [deg], current [mA/cm2]."""
 
@@ -110,7 +111,7 @@ class LabRate:
     same_day: bool
 
 
-@dataclass(frozen=True, slots=True)
+@frozen
 class Disagreement:
     """Two sources that differ: both sides, the one taken, and why."""
 
@@ -121,7 +122,7 @@ class Disagreement:
     sources: tuple[str, ...]
 
 
-@dataclass(frozen=True, slots=True)
+@frozen
 class Caution:
     """A short warning about a material and who says so; local rules and trained staff decide."""
 

@@ -2,15 +2,14 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-
 import numpy as np
 
 from stackmill.ensemble.run import Ensemble
+from stackmill.frozen import frozen
 from stackmill.planning.windows import Window
 
 
-@dataclass(frozen=True)
+@frozen
 class Share:
     """One input's share (0..1) of the variance of the moment the goal is exposed."""
 

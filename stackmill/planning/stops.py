@@ -2,13 +2,12 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-
 import numpy as np
 from numpy.typing import NDArray
 
 from stackmill.documents.recipe import Beam
 from stackmill.ensemble.run import DRAWS, SEED, Ensemble, run
+from stackmill.frozen import frozen
 from stackmill.jobs import Job
 from stackmill.planning.shares import Share, variance_shares
 from stackmill.planning.windows import Window, find_window, quantiles
@@ -20,7 +19,7 @@ from stackmill.timing.flatness import SlopeSpeeds, flat_until
 Array = NDArray[np.float64]
 
 
-@dataclass(frozen=True)
+@frozen
 class Reach:
     """One layer's top in one column: when the surface gets there, at best values, early and late.
 
@@ -47,7 +46,7 @@ class Reach:
     leg: int
 
 
-@dataclass(frozen=True)
+@frozen
 class StopTable:
     """The answer of `stops`: rows, the goal's window (None without a goal), and what would narrow it most."""
 

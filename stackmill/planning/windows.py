@@ -8,19 +8,19 @@ stopwatch is started again there and what was uncertain before no longer matters
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from stackmill.ensemble.run import Ensemble, Outcome
+from stackmill.frozen import frozen
 
 Array = NDArray[np.float64]
 
 FIRST_LOOK_RISK = 0.05  # the first look comes no later than this chance of loss
 
 
-@dataclass(frozen=True)
+@frozen
 class ChanceCurve:
     """The chance of a stop against time in one leg: chance[i] holds from time_s[i] until time_s[i + 1].
 
@@ -36,7 +36,7 @@ class ChanceCurve:
         return float(self.chance[k]) if k >= 0 else 0.0
 
 
-@dataclass(frozen=True)
+@frozen
 class Window:
     """When to stop. Times are on the clock at best values (s); see `leg` for where the stopwatch starts.
 

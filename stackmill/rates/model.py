@@ -10,13 +10,13 @@ rate = (1 - d) rate(E) + d/2 rate(2E), each as if all ions were singly charged.
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from stackmill.documents.mill import Mill
 from stackmill.documents.recipe import Beam
+from stackmill.frozen import frozen
 from stackmill.materials.calibration import RateBelief, RateEvidence, condition
 from stackmill.materials.material import LabRate, Material
 from stackmill.rates import yields
@@ -31,7 +31,7 @@ _ANY_EV = 1000.0  # the sd inside the measured energies is the same at all of th
 _PER_MATERIAL = ("rate", "energy", "angle")
 
 
-@dataclass(frozen=True)
+@frozen
 class BeamRates:
     """The rate curves of one beam step, near its setting of the dial, for all M materials.
 
@@ -62,7 +62,7 @@ class BeamRates:
         return series
 
 
-@dataclass(frozen=True)
+@frozen
 class RateModel:
     """All beam steps' curves (None for steps without a beam), with the belief about their parameters.
 

@@ -7,13 +7,13 @@ the beam, milling rates in nm/s. `gas` is a name in constants.GASES.
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
 from functools import lru_cache
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from stackmill.constants import GASES, NM_PER_S_PER_MA_CM2
+from stackmill.frozen import frozen
 from stackmill.laws.compounds import effective_target, tie_of_unmeasured
 from stackmill.laws.incidence import (
     AngularShape,
@@ -49,7 +49,7 @@ OTHER_GAS_LN_SD = 0.15
 SMALLEST_B = 0.05
 
 
-@dataclass(frozen=True)
+@frozen
 class _Tied:
     """A law, its constants and its tie for one material under one gas."""
 
@@ -158,7 +158,7 @@ def rate_nm_per_s(
     return np.asarray(speed * total.reshape(incidence.shape))
 
 
-@dataclass(frozen=True)
+@frozen
 class _Nodes:
     """The nodes of several incidences in one row; `first` is where each incidence's own begin."""
 

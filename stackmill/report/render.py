@@ -10,10 +10,11 @@ import io
 import json
 import math
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
 from typing import Any
 
 from tabulate import tabulate
+
+from stackmill.frozen import frozen
 
 SCHEMA_VERSION = 1
 
@@ -34,7 +35,7 @@ _ASCII = {
 }
 
 
-@dataclass(frozen=True)
+@frozen
 class Paper:
     """What is written on: its width in characters, and whether only ASCII may be used."""
 
@@ -50,7 +51,7 @@ class Paper:
         return text.encode("ascii", "replace").decode("ascii")
 
 
-@dataclass(frozen=True)
+@frozen
 class Grid:
     """A table for people: headers and cells, all text; numeric columns are aligned right."""
 

@@ -13,25 +13,33 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from stackmill.frozen import frozen
+
 Array = NDArray[np.float64]
 
 NEVER = 1e290  # times beyond this mean that the level is not reached
 _STANDSTILL = 1e300  # seconds per nm where nothing mills: finite, so that 0 nm still take 0 s
 
 
-@dataclass(frozen=True)
+@frozen
 class Column:
     """One column to fall through, in all draws at once.
 
-    material (K,): index of each segment's material, top down; thickness_nm (K, D); area: share of its region.
+    material (K,): index of each segment's material, top down; thickness_nm (K, D), or K rows of
+    (D,); area: share of its region.
     """
 
     material: tuple[int, ...]
-    thickness_nm: Array
+    thickness_nm: Array | Sequence[Array]
     area: float = 1.0
 
+    @property
+    def draws(self) -> int:
+        """How many draws fall at once."""
+        return len(self.thickness_nm[0])
 
-@dataclass(frozen=True)
+
+@frozen
 class Lowering:
     """A step that lowers: rate_nm_per_s (M, D). Its length is a time, or the reaching of a level.
 
@@ -46,7 +54,7 @@ class Lowering:
     name: str = ""
 
 
-@dataclass(frozen=True)
+@frozen
 class Until:
     """The end of a step by reaching: `share` of the area of these (region, column, segments above) is down."""
 
@@ -56,7 +64,7 @@ class Until:
     error_s: Array | float = 0.0
 
 
-@dataclass(frozen=True)
+@frozen
 class Strip:
     """A step that takes off the leading segments of some materials, in no time of the clock."""
 
@@ -64,7 +72,7 @@ class Strip:
     name: str = ""
 
 
-@dataclass(frozen=True)
+@frozen
 class Cover:
     """A step that protects regions (covered=True) or bares them again."""
 
@@ -81,14 +89,14 @@ class _Falling:
     """A column on its way down. left_nm (K, D): what is there still; passed_s (K + 1, D): when boundaries were met."""
 
     material: tuple[int, ...]
-    left_nm: Array
+    left_nm: list[Array]
     passed_s: Array
     first: int = 0
     covered: bool = False
 
     def time_to(self, above: int, slowness: Array) -> Array:
         """Seconds (D,) from now until `above` segments are gone, at this slowness (M, D)."""
-        cost = np.zeros(self.left_nm.shape[1])
+        cost = np.zeros(len(self.left_nm[0]))
         for k in range(self.first, above):
             cost += self.left_nm[k] * slowness[self.material[k]]
         return cost
@@ -113,7 +121,7 @@ class _Falling:
 
     def strip(self, materials: frozenset[int], clock_s: Array) -> None:
         """Lose the leading segments of these materials, draw by draw."""
-        bare = np.ones(self.left_nm.shape[1], dtype=bool)
+        bare = np.ones(len(self.left_nm[0]), dtype=bool)
         for k in range(self.first, len(self.material)):
             if self.material[k] in materials:
                 self.left_nm[k][bare] = 0.0
@@ -124,7 +132,7 @@ class _Falling:
                 break
 
 
-@dataclass(frozen=True)
+@frozen
 class StepSpan:
     """When a step began and ended on the clock, and how long it took in itself, per draw (D,)."""
 
@@ -134,7 +142,7 @@ class StepSpan:
     length_s: Array
 
 
-@dataclass(frozen=True)
+@frozen
 class Fall:
     """A recipe run down to its end.
 
@@ -159,7 +167,7 @@ def fall(regions: Sequence[Sequence[Column]], steps: Sequence[Step], *, keep_lef
 
     A step that ends on reaching a level which is never reached runs for ever, and later steps are never begun.
     """
-    draws = regions[0][0].thickness_nm.shape[1]
+    draws = regions[0][0].draws
     columns = [[_begin(column, draws) for column in region] for region in regions]
     clock = np.zeros(draws)
     spans: list[StepSpan] = []
@@ -182,14 +190,14 @@ def fall(regions: Sequence[Sequence[Column]], steps: Sequence[Step], *, keep_lef
                     column.covered = step.covered
         spans.append(StepSpan(step.name, start, clock, duration))
         if keep_left:
-            left.append(tuple(tuple(c.left_nm.copy() for c in region) for region in columns))
+            left.append(tuple(tuple(np.stack(c.left_nm) for c in region) for region in columns))
     return Fall(tuple(tuple(c.passed_s for c in region) for region in columns), tuple(spans), tuple(left))
 
 
 def _begin(column: Column, draws: int) -> _Falling:
     passed = np.full((len(column.material) + 1, draws), 2 * NEVER)
     passed[0] = 0.0
-    return _Falling(column.material, column.thickness_nm.copy(), passed)
+    return _Falling(column.material, [row.copy() for row in column.thickness_nm], passed)
 
 
 def _bare(columns: Sequence[Sequence[_Falling]]) -> list[_Falling]:

@@ -8,12 +8,12 @@ vertical speed on a slope), how far it has come, and whether that is the way to 
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
 from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
 
+from stackmill.frozen import frozen
 from stackmill.timing.fall import NEVER, Column, Fall, StepSpan
 
 Array = NDArray[np.float64]
@@ -22,7 +22,7 @@ _SAME_SPEED = 1e-9  # relative: rates closer than this are one rate
 _SAME_HEIGHT_NM = 1e-6
 
 
-@dataclass(frozen=True)
+@frozen
 class SlopeSpeeds:
     """How fast sloped ground comes down in one step, at best values.
 
@@ -144,7 +144,7 @@ def flat_until(
     pairs = _Pairs(distance_nm, sloped)
     if len(columns) == 1:
         return pairs.until_s
-    left = [column.thickness_nm[:, 0] for column in columns]
+    left = [np.array([row[0] for row in column.thickness_nm]) for column in columns]
     for step, span in enumerate(best.spans):
         pairs.jump(np.array([float(thick.sum()) for thick in left]))
         after = [thick[:, 0] for thick in best.left_nm[step][region]]

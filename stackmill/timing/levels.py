@@ -55,7 +55,7 @@ class CutColumn:
 
     def done(self) -> Column:
         """The column, ready to fall."""
-        return Column(tuple(self.material), np.stack(self.thickness_nm), self.area)
+        return Column(tuple(self.material), self.thickness_nm, self.area)
 
 
 def _moved(boundary: Index, top: int, floor: int) -> Index:

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
@@ -14,6 +13,7 @@ from stackmill.documents.recipe import Beam, Process, Seen, Target
 from stackmill.documents.recipe import Cover as CoverStep
 from stackmill.documents.recipe import Strip as StripStep
 from stackmill.documents.recipe import Uncover as UncoverStep
+from stackmill.frozen import frozen
 from stackmill.jobs import Job
 from stackmill.timing.fall import Column, Cover, Lowering, Step, Strip, Until
 from stackmill.timing.levels import CutColumn
@@ -25,7 +25,7 @@ DEFAULT_SHARE = 0.95  # of the area that must be down for a `to` step, where no 
 LOST_SHARE = 0.01  # the goal or a keep is lost when this much of its area is
 
 
-@dataclass(frozen=True)
+@frozen
 class Spot:
     """A level in one column: region, column, boundary (one number, or one a draw (D,)), area."""
 
@@ -35,7 +35,7 @@ class Spot:
     area: float
 
 
-@dataclass(frozen=True)
+@frozen
 class KeepSpots:
     """Where a keep is spoilt: its spots, and in which draws (D,) each is too thin from the start."""
 
@@ -43,7 +43,7 @@ class KeepSpots:
     too_thin: tuple[NDArray[np.bool_], ...]
 
 
-@dataclass(frozen=True)
+@frozen
 class Ground:
     """The columns of all regions, ready to fall, and the levels asked for.
 
@@ -180,7 +180,7 @@ def fall_steps(
     how much too late each `seen` step is stopped. The extra last step, named "", lets the forecast say what
     happens to someone who stays longer than the recipe.
     """
-    draws = where.columns[0][0].thickness_nm.shape[1]
+    draws = where.columns[0][0].draws
     has_beam = any(isinstance(step, Beam) for step in job.recipe.steps)
     regions = [region.name for region in job.column_map.regions]
     steps: list[Step] = []

@@ -21,8 +21,10 @@ stack:
 mill: {gas: argon, current_density: 0.5 mA/cm2, stage: {zero_error: ± 0 deg}}
 materials:
   materials:
-    - {name: SiO2, measured_rate: {rate: 40 nm/min ± 1 %, energy: 1 keV, incidence: 45 deg, current_density: 0.5 mA/cm2}}
-    - {name: W, measured_rate: {rate: 20 nm/min ± 1 %, energy: 1 keV, incidence: 45 deg, current_density: 0.5 mA/cm2}}
+    - name: SiO2
+      measured_rate: {rate: 40 nm/min ± 1 %, energy: 1 keV, incidence: 45 deg, current_density: 0.5 mA/cm2}
+    - name: W
+      measured_rate: {rate: 20 nm/min ± 1 %, energy: 1 keV, incidence: 45 deg, current_density: 0.5 mA/cm2}
 recipe:
   steps: [{name: mill, energy: 1 keV, incidence: 45 deg, motion: rotating, for: 1 h}]
 """
@@ -55,7 +57,7 @@ def test_a_rate_measured_without_the_days_current_carries_the_currents_error_aga
     inputs = Inputs.of(same)
     assert at(same, inputs.model.ln_rate_sd(0), "SiO2") == pytest.approx(np.hypot(0.01, 0.06), rel=1e-3)
     text = LINEAR.replace("0.5 mA/cm2, stage", "0.5 mA/cm2 ± 6 %, stage")
-    today = load_job(text.replace("current_density: 0.5 mA/cm2}}", "current_density: 0.5 mA/cm2, same_day: yes}}"))
+    today = load_job(text.replace("current_density: 0.5 mA/cm2}", "current_density: 0.5 mA/cm2, same_day: yes}"))
     assert at(today, Inputs.of(today).model.ln_rate_sd(0), "SiO2") == pytest.approx(0.01, rel=1e-3)
     assert at(today, Inputs.of(today).model.best_nm_per_s(0, 0.0), "W") * 60 == pytest.approx(20.0, rel=0.01)
     # a rate of today says something of today's current, and so of materials that were not measured
