@@ -1,5 +1,5 @@
 """`python -m stackmill`."""
 
-from stackmill.cli.main import run
+from stackmill.cli.start import run
 
 run()

@@ -8,6 +8,7 @@ import subprocess
 from pathlib import Path
 
 import pytest
+from write_glossary import page
 
 ROOT = Path(__file__).parents[1]
 LABELS = {"published", "closed_form", "independent", "common_practice", "regression"}
@@ -45,6 +46,22 @@ def test_files_keep_to_their_soft_limit():
         if (n := len(path.read_text(encoding="utf-8").splitlines())) > 400
     }
     assert long == {}
+
+
+def test_functions_keep_to_their_soft_limit():
+    long = []
+    for path in (ROOT / "stackmill").rglob("*.py"):
+        for node in ast.walk(ast.parse(path.read_text(encoding="utf-8"))):
+            if isinstance(node, ast.FunctionDef) and path.parent.name != "cli":
+                body = node.body[1:] if ast.get_docstring(node) else node.body
+                lines = body[-1].end_lineno - body[0].lineno + 1 if body else 0
+                if lines > 40:
+                    long.append(f"{path.name}::{node.name} ({lines})")
+    assert long == []
+
+
+def test_the_glossary_page_is_the_glossary():
+    assert (ROOT / "docs/glossary.md").read_text(encoding="utf-8") == page()
 
 
 def test_every_demo_says_it_is_invented():

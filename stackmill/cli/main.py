@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-import contextlib
-import gc
 import os
 import sys
 from typing import Annotated
@@ -13,7 +11,7 @@ os.environ.setdefault("PYDANTIC_DISABLE_PLUGINS", "__all__")
 
 import typer
 
-from stackmill.cli import check, materials, rates, stops
+from stackmill.cli import check, materials, rates, schema, stops
 from stackmill.errors import InputErrors, StackmillError
 
 app = typer.Typer(
@@ -29,6 +27,7 @@ app = typer.Typer(
 app.command()(check.check)
 app.command()(materials.materials)
 app.command()(rates.rates)
+app.command()(schema.schema)
 app.command()(stops.stops)
 
 
@@ -49,26 +48,11 @@ def _root(
     """Only here so that --version stands beside the commands."""
 
 
-def run(arguments: list[str] | None = None) -> None:
-    """Run the command line and leave with its exit code; the entry point of the `stackmill` script.
-
-    A forecast lives for a moment: collecting garbage, and taking the interpreter down piece by piece when all is
-    written, would take a fifth of its time.
-    """
-    gc.disable()
-    code = main(arguments)
-    with contextlib.suppress(OSError):
-        sys.stdout.flush()
-        sys.stderr.flush()
-    os._exit(code)
-
-
 def main(arguments: list[str] | None = None) -> int:
     """Run the command line and give its exit code (see the README for what each means)."""
     debug = "--debug" in (sys.argv if arguments is None else arguments)
     try:
         left = app(arguments, standalone_mode=False)
-        sys.stdout.flush()
     except StackmillError as error:
         _say(_report(error))
         return error.exit_code
@@ -98,12 +82,16 @@ def _unexpected(error: Exception, debug: bool) -> int:
         _say(f"error: {show()} (see stackmill --help)")
         return 2
     if debug:
-        raise error
+        import traceback
+
+        _say(traceback.format_exc().rstrip())
     _say(f"error: stackmill itself failed: {type(error).__name__}: {error} (run again with --debug and report it)")
     return 70
 
 
 def _say(text: str) -> None:
+    if sys.stderr is None:
+        return
     try:
         sys.stderr.write(text + "\n")
     except UnicodeEncodeError:

@@ -35,9 +35,9 @@ def materials(
         library = Library.load()
         chosen = [library.get(name) for name in names or library.names()]
     if form is Format.json:
-        text = report.as_json(chosen, warned)
+        text = report.as_json(chosen, warned, paper(output, ascii_only))
     elif form is Format.csv:
-        text = report.as_csv(chosen)
+        text = report.as_csv(chosen, paper(output, ascii_only))
     elif names:
         text = report.in_full(chosen, library.citation, paper(output, ascii_only))
     else:

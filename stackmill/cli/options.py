@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from enum import StrEnum
-from pathlib import Path
 from typing import Annotated
 
 import typer
@@ -33,7 +32,6 @@ Force = Annotated[bool, typer.Option("--force", help="Overwrite an existing outp
 Quiet = Annotated[bool, typer.Option("-q", "--quiet", help="No notes or warnings on standard error.")]
 Strict = Annotated[bool, typer.Option("--strict", help="Refuse to answer where a warning would be given.")]
 Ascii = Annotated[bool, typer.Option("--ascii", help="Only ASCII characters.")]
-NoColor = Annotated[bool, typer.Option("--no-color", help="No colour (also: NO_COLOR, TERM=dumb).")]
 Debug = Annotated[bool, typer.Option("--debug", help="Show a traceback where stackmill itself is at fault.")]
 Set = Annotated[
     list[str] | None,
@@ -41,7 +39,7 @@ Set = Annotated[
         "--set", help="Override one value, e.g. --set 'mill.current_density=0.4 mA/cm2'.", metavar="KEY=VALUE"
     ),
 ]
-Seed = Annotated[int, typer.Option("--seed", help="Seed of the draws; the same seed gives the same answer.")]
+Seed = Annotated[int, typer.Option("--seed", min=0, help="Seed of the draws; the same seed gives the same answer.")]
 Jobs = Annotated[int, typer.Option("--jobs", min=1, help="Threads to use; the answer is the same for any number.")]
 Every = Annotated[bool, typer.Option("--all", help="Show every column, not only those that matter most.")]
 Why = Annotated[bool, typer.Option("--why", help="Say where every number comes from, and what would narrow it most.")]
@@ -69,4 +67,3 @@ Motion = Annotated[
     str | None,
     typer.Option("--motion", help="rotating, still, or 'rocking ± 20 deg' (a lone stack only).", metavar="MOTION"),
 ]
-OutPath = Path

@@ -33,34 +33,70 @@ def paper(output: str, ascii_only: bool) -> Paper:
     """The paper an answer is written on: the terminal's width, or 100 characters for a file."""
     if output != "-":
         return Paper(100, ascii_only)
-    encoding = (sys.stdout.encoding or "ascii").lower().replace("-", "")
+    encoding = (getattr(sys.stdout, "encoding", None) or "ascii").lower().replace("-", "")
     return Paper(max(60, min(shutil.get_terminal_size((80, 24)).columns, 200)), ascii_only or encoding != "utf8")
 
 
 def write(text: str, output: str, *, force: bool) -> None:
-    """Write an answer: nothing is lost if it fails half-way."""
+    """Write an answer: nothing is lost if it fails half-way. Raises FileAccessError."""
     if output == "-":
-        sys.stdout.write(text + "\n")
+        _print(text)
         return
     target = Path(output)
-    if target.exists() and not force:
-        raise FileAccessError("the file is there already", cure="give --force to overwrite it", place=Place(output))
-    import tempfile
-
     try:
-        descriptor, beside = tempfile.mkstemp(dir=target.parent or Path(), prefix=f".{target.name}.")
-        try:
-            with os.fdopen(descriptor, "w", encoding="utf-8") as out:
-                out.write(text + "\n")
-                out.flush()
-                os.fsync(out.fileno())
-            Path(beside).replace(target)
-        except BaseException:
-            Path(beside).unlink(missing_ok=True)
-            raise
+        target = target.resolve()  # a link stays a link
+        if target.exists() and not target.is_file():
+            raise FileAccessError("this is not a plain file", cure="name a file", place=Place(output))
+        if target.exists() and not force:
+            raise FileAccessError("the file is there already", cure="give --force to overwrite it", place=Place(output))
+        _replace(target, text)
     except OSError as error:
         reason = (error.strerror or str(error)).lower()
         raise FileAccessError(f"cannot be written: {reason}", place=Place(output)) from error
+
+
+def _print(text: str) -> None:
+    if sys.stdout is None:
+        raise FileAccessError("there is no standard output", cure="give -o FILE")
+    try:
+        sys.stdout.write(text + "\n")
+        sys.stdout.flush()
+    except BrokenPipeError:
+        raise  # the reader has had enough: no error
+    except OSError as error:
+        reason = (error.strerror or str(error)).lower()
+        raise FileAccessError(f"standard output cannot be written: {reason}") from error
+
+
+def _replace(target: Path, text: str) -> None:
+    """Write beside the target, sync, and rename over it."""
+    import tempfile
+
+    mode = target.stat().st_mode & 0o777 if target.exists() else 0o666 & ~_umask()
+    descriptor, beside = tempfile.mkstemp(dir=target.parent, prefix=f".{target.name}.")
+    try:
+        with os.fdopen(descriptor, "w", encoding="utf-8") as out:
+            out.write(text + "\n")
+            out.flush()
+            os.fsync(out.fileno())
+        Path(beside).chmod(mode)
+        Path(beside).replace(target)
+    except BaseException:
+        Path(beside).unlink(missing_ok=True)
+        raise
+
+
+def _umask() -> int:
+    mask = os.umask(0)
+    os.umask(mask)
+    return mask
+
+
+def refuse_unused(form: Format, **given: bool) -> None:
+    """Refuse options that only people's formats know, where a machine's is asked for. Raises UsageError."""
+    for name, value in given.items():
+        if value and form in (Format.json, Format.csv):
+            raise UsageError(f"--{name} does nothing for {form.value}", cure=f"leave --{name} out, or -f table")
 
 
 def say_notes(notes: Sequence[str], *, quiet: bool) -> None:

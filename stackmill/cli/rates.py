@@ -50,7 +50,7 @@ def rates(
 
     Example: stackmill rates --material W --material Al --energy "1 keV" --incidence "45 deg"
     """
-    from stackmill.cli.output import chosen_format, gathered_warnings, paper, say_notes, write
+    from stackmill.cli.output import chosen_format, gathered_warnings, paper, refuse_unused, say_notes, write
     from stackmill.errors import UsageError
     from stackmill.jobs import bare_job, load_job, overrides
     from stackmill.planning.rates import rate_rows
@@ -65,6 +65,7 @@ def rates(
         "motion": motion,
     }
     form = chosen_format(format_, output)
+    refuse_unused(form, why=why)
     with gathered_warnings(quiet=quiet, strict=strict) as warned:
         if file is not None:
             if gas is not None:
@@ -77,9 +78,9 @@ def rates(
         rows = rate_rows(job)
     say_notes(job.notes, quiet=quiet)
     if form is Format.json:
-        text = report.as_json(job, rows, warned)
+        text = report.as_json(job, rows, warned, paper(output, ascii_only))
     elif form is Format.csv:
-        text = report.as_csv(rows)
+        text = report.as_csv(rows, paper(output, ascii_only))
     else:
         text = report.as_text(job, rows, paper(output, ascii_only), markdown=form is Format.markdown, why=why)
     write(text, output, force=force)

@@ -55,12 +55,13 @@ def stops(
 
     Example: stackmill stops job.yaml --confidence "95 %"
     """
-    from stackmill.cli.output import chosen_format, gathered_warnings, paper, say_notes, write
+    from stackmill.cli.output import chosen_format, gathered_warnings, paper, refuse_unused, say_notes, write
     from stackmill.jobs import load_job, overrides
     from stackmill.planning.stops import stop_table
     from stackmill.report import stops as report
 
     form = chosen_format(format_, output)
+    refuse_unused(form, why=why, all=every)
     with gathered_warnings(quiet=quiet, strict=strict) as warned:
         job = load_job(
             file,
@@ -75,9 +76,9 @@ def stops(
         table = stop_table(job, seed=seed, jobs=jobs)
     say_notes(job.notes, quiet=quiet)
     if form is Format.json:
-        text = report.as_json(table, warned)
+        text = report.as_json(table, warned, paper(output, ascii_only))
     elif form is Format.csv:
-        text = report.as_csv(table)
+        text = report.as_csv(table, paper(output, ascii_only))
     else:
         text = report.as_text(table, paper(output, ascii_only), markdown=form is Format.markdown, every=every)
         if why:

@@ -125,9 +125,10 @@ def alike(features: Sequence[Feature], numbers: Sequence[int]) -> list[list[int]
 
 
 def make_up(feature: Feature) -> object:
-    """What a feature is made of; features that agree in this merge."""
+    """What a feature is made of and which layers it is in; features of one layer that agree in this merge."""
     films = (feature.cap, feature.base, *feature.liner)
-    return (feature.material, *((film.material, film.thickness) if film else None for film in films))
+    through = frozenset(feature.through) if len(feature.through) > 1 else None
+    return (feature.material, through, *((film.material, film.thickness) if film else None for film in films))
 
 
 @frozen
@@ -142,10 +143,15 @@ class Cut:
 
 @frozen
 class Section:
-    """What a layer has in one zone, top down; `cuts[stretch]` grows with the layer's height there."""
+    """What a layer has in one zone, top down; `cuts[stretch]` grows with the layer's height there.
+
+    feature: its number in the map's table (-1: fill); passes: whether it goes on in other layers.
+    """
 
     cuts: tuple[Cut, ...]
     stretch: int
+    feature: int = -1
+    passes: bool = False
 
 
 def fill_section(present: PresentLayer, inputs: StackInputs) -> Section:
@@ -158,8 +164,8 @@ def feature_section(present: PresentLayer, zone: Zone, inputs: StackInputs) -> S
     """A feature in one of its zones."""
     assert zone.feature is not None
     feature = present.layer.features[zone.feature]
-    films = inputs.films[present.index][zone.feature]
-    number = inputs.first_feature[present.index] + zone.feature
+    number = inputs.feature[present.index][zone.feature]
+    films, passes = inputs.films[number], len(feature.through) > 1
 
     def cut(material: str, part: int, shares: Array) -> Cut:
         return Cut(inputs.materials.index(material), number, part, shares)
@@ -170,9 +176,9 @@ def feature_section(present: PresentLayer, zone: Zone, inputs: StackInputs) -> S
         bottoms.append(cut(feature.base.material, BASE, inputs.share_of(films.base)))
     rest = -np.sum([np.zeros(len(inputs.inputs)), *(b.shares for b in bottoms)], axis=0)
     if zone.ring < len(feature.liner):
-        return Section((cut(feature.liner[zone.ring].material, LINER, rest), *bottoms), 0)
+        return Section((cut(feature.liner[zone.ring].material, LINER, rest), *bottoms), 0, number, passes)
     if feature.cap and films.cap is not None:
         cap = inputs.share_of(films.cap)
         caps = (cut(feature.cap.material, CAP, cap), cut(feature.material, CORE, rest - cap))
-        return Section((*caps, *bottoms), 1)
-    return Section((cut(feature.material, CORE, rest), *bottoms), 0)
+        return Section((*caps, *bottoms), 1, number, passes)
+    return Section((cut(feature.material, CORE, rest), *bottoms), 0, number, passes)

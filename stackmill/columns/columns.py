@@ -25,15 +25,16 @@ FILL, CORE, CAP, BASE, LINER = range(5)
 
 @frozen
 class ThicknessInput:
-    """One uncertain thickness.
+    """One uncertain thickness, or the height of a layer's top where the stack gives tops.
 
-    name: 'metal 2', 'metal 2 / bus / cap' or 'via 1 / plug / liner'; layer: index of its layer, from the top;
-    thickness: in nm.
+    name: 'metal 2', 'metal 2 / bus / cap' or 'via 1 / plug / liner', of a height 'metal 2 top'; layer: index of
+    its layer, from the top; thickness: in nm; is_height: whether it is a height over the substrate's top.
     """
 
     name: str
     layer: int
     thickness: Measure
+    is_height: bool = False
 
 
 @frozen
@@ -73,6 +74,8 @@ class RegionColumns:
     edge_distance_nm (C, C): from the centre of the row's column to the nearest point of the other's area, in
     plan, across the cell's edges too; inf on the diagonal.
     labels: one for each column, all different. where: finds the column of a point.
+    placeless (C,): columns made by a pattern density, which nobody knows the place of. They have the centre of
+    the column without it, and from there to it next to no distance; `plan` and `grid` give the column without.
     """
 
     name: str
@@ -93,6 +96,7 @@ class RegionColumns:
     edge_distance_nm: Array
     labels: tuple[str, ...]
     where: RegionPlan = field(repr=False, compare=False)
+    placeless: NDArray[np.bool_] = field(default_factory=lambda: np.zeros(0, dtype=bool))
 
     def label(self, column: int) -> str:
         """A column's sequence for people: the features met from the top down, or 'field'."""
@@ -114,9 +118,10 @@ class RegionColumns:
 class ColumnMap:
     """All regions of a die with their columns.
 
-    layers: names from the top down; features: (layer index, name) of every feature; materials: every material
-    used; inputs: the L uncertain thicknesses, the substrate's among them; cell: width and height (nm) of the
-    plan that repeats; seams: gaps that conformal layers close.
+    layers: names from the top down; features: (layer index, name) of every feature, the layer being the one it
+    is written in; materials: every material used; inputs: the L uncertain thicknesses or heights, the
+    substrate's thickness among them; cell: width and height (nm) of the plan that repeats; seams: gaps that
+    conformal layers close; scale_sd: relative sd of one error that all inputs but the substrate's share.
     """
 
     layers: tuple[str, ...]
@@ -126,3 +131,4 @@ class ColumnMap:
     cell: tuple[float, float]
     regions: tuple[RegionColumns, ...]
     seams: tuple[Seam, ...] = ()
+    scale_sd: float = 0.0

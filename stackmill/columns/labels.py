@@ -46,13 +46,16 @@ def _sequence(column: Labelled, layers: Sequence[str], inputs: StackInputs, *, f
     for slope in column.slopes:
         origin = f" from {slope.source}" if full else ""
         words[slope.layer] = [f"{layers[slope.layer]} slope {slope.number} of {CLASSES}{origin}"]
-    met: dict[tuple[int, int], list[tuple[int, int]]] = {}
+    met: dict[int, list[tuple[int, int]]] = {}
+    first: dict[int, int] = {}
     for material, layer, feature, part in column.kinds:
         if part != FILL:
-            met.setdefault((layer, feature), []).append((material, part))
-    for (layer, feature), parts in met.items():
-        origin = f"{layers[layer]} " if full else ""
-        several = len(inputs.films[layer][feature - inputs.first_feature[layer]].liner) > 1
+            first.setdefault(feature, layer)
+            met.setdefault(feature, []).append((material, part))
+    for feature, parts in met.items():
+        layer = first[feature]
+        origin = f"{layers[inputs.features[feature][0]]} " if full else ""
+        several = len(inputs.films[feature].liner) > 1
         word = f"{origin}{inputs.features[feature][1]}{_ring(parts, several, inputs)}"
         words.setdefault(layer, []).append(word)
     return " / ".join(word for layer in sorted(words) for word in words[layer]) or FIELD

@@ -5,10 +5,13 @@ Only the facts: documents know the lines of the file and the words.
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
+
+import numpy as np
 
 from stackmill.columns.carving import make_up
-from stackmill.columns.outlines import copies, overlap, primitive
+from stackmill.columns.outlines import Primitive, copies, overlap, primitive
+from stackmill.columns.spreading import spread
 from stackmill.documents.stack import Feature, Layer, Line, Stack, Via
 from stackmill.frozen import frozen
 
@@ -17,7 +20,10 @@ _ROUNDING_NM = 1e-6
 
 @frozen
 class Overlapping:
-    """Two features of one layer that share an area of the plan but not material and films."""
+    """Two features in one layer that share an area of the plan but not material and films.
+
+    layer: where they meet; either may be written in another layer, and go through this one.
+    """
 
     layer: str
     feature: str
@@ -37,7 +43,7 @@ class FilmsTooThick:
     """A feature that its films would fill.
 
     across: whether it is the liner's two sides across the feature's width, else cap, base and liner bottom
-    in the layer's thickness; films_nm: how thick they are together; room_nm: how much there is.
+    in the thickness of its layers; films_nm: how thick they are together; room_nm: how much there is.
     """
 
     layer: str
@@ -48,21 +54,47 @@ class FilmsTooThick:
 
 
 def overlaps(stack: Stack) -> tuple[Overlapping, ...]:
-    """Pairs of features that overlap and cannot merge."""
-    return tuple(found for layer in stack.layers for found in _overlaps(stack, layer))
-
-
-def _overlaps(stack: Stack, layer: Layer) -> Iterator[Overlapping]:
+    """Pairs of features that overlap and cannot merge, each pair in the uppermost layer where they meet."""
     if stack.cell is None:
+        return ()
+    cell, found = (stack.cell.x, stack.cell.y), spread(stack)
+    met: dict[frozenset[tuple[int, int]], Overlapping] = {}
+    for index, layer in enumerate(found.layers):
+        for one, other in _overlaps(layer, cell):
+            pair = frozenset((found.homes[index][one], found.homes[index][other]))
+            names = layer.features[one].name, layer.features[other].name
+            met.setdefault(pair, Overlapping(layer.name, *names))
+    return tuple(met.values())
+
+
+def _overlaps(layer: Layer, cell: tuple[float, float]) -> Iterator[tuple[int, int]]:
+    """The numbers of features that overlap, in their order."""
+    numbers = [k for k, feature in enumerate(layer.features) if feature.is_drawn]
+    features = [layer.features[k] for k in numbers]
+    made = [make_up(feature) for feature in features]
+    if len(set(made)) < 2:
         return
-    cell = (stack.cell.x, stack.cell.y)
-    figures = [primitive(feature.shape, cell) for feature in layer.features]
-    for k, one in enumerate(layer.features):
-        for j, other in enumerate(layer.features[:k]):
-            if make_up(one) == make_up(other):
-                continue
-            if any(overlap(figures[k], copy) for copy in copies(figures[j], cell, max(cell))):
-                yield Overlapping(layer.name, other.name, one.name)
+    figures = [primitive(feature.shape, cell) for feature in features]
+    near: dict[int, list[Primitive]] = {}
+    for k, j in _boxes_meet(figures, cell):
+        if made[j] == made[k]:
+            continue
+        if j not in near:
+            near[j] = copies(figures[j], cell, max(cell))
+        if any(overlap(figures[k], copy) for copy in near[j]):
+            yield numbers[j], numbers[k]
+
+
+def _boxes_meet(figures: Sequence[Primitive], cell: tuple[float, float]) -> Iterator[tuple[int, int]]:
+    """Pairs (k, j), j < k, of figures whose boxes meet, across the cell's edges too."""
+    box = np.array([figure.box() for figure in figures]).reshape(-1, 2, 2)
+    with np.errstate(invalid="ignore"):
+        middle, half = np.nan_to_num(box.mean(axis=2)), (box[..., 1] - box[..., 0]) / 2
+    for k in range(1, len(figures)):
+        away = middle[:k] - middle[k]
+        away -= np.array(cell) * np.round(away / np.array(cell))
+        for j in np.flatnonzero((np.abs(away) <= half[:k] + half[k]).all(axis=1)):
+            yield k, int(j)
 
 
 def outside(stack: Stack) -> tuple[OutsideCell, ...]:
@@ -74,7 +106,8 @@ def outside(stack: Stack) -> tuple[OutsideCell, ...]:
         OutsideCell(layer.name, feature.name)
         for layer in stack.layers
         for feature in layer.features
-        if not all(0.0 <= at <= size for at, size in zip(_centre(feature, cell), cell, strict=True))
+        if feature.is_drawn
+        and not all(0.0 <= at <= size for at, size in zip(_centre(feature, cell), cell, strict=True))
     )
 
 
@@ -88,19 +121,32 @@ def _centre(feature: Feature, cell: tuple[float, float]) -> tuple[float, float]:
 
 
 def liner_too_thick(stack: Stack) -> tuple[FilmsTooThick, ...]:
-    """Features whose films leave no core: in height, or across."""
+    """Features whose films leave no core: in height, in the region where they have the least, or across."""
     found = []
-    for layer in stack.layers:
+    for index, layer in enumerate(stack.layers):
         for feature in layer.features:
             liner = sum(film.thickness.value for film in feature.liner)
             ends = sum(film.thickness.value for film in (feature.cap, feature.base) if film)
-            for across, films, room in (
-                (False, liner + ends, layer.thickness.value),
-                (True, 2.0 * liner, _width(feature)),
-            ):
+            tests = [(False, liner + ends, _height(stack, index, feature))]
+            if feature.is_drawn:
+                tests.append((True, 2.0 * liner, _width(feature)))
+            for across, films, room in tests:
                 if films > 0.0 and films >= room - _ROUNDING_NM:
                     found.append(FilmsTooThick(layer.name, feature.name, across, films, room))
     return tuple(found)
+
+
+def _height(stack: Stack, index: int, feature: Feature) -> float:
+    """The least height a feature has in any region that has it."""
+    if not feature.through:
+        return stack.layers[index].thickness.value
+    layers = [layer for layer in stack.layers if layer.name in feature.through]
+    heights = [
+        sum(layer.thickness.value for layer in layers if layer.name not in region.absent.layers)
+        for region in stack.regions
+        if stack.layers[index].name not in region.absent.features_of
+    ]
+    return min((height for height in heights if height > 0.0), default=np.inf)
 
 
 def _width(feature: Feature) -> float:

@@ -64,19 +64,27 @@ class Rising:
     sources: list[Source] = field(default_factory=list)
     films: list[Level] = field(default_factory=list)
 
-    def build(self, layers: Sequence[PresentLayer], substrate: int) -> None:
-        """Lay down all layers, given from the bottom up."""
+    def begin(self, substrate: PresentLayer) -> None:
+        """Lay down the substrate."""
         self.sources = [Source("ground", None, np.zeros(len(self.inputs.inputs)))]
-        for present in layers:
-            if present.index == substrate:
-                self.levels.append(Level(present, top=self.sources[0].height))
-            elif present.layer.coverage == "conformal":
-                self._conformal(present)
-            elif present.has_fill:
-                self._planarised(present)
-            else:
-                self._unfilled(present)
+        self.levels.append(Level(substrate, top=self.sources[0].height))
+
+    def lay(self, present: PresentLayer, highest: Array) -> None:
+        """Lay down one more layer; a planarised one ends its thickness above `highest` (L,)."""
+        if present.layer.coverage == "conformal":
+            self._conformal(present)
+        elif present.has_fill:
+            self._planarised(present, highest)
+        else:
+            self._unfilled(present)
+
+    def finish(self) -> None:
+        """Say that no layer follows."""
         self._finish_films()
+
+    def highest(self) -> Array:
+        """The highest point there is so far (L,)."""
+        return higher(self.inputs, [source.flat() for source in self.sources])
 
     def _conformal(self, present: PresentLayer) -> None:
         number = self.inputs.layer[present.index]
@@ -85,10 +93,8 @@ class Rising:
         self.films.append(Level(present))
         self.levels.append(self.films[-1])
 
-    def _planarised(self, present: PresentLayer) -> None:
+    def _planarised(self, present: PresentLayer, highest: Array) -> None:
         self._finish_films()
-        tops = [source.flat() for source in self.sources]
-        highest = max(tops, key=lambda top: float(self.inputs.nm(top)))
         top = highest + self._thickness(present)
         self.levels.append(Level(present, plan=self._zones(present), top=top))
         self.sources = [Source("ground", None, top)]
@@ -173,6 +179,30 @@ class Rising:
             assert level.plan is not None
             return np.where(combinations[:, level.plan, None] > 0, raised, below)
         return raised
+
+
+def raised(
+    regions: Sequence[Sequence[PresentLayer]], inputs: StackInputs, cell: tuple[float, float], draw: Draw
+) -> list[Rising]:
+    """All regions (layers from the substrate up) built up side by side: some layers are level over the whole die."""
+    risings = [Rising(inputs, cell, draw) for _ in regions]
+    for rising, layers in zip(risings, regions, strict=True):
+        rising.begin(layers[0])
+    stacks = [{present.index: present for present in layers} for layers in regions]
+    for index in reversed(range(regions[0][0].index)):
+        peaks = [rising.highest() for rising in risings]
+        for rising, peak, present in zip(risings, peaks, stacks, strict=True):
+            if index in present:
+                die = present[index].layer.level == "die"
+                rising.lay(present[index], higher(inputs, peaks) if die else peak)
+    for rising in risings:
+        rising.finish()
+    return risings
+
+
+def higher(inputs: StackInputs, heights: Sequence[Array]) -> Array:
+    """The highest at best values of some heights (L,)."""
+    return max(heights, key=lambda height: float(inputs.nm(height)))
 
 
 def _name(present: PresentLayer, below: Source) -> str:

@@ -26,11 +26,19 @@ def read_stack(source: Source, *, file: str = "") -> Document[Stack]:
 
 
 def read_mill(source: Source, *, file: str = "") -> Document[Mill]:
-    """Read a mill file. Raises InputErrors, FileAccessError."""
-    from stackmill.documents.mill import Mill
-    from stackmill.documents.reading import read_document
+    """Read a mill file, and the beam map it may name, beside it. Raises InputErrors, FileAccessError."""
+    from pathlib import Path
 
-    return read_document(Mill, source, file=file)
+    from stackmill.documents.mill import Mill
+    from stackmill.documents.profile import with_map
+    from stackmill.documents.reading import read_document
+    from stackmill.errors import InputErrors
+
+    document = read_document(Mill, source, file=file)
+    document, errors = with_map(document, source.parent if isinstance(source, Path) else Path())
+    if errors:
+        raise InputErrors(errors)
+    return document
 
 
 def read_recipe(source: Source, *, file: str = "") -> Document[Recipe]:

@@ -75,7 +75,7 @@ def _sentences(item: Any, model: type[BaseModel], tree: Tree) -> Iterator[tuple[
     elif isinstance(cause, UnitsError):
         yield Sentence(cause.what, cause.cure), path
     elif kind == "literal_error":
-        choices = list(typing.get_args(_annotation(model_at(model, item["loc"][:-1]), key)))
+        choices = choices_of(_annotation(model_at(model, item["loc"][:-1]), key))
         yield wording.not_a_choice(key.replace("_", " "), str(item["input"]), choices), path
     elif kind == "no_kind":
         yield Sentence(item["msg"], item["ctx"]["cure"]), path
@@ -122,6 +122,13 @@ def example_of(model: type[BaseModel], key: str) -> str:
         if key in (name, field.alias) and field.examples:
             return f"{key}: {field.examples[0]}"
     return ""
+
+
+def choices_of(annotation: Any) -> list[str]:
+    """The words that a Literal allows, wherever it stands in an annotation."""
+    if typing.get_origin(annotation) is typing.Literal:
+        return [str(choice) for choice in typing.get_args(annotation)]
+    return [choice for inner in typing.get_args(annotation) for choice in choices_of(inner)]
 
 
 def _annotation(model: type[BaseModel], key: str) -> Any:

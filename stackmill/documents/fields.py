@@ -111,7 +111,7 @@ def _error_reader(limits: Limits) -> Callable[[Any], Measure]:
 
 def _schema(limits: Limits, form: str) -> WithJsonSchema:
     name = KINDS[limits.kind].name
-    return WithJsonSchema({"type": "string", "description": f"{name}, written as {form}"})
+    return WithJsonSchema({"type": "string", "description": f"{name}, written as {form}", "examples": [form]})
 
 
 # A third of an atomic layer is no film, and 1 mm is thicker than any wafer.
@@ -125,6 +125,8 @@ _PLAN = Limits("length", -1e7, 1e7, "is further away than a die is wide", "is fu
 # The largest wafer is 450 mm across.
 _ON_DIE = Limits("length", -4.5e8, 4.5e8, "is off any wafer", "is off any wafer", _SIGN)
 # Ions slower than 10 eV sputter nothing; above 50 keV they are implanted more than they mill.
+# Narrower than 0.1 mm it is no broad beam; 1 m is wider than any mill.
+_WIDTH = Limits("length", 1e5, 1e9, "is narrower than any broad beam", "is wider than any mill", _SIGN)
 _ENERGY = Limits("energy", 10.0, 5e4, "is too slow to mill", "is beyond any ion mill", "mills run at 0.1 to 10 keV")
 _INCIDENCE = Limits(
     "angle",
@@ -162,6 +164,19 @@ _SOME_SHARE = Limits(
     "write up to 100 %",
     above=True,
 )
+_DENSITY = Limits(
+    "fraction",
+    0.0,
+    1.0,
+    "is no share of anything",
+    "leaves nothing between",
+    "write a share below 100 %, or make the feature solid in a region",
+    above=True,
+    below=True,
+)
+# A scale off by a third is no measurement.
+_SCALE = Limits("fraction", 0.0, 0.3, "is no error", "is no measured scale", "give the scale's sd, as in ± 2 %")
+_UNEVEN = Limits("fraction", 0.0, 1.0, "is no error", "is no uniformity", "give (max-min)/(max+min), as in ± 3 %")
 _CHANCE = Limits(
     "fraction",
     0.0,
@@ -190,6 +205,10 @@ Divergence = Annotated[float, PlainValidator(_number_reader(_DIVERGENCE)), _sche
 ZeroError = Annotated[Measure, PlainValidator(_error_reader(_ZERO_ERROR)), _schema(_ZERO_ERROR, "± 1 deg")]
 Share = Annotated[Measure, PlainValidator(_measure_reader(_SHARE)), _schema(_SHARE, "3 % ± 1 %")]
 SomeShare = Annotated[float, PlainValidator(_number_reader(_SOME_SHARE)), _schema(_SOME_SHARE, "50 %")]
+PatternDensity = Annotated[float, PlainValidator(_number_reader(_DENSITY)), _schema(_DENSITY, "20 %")]
+ScaleError = Annotated[Measure, PlainValidator(_error_reader(_SCALE)), _schema(_SCALE, "± 2 %")]
+Uniformity = Annotated[Measure, PlainValidator(_error_reader(_UNEVEN)), _schema(_UNEVEN, "± 3 %")]
+Distance = Annotated[float, PlainValidator(_number_reader(_WIDTH)), _schema(_WIDTH, "10 mm")]
 Chance = Annotated[float, PlainValidator(_number_reader(_CHANCE)), _schema(_CHANCE, "90 %")]
 Sidewall = Annotated[float, PlainValidator(_number_reader(_SIDEWALL)), _schema(_SIDEWALL, "70 %")]
 Duration = Annotated[float, PlainValidator(_number_reader(_DURATION)), _schema(_DURATION, "25 min")]
@@ -255,7 +274,7 @@ def _on_off(value: Any) -> bool:
     return choices[word]
 
 
-OnOff = Annotated[bool, PlainValidator(_on_off), WithJsonSchema({"enum": ["on", "off", "yes", "no"]})]
+OnOff = Annotated[bool, PlainValidator(_on_off), WithJsonSchema({"enum": ["on", "off", "yes", "no", True, False]})]
 
 
 def split_reference(text: str) -> tuple[str, str | None]:

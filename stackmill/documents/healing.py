@@ -7,13 +7,12 @@ about a replaced value is not the engineer's fault and is dropped; the document 
 from __future__ import annotations
 
 import copy
-import typing
 from typing import Any
 
 from pydantic import BaseModel, ValidationError
 from pydantic_core import ErrorDetails
 
-from stackmill.documents.complaints import in_file, model_at
+from stackmill.documents.complaints import choices_of, in_file, model_at
 from stackmill.documents.marks import KeyPath
 from stackmill.units import UnitsError
 
@@ -62,7 +61,7 @@ def _replacement(item: ErrorDetails, owner: type[BaseModel]) -> Any:
     if found is None or key in _NAMES:
         return None
     if item["type"] == "literal_error":
-        return typing.get_args(found.annotation)[0]
+        return next(iter(choices_of(found.annotation)), None)
     unreadable = isinstance(item.get("ctx", {}).get("error"), UnitsError)
     return found.examples[0] if found.examples and (unreadable or item["type"] == "missing") else None
 

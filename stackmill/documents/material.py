@@ -11,6 +11,7 @@ from typing import Annotated, Any, ClassVar, Literal, get_args
 from pydantic import BeforeValidator, Field, PlainValidator, WithJsonSchema, model_validator
 
 from stackmill.documents.fields import CurrentDensity, Energy, Incidence, Label, Rate, one_or_more
+from stackmill.documents.film_forms import Mixture, RelativeRateText
 from stackmill.documents.reading import Record
 from stackmill.documents.wording import refuse
 from stackmill.units import Measure, UnitsError, quoted, read_measure, read_number
@@ -187,6 +188,15 @@ class MeltingEntry(Record):
     seen: YesNo
 
 
+class AlarmEntry(Record):
+    """What goes wrong with the material when it gets hot, and at what temperature."""
+
+    what: str
+    temperature: Temperature
+    source: str
+    seen: YesNo
+
+
 class ToxicityEntry(Record):
     """A short caution; local rules and trained staff decide."""
 
@@ -222,6 +232,7 @@ class LibraryEntry(Record):
     angular: AngularEntry
     estimate: YesNo = False
     melting: MeltingEntry | None = None
+    alarms: tuple[AlarmEntry, ...] = ()
     toxicity: ToxicityEntry | None = None
     disagreements: tuple[DisagreementEntry, ...] = ()
     notes: str = ""
@@ -244,6 +255,12 @@ class AtomsFile(Record):
     """The elements' table."""
 
     atoms: dict[str, AtomEntry]
+
+
+class CautionsFile(Record):
+    """Cautions an element brings into any compound of it, by symbol."""
+
+    cautions: dict[str, ToxicityEntry]
 
 
 class SourceEntry(Record):
@@ -282,15 +299,19 @@ class MeasuredRate(Record):
 
 
 class LabMaterial(Record):
-    """A lab's own material: lays its keys over the library's entry of that name, or is `like` another one.
+    """A lab's own material: lays its keys over the library's entry of that name, or is told by other materials.
 
-    A material the library does not know and that is like no other needs composition and density; its yield is
-    then an estimate. density in g/cm3; formation: heat of formation per formula unit of composition, eV.
+    like: a copy of another one; rate: mills at a multiple of another one's rate; mixture: volume shares of
+    others. A material the library does not know and that is told by none of these needs composition and
+    density; its yield is then an estimate. density in g/cm3; formation: heat of formation per formula unit of
+    composition, eV.
     """
 
     what: ClassVar[str] = "material"
     name: Label = Field(examples=["SiO2 PECVD"])
     like: Label | None = None
+    rate: RelativeRateText = None
+    mixture: Mixture = None
     title: Label | None = None
     kind: LabKind = None
     aliases: Annotated[tuple[Label, ...], BeforeValidator(one_or_more)] = ()
@@ -300,16 +321,17 @@ class LabMaterial(Record):
     measured_rate: Annotated[tuple[MeasuredRate, ...], BeforeValidator(one_or_more)] = ()
     toxicity: Label | None = None
 
+    @property
+    def references(self) -> tuple[str, ...]:
+        """The names of the materials it is told by."""
+        told = (self.like, self.rate.material if self.rate else None)
+        return tuple(name for name in (*told, *(self.mixture or ())) if name is not None)
+
     @model_validator(mode="after")
     def _complete(self) -> LabMaterial:
         if not self.name:
             raise refuse("this material has no name", "give it one", "name")
-        if self.composition is not None and self.like is not None:
-            raise refuse(
-                "like and composition stand together; one of them would be ignored",
-                "keep one of the two",
-                "composition",
-            )
+        self._told_one_way()
         if self.composition is not None and self.density is None:
             raise refuse("a composition needs a density beside it", "add density: 2.2 g/cm3 ± 5 %", "composition")
         if self.formation is not None and self.composition is None:
@@ -319,6 +341,19 @@ class LabMaterial(Record):
                 "formation",
             )
         return self
+
+    def _told_one_way(self) -> None:
+        """Refuse two keys of which one would be ignored."""
+        ways = [key for key in ("like", "rate", "mixture", "composition") if getattr(self, key) is not None]
+        if len(ways) > 1:
+            raise refuse(
+                f"{ways[0]} and {ways[1]} stand together; one of them would be ignored",
+                "keep one of the two",
+                ways[1],
+            )
+        if self.density is not None and ways and ways[0] in ("rate", "mixture"):
+            cure = "leave it out" if ways[0] == "rate" else "leave it out; the parts' densities are used"
+            raise refuse(f"a density beside {ways[0]} would be ignored", cure, "density")
 
 
 class MaterialsFile(Record):

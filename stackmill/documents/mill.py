@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+import math
 from typing import ClassVar, Literal
 
 from pydantic import Field
 
-from stackmill.documents.fields import CurrentDensity, Divergence, Label, OnOff, Share, ZeroError
+from stackmill.documents.fields import CurrentDensity, Divergence, Label, OnOff, Share, Uniformity, ZeroError
+from stackmill.documents.profile import Profile
 from stackmill.documents.reading import Record
 from stackmill.units import Measure
 
@@ -32,7 +34,9 @@ class Mill(Record):
     """A broad-beam ion mill.
 
     current_density (mA/cm2) in the plane normal to the beam; divergence: half-angle (deg) that holds 63 %
-    (1 - 1/e) of the current; doubly_charged: share of the current carried by doubly charged ions.
+    (1 - 1/e) of the current; doubly_charged: share of the current carried by doubly charged ions; profile: how
+    the current density changes across the die; uniformity: (max - min) / (max + min) of it where its course is
+    not known.
     """
 
     what: ClassVar[str] = "mill file"
@@ -41,9 +45,19 @@ class Mill(Record):
     current_density: CurrentDensity = Field(examples=["0.5 mA/cm2 ± 6 %"])
     divergence: Divergence = 0.0
     doubly_charged: Share = Measure(0.0)
+    profile: Profile | None = None
+    uniformity: Uniformity = Measure(0.0)
     stage: Stage = Field(default_factory=Stage)
     mount: Mount = Mount()
     neutraliser: OnOff = True
+
+    @property
+    def uniformity_sd(self) -> float:
+        """Relative sd of the current density from region to region.
+
+        Values spread evenly over ± u have an sd of u / sqrt(3).
+        """
+        return self.uniformity.sd / math.sqrt(3.0)
 
 
 DEFAULT_MILL = """\

@@ -5,28 +5,33 @@ All lengths are held in nm. A `Measure` carries value, sd and across-die sd.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable, Iterator
-from typing import Annotated, ClassVar, Literal
+from collections.abc import Iterator, Mapping
+from typing import Annotated, Any, ClassVar, Literal
 
 from pydantic import BeforeValidator, Field, model_validator
 
-from stackmill.documents import wording
 from stackmill.documents.fields import (
     DiePosition,
     Label,
     Name,
+    PatternDensity,
     PlanPosition,
+    ScaleError,
     Sidewall,
     Size,
     Thickness,
     one_or_more,
 )
 from stackmill.documents.reading import Record
+from stackmill.documents.stack_rules import same_names, stack_refusals
 from stackmill.documents.wording import Refusal, Refusals, Sentence
-from stackmill.units import quoted
+from stackmill.units import Measure, quoted
 
 NO_FILL = "none"
 """The material of a layer that has nothing between its features."""
+
+
+_FROM_TOPS = Measure(1.0)  # stands in for a thickness until the tops of all layers are known
 
 
 class Film(Record):
@@ -77,8 +82,10 @@ Shape = Line | Via | Block
 class Feature(Record):
     """A line, via or block of another material inside a layer, with the films on it.
 
-    Exactly one of line, via and block; liner: films on its sides and bottom, outermost first; cap: on its
-    top; base: under it. Sizes are outer: the films are carved inside the outline.
+    Exactly one of line, via, block and pattern_density (a share of the area between the layer's other features,
+    anywhere); liner: films on its sides and bottom, outermost first; cap: on its top; base: under it; through:
+    the layers it goes through, its own among them (none: its own only). Sizes are outer: the films are carved
+    inside the outline.
     """
 
     what: ClassVar[str] = "feature"
@@ -87,20 +94,27 @@ class Feature(Record):
     line: Line | None = None
     via: Via | None = None
     block: Block | None = None
+    pattern_density: PatternDensity | None = None
     liner: Annotated[tuple[Film, ...], BeforeValidator(one_or_more)] = ()
     cap: Film | None = None
     base: Film | None = None
+    through: Annotated[tuple[Label, ...], BeforeValidator(one_or_more)] = ()
+
+    @property
+    def is_drawn(self) -> bool:
+        """Whether it has an outline, and so a place in the plan."""
+        return self.pattern_density is None
 
     @property
     def shape(self) -> Shape:
-        """The outline: the one of line, via and block that is given."""
+        """The outline: the one of line, via and block that is given. Only drawn features have one."""
         shape = self.line or self.via or self.block
         assert shape is not None
         return shape
 
     @model_validator(mode="after")
     def _one_shape(self) -> Feature:
-        given = [key for key in ("line", "via", "block") if getattr(self, key) is not None]
+        given = [key for key in ("line", "via", "block", "pattern_density") if getattr(self, key) is not None]
         if not given:
             raise Refusal(
                 Sentence(
@@ -109,25 +123,41 @@ class Feature(Record):
                 )
             )
         if len(given) > 1:
-            says = Sentence(f"feature {quoted(self.name)} has a {given[0]} and a {given[1]}", "keep one of them")
-            raise Refusal(says, given[1])
+            one, other = (key.replace("_", " ") for key in given[:2])
+            raise Refusal(
+                Sentence(f"feature {quoted(self.name)} has a {one} and a {other}", "keep one of them"), given[1]
+            )
+        if self.through and not self.is_drawn:
+            what = f"feature {quoted(self.name)} has a pattern density and cannot go through several layers"
+            raise Refusal(Sentence(what, "give each layer its own"), "through")
         return self
 
 
 class Layer(Record):
     """One level of the stack: what fills it between its features, and how it lies on what is below.
 
-    coverage: `planarised` fills and ends flat, `conformal` has the same thickness over everything; sidewall:
-    the share of the thickness that a conformal film has on a wall.
+    thickness, or the height of its top over the substrate's (`top`; its thickness is then worked out); coverage:
+    `planarised` fills and ends flat, `conformal` has the same thickness over everything; sidewall: the share of
+    the thickness that a conformal film has on a wall; level: whether a planarised layer ends at one height in
+    each region, or all over the die.
     """
 
     what: ClassVar[str] = "layer"
     name: Name = Field(examples=["metal 2"])
     material: Label = Field(examples=["SiO2 PECVD"])
     thickness: Thickness = Field(examples=["600 nm ± 8 %"])
+    top: Thickness | None = None
     coverage: Literal["planarised", "conformal"] = "planarised"
     sidewall: Sidewall = 1.0
+    level: Literal["region", "die"] = "region"
     features: tuple[Feature, ...] = ()
+
+    @model_validator(mode="before")
+    @classmethod
+    def _thickness_from_top(cls, given: Any) -> Any:
+        if isinstance(given, Mapping) and given.get("top") is not None and "thickness" not in given:
+            return {**given, "thickness": _FROM_TOPS}
+        return given
 
     @model_validator(mode="after")
     def _consistent(self) -> Layer:
@@ -137,6 +167,8 @@ class Layer(Record):
         return self
 
     def _refusals(self) -> Iterator[Refusal]:
+        if self.top is not None and self.thickness is not _FROM_TOPS:
+            yield Refusal(Sentence("a layer has a thickness or a top, and not both", "keep one of them"), "top")
         if "sidewall" in self.model_fields_set and self.coverage != "conformal":
             cure = "add coverage: conformal, or leave sidewall out"
             yield Refusal(Sentence("only a conformal layer has a sidewall share", cure), "sidewall")
@@ -148,7 +180,24 @@ class Layer(Record):
         if self.material == NO_FILL and not self.features and self.coverage == "planarised":
             cure = "add its features, or remove the layer"
             yield Refusal(Sentence(f"layer {quoted(self.name)} has neither fill nor features", cure), "material")
-        yield from _same_names("feature", [f.name for f in self.features], lambda k: ("features", k, "name"))
+        if "level" in self.model_fields_set and (self.coverage == "conformal" or self.material == NO_FILL):
+            cure = "make it planarised and name its material, or leave level out"
+            yield Refusal(Sentence("only a planarised layer with a fill ends level", cure), "level")
+        yield from same_names("feature", [f.name for f in self.features], lambda k: ("features", k, "name"))
+        yield from self._density_refusals()
+
+    def _density_refusals(self) -> Iterator[Refusal]:
+        dense = [k for k, feature in enumerate(self.features) if not feature.is_drawn]
+        if dense and self.material == NO_FILL:
+            says = Sentence(
+                "a pattern density needs a fill around it", "name the layer's material, or draw the feature"
+            )
+            yield Refusal(says, "features", dense[0], "pattern_density")
+        for k in dense[1:]:
+            says = Sentence(
+                f"layer {quoted(self.name)} has a second pattern density", "add them up, or draw one of them"
+            )
+            yield Refusal(says, "features", k, "pattern_density")
 
 
 class Point(Record):
@@ -185,87 +234,35 @@ class Cell(Record):
     y: Size = Field(examples=["4.8 um"])
 
 
+class Measured(Record):
+    """How the thicknesses were measured. scale: the error they all share, such as a microscope's."""
+
+    what: ClassVar[str] = "'measured'"
+    scale: ScaleError = Field(examples=["± 2 %"])
+
+
 class Stack(Record):
     """A die: its layers from the top down, the last being the substrate, and its regions."""
 
     what: ClassVar[str] = "stack file"
     title: Label = ""
+    measured: Measured | None = None
     cell: Cell | None = None
     layers: tuple[Layer, ...] = Field(examples=["[{name: substrate, material: Si, thickness: 300 um}]"])
     regions: tuple[Region, ...] = (Region(name="die"),)
 
     @model_validator(mode="after")
     def _consistent(self) -> Stack:
-        refusals = list(self._refusals())
+        refusals = list(stack_refusals(self))
         if refusals:
             raise Refusals(refusals)
+        if any(layer.thickness is _FROM_TOPS for layer in self.layers):
+            from stackmill.documents.heights import with_thicknesses
+
+            # The record is still being made: nobody has seen it without its thicknesses.
+            self.__dict__["layers"] = with_thicknesses(self.layers)
         return self
 
     def layer(self, name: str) -> Layer | None:
         """The layer of that name, or None."""
         return next((layer for layer in self.layers if layer.name == name), None)
-
-    def _refusals(self) -> Iterator[Refusal]:
-        if not self.layers:
-            yield Refusal(Sentence("this stack has no layers", "list them from the top down"), "layers")
-            return
-        if not self.regions:
-            yield Refusal(Sentence("this stack has no regions", "leave the key out, or name one"), "regions")
-        yield from _same_names("layer", [layer.name for layer in self.layers], lambda k: ("layers", k, "name"))
-        yield from _same_names("region", [r.name for r in self.regions], lambda k: ("regions", k, "name"))
-        patterned = next((k for k, layer in enumerate(self.layers) if layer.features), None)
-        if self.cell is None and patterned is not None:
-            says = Sentence("features need a cell to lie in", "add cell: {x: 4.8 um, y: 4.8 um}")
-            yield Refusal(says, "layers", patterned, "features")
-        yield from self._substrate_refusals(len(self.layers) - 1)
-        for k, region in enumerate(self.regions):
-            for refusal in self._region_refusals(region):
-                yield Refusal(refusal.says, "regions", k, *refusal.path)
-
-    def _substrate_refusals(self, last: int) -> Iterator[Refusal]:
-        substrate = self.layers[last]
-        for wrong, key, what in (
-            (bool(substrate.features), "features", "cannot have features"),
-            (substrate.coverage == "conformal", "coverage", "cannot be conformal"),
-            (substrate.material == NO_FILL, "material", "needs a material"),
-        ):
-            if wrong:
-                says = Sentence(f"the last layer is the substrate and {what}", "add the substrate below it")
-                yield Refusal(says, "layers", last, key)
-
-    def _region_refusals(self, region: Region) -> Iterator[Refusal]:
-        names = [layer.name for layer in self.layers]
-        patterned = {layer.name: [f.name for f in layer.features] for layer in self.layers if layer.features}
-        for k, name in enumerate(region.absent.layers):
-            if name not in names:
-                yield Refusal(wording.no_such("layer", name, names), "absent", "layers", k)
-            elif name == names[-1]:
-                cure = "keep at least the substrate"
-                yield Refusal(Sentence(f"region {quoted(region.name)} removes everything", cure), "absent", "layers", k)
-        for k, name in enumerate(region.absent.features_of):
-            if name not in patterned:
-                yield Refusal(self._no_features(name, patterned, names), "absent", "features_of", k)
-        for name, feature in region.solid.items():
-            if name not in patterned:
-                yield Refusal(self._no_features(name, patterned, names), "solid", name)
-            elif feature not in patterned[name]:
-                yield Refusal(wording.no_such_feature(name, feature, patterned[name]), "solid", name)
-            elif name in region.absent.layers or name in region.absent.features_of:
-                says = Sentence(f"layer {quoted(name)} is both absent and solid here", "keep one of them")
-                yield Refusal(says, "solid", name)
-
-    @staticmethod
-    def _no_features(name: str, patterned: Iterable[str], names: Iterable[str]) -> Sentence:
-        if name in names:
-            cure = f"layers with features: {wording.listed(list(patterned), last='and')}" if patterned else ""
-            return Sentence(f"layer {quoted(name)} has no features", cure or "leave this out")
-        return wording.no_such("layer", name, list(patterned))
-
-
-def _same_names(what: str, names: Iterable[str], path: Callable[[int], tuple[str | int, ...]]) -> Iterator[Refusal]:
-    seen: set[str] = set()
-    for k, name in enumerate(names):
-        if name in seen:
-            says = Sentence(f"a second {what} is called {quoted(name)}", "give each a name of its own")
-            yield Refusal(says, *path(k))
-        seen.add(name)

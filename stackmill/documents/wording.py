@@ -256,6 +256,18 @@ def keeps_more_than_there_is(what: str, thickness: str) -> Sentence:
     return Sentence(f"{what} is only {thickness} thick to begin with", "ask for less")
 
 
+def off_the_map(region: str) -> Sentence:
+    """A region where the beam was not measured."""
+    return Sentence(f"region {quoted(region)} lies outside the mill's beam map", "move it, or measure a larger map")
+
+
+def out_of_beam(region: str) -> Sentence:
+    """A region that the beam's formula leaves without current."""
+    return Sentence(
+        f"region {quoted(region)} lies where the mill's profile leaves no beam", "check 'at' and the profile"
+    )
+
+
 def overlapping(first: str, second: str) -> Sentence:
     """Two features of one layer in one place."""
     what = f"features {quoted(first)} and {quoted(second)} overlap"

@@ -77,11 +77,7 @@ class Sample:
         what = job.recipe.steps[step]
         if isinstance(what, Process):
             return np.stack([self._process_rate(what, name) for name in job.column_map.materials])
-        charged = self.inputs.job.mill.doubly_charged
-        share = np.full(self.draws, charged.value)
-        if charged.sd:
-            share = np.clip(share + charged.sd * self.rows["doubly charged share"], 0.0, 1.0)
-        return self.inputs.model.rate_nm_per_s(step, parameters=self.parameters, doubly_charged=share)
+        return self.inputs.model.rate_nm_per_s(step, self.parameters)
 
     def _process_rate(self, step: Process, material: str) -> Array:
         name = material if material in step.rates else OTHER
@@ -101,8 +97,6 @@ class Sample:
 
 def _names(job: Job, model: RateModel) -> Iterator[str]:
     yield from model.belief.names
-    if job.mill.doubly_charged.sd:
-        yield "doubly charged share"
     for i in job.column_map.inputs:
         if i.thickness.sd:
             yield f"thickness of {i.name}"

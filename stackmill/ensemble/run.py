@@ -14,7 +14,7 @@ from stackmill.ensemble.inputs import Inputs, Sample
 from stackmill.frozen import frozen
 from stackmill.jobs import Job
 from stackmill.timing.fall import NEVER, Fall, area_quantile, fall
-from stackmill.timing.plan import LOST_SHARE, Ground, Spot, fall_steps, ground
+from stackmill.timing.plan import ANY_SHARE, LOST_SHARE, Ground, Spot, fall_steps, ground
 
 Array = NDArray[np.float64]
 
@@ -155,7 +155,8 @@ def _first_lost(
     lost_at: list[tuple[int, int, int]] = []
     for keep, spots, times in spoilt:
         stacked = np.stack(times)
-        moment = area_quantile(stacked, np.array([spot.area for spot in spots]), LOST_SHARE)
+        share = LOST_SHARE if keep < 0 else ANY_SHARE
+        moment = area_quantile(stacked, np.array([spot.area for spot in spots]), share)
         earlier = moment < lost_s
         lost_by = np.where(earlier, len(lost_at) + np.argmax(stacked == moment, axis=0), lost_by)
         lost_s = np.where(earlier, moment, lost_s)

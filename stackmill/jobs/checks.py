@@ -14,6 +14,7 @@ from stackmill.documents.stack import NO_FILL, Feature, Layer, Line, Region, Sta
 from stackmill.documents.wording import Sentence
 from stackmill.errors import InputError
 from stackmill.frozen import frozen
+from stackmill.jobs.beam import beam_over
 from stackmill.jobs.files import JobDocuments
 from stackmill.jobs.materials import Found, in_stack
 from stackmill.units import plain, quoted
@@ -26,11 +27,16 @@ Complaint = tuple[Sentence, KeyPath]
 
 @frozen
 class Fit:
-    """How the files of a job fit together. column_map: None where the stack has errors."""
+    """How the files of a job fit together.
+
+    column_map: None where the stack has errors; beam_share: the beam's current density in each region, as a
+    share of the mill's.
+    """
 
     column_map: ColumnMap | None
     notes: tuple[str, ...]
     errors: tuple[InputError, ...]
+    beam_share: tuple[float, ...] = ()
 
 
 def check_fit(documents: JobDocuments, stack: Stack, recipe: Recipe, found: Found) -> Fit:
@@ -41,10 +47,12 @@ def check_fit(documents: JobDocuments, stack: Stack, recipe: Recipe, found: Foun
     errors = _placed(documents.job, _wants(documents, stack)) + _placed(documents.recipe, steps)
     if not documents.stack.healed:
         errors += _placed(documents.stack, _geometry(stack))
+    beam = beam_over(stack, documents.mill.model)
+    errors += _placed(documents.stack, beam.complaints)
     column_map = None
     if not errors and not found.errors and not documents.errors:
         column_map = _build(documents, stack, errors)
-    return Fit(column_map, tuple(_notes(stack, recipe)), tuple(errors))
+    return Fit(column_map, (*_notes(stack, recipe), *beam.notes), tuple(errors), beam.share)
 
 
 def _placed(document: Document[Any], complaints: Iterable[Complaint]) -> list[InputError]:
@@ -66,11 +74,21 @@ def has_layer(region: Region, layer: Layer) -> bool:
     return layer.material != NO_FILL or layer.name not in region.absent.features_of
 
 
-def has_feature(region: Region, layer: Layer, feature: str) -> bool:
-    """Whether a region has a feature of a layer."""
-    if layer.name in region.absent.layers or layer.name in region.absent.features_of:
+def features_in(stack: Stack, layer: Layer) -> Iterator[tuple[Layer, Feature]]:
+    """Every feature that is in a layer, with the layer it is written in: its own, then those that go through it."""
+    yield from ((layer, feature) for feature in layer.features)
+    for home in stack.layers:
+        if home is not layer:
+            yield from ((home, feature) for feature in home.features if layer.name in feature.through)
+
+
+def has_feature(stack: Stack, region: Region, layer: Layer, feature: str) -> bool:
+    """Whether a region has a feature in a layer."""
+    homes = {one.name: home for home, one in features_in(stack, layer)}
+    if layer.name in region.absent.layers or homes[feature].name in region.absent.features_of:
         return False
-    return region.solid.get(layer.name, feature) == feature
+    solid = [one for one, home in homes.items() if region.solid.get(home.name) == one]
+    return not solid or feature in solid
 
 
 def _reference(stack: Stack, wanted: Goal | Keep | Target | Seen, at: KeyPath) -> Iterator[Complaint]:
@@ -81,7 +99,7 @@ def _reference(stack: Stack, wanted: Goal | Keep | Target | Seen, at: KeyPath) -
         return
     what, name = f"layer {quoted(layer.name)}", wanted.feature
     if name is not None:
-        features = [feature.name for feature in layer.features]
+        features = [feature.name for _, feature in features_in(stack, layer)]
         if name not in features:
             yield wording.no_such_feature(layer.name, name, features), (*at, "feature")
             return
@@ -90,7 +108,7 @@ def _reference(stack: Stack, wanted: Goal | Keep | Target | Seen, at: KeyPath) -
     having = [
         region.name
         for region in stack.regions
-        if (has_layer(region, layer) if name is None else has_feature(region, layer, name))
+        if (has_layer(region, layer) if name is None else has_feature(stack, region, layer, name))
     ]
     # A bare layer is still reached where it is absent: reaching it is reaching the next one below.
     must_be_there = name is not None or isinstance(wanted, Goal | Keep)
@@ -212,7 +230,7 @@ def _too_wide(stack: Stack) -> Iterator[Complaint]:
     """Features that would lie on themselves in the next cell."""
     cell = stack.cell
     for layer in stack.layers if cell is not None else ():
-        for feature in layer.features:
+        for feature in filter(lambda one: one.is_drawn, layer.features):
             for axis, size in _sizes(feature).items():
                 if size > getattr(cell, axis):
                     path = _feature_path(stack, layer.name, feature.name)
@@ -230,9 +248,12 @@ def _sizes(feature: Feature) -> dict[str, float]:
 
 
 def _feature_path(stack: Stack, layer: str, feature: str) -> KeyPath:
-    k = next(k for k, one in enumerate(stack.layers) if one.name == layer)
-    n = next(n for n, one in enumerate(stack.layers[k].features) if one.name == feature)
-    return "layers", k, "features", n, "name"
+    """Where a feature is written that is in a layer."""
+    for k, one in enumerate(stack.layers):
+        for n, other in enumerate(one.features):
+            if other.name == feature and layer in (one.name, *other.through):
+                return "layers", k, "features", n, "name"
+    raise KeyError(layer, feature)
 
 
 def _build(documents: JobDocuments, stack: Stack, errors: list[InputError]) -> ColumnMap | None:

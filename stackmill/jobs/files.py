@@ -16,6 +16,7 @@ from stackmill.documents.marks import Block, Items, Node, Scalar, Tree, read_tre
 from stackmill.documents.material import MaterialsFile
 from stackmill.documents.mill import DEFAULT_MILL, Mill
 from stackmill.documents.overriding import Override
+from stackmill.documents.profile import with_map
 from stackmill.documents.reading import Document, checked_further, read_bytes
 from stackmill.documents.recipe import Recipe
 from stackmill.documents.stack import Stack
@@ -46,7 +47,9 @@ class JobDocuments:
     def contents(self) -> dict[str, object]:
         """All that the files say, as plain texts, without comments, paths and layout."""
         job = {k: v for k, v in self.job.tree.plain().items() if k not in (*_BOUND, "materials")}
-        return {
+        grid = self.mill.model.profile and self.mill.model.profile.grid
+        beam_map: dict[str, object] = {"beam map": [grid.x_nm, grid.y_nm, grid.relative]} if grid else {}
+        return beam_map | {
             "job": job,
             "stack": self.stack.tree.plain(),
             "mill": self.mill.tree.plain(),
@@ -93,7 +96,7 @@ class FileReader:
         job = self._checked(JobFile, self.tree)
         stack = self._bound(Stack, "stack")
         is_default_mill = not self.tree.has(("mill",))
-        mill = self._mill_or_default() if is_default_mill else self._bound(Mill, "mill")
+        mill = self._mill_or_default() if is_default_mill else self._mill()
         recipe = self._bound(Recipe, "recipe")
         materials = [self._one(MaterialsFile, "materials", node) for node in self._material_nodes()]
         self._refuse_unused()
@@ -106,6 +109,17 @@ class FileReader:
         tree = read_tree(DEFAULT_MILL, "default mill")
         self._override(tree, "mill")
         return self._checked(Mill, tree)
+
+    def _mill(self) -> Document[Mill] | None:
+        mill = self._bound(Mill, "mill")
+        if mill is None or mill.model.profile is None:
+            return mill
+        node = self.tree.node(("mill",))
+        # Paths count from the folder of the file they stand in.
+        own = self.folder / Path(node.text).expanduser().parent if isinstance(node, Scalar) else self.folder
+        mill, errors = with_map(mill, own)
+        self.errors += errors
+        return mill
 
     def _material_nodes(self) -> list[Node]:
         if not self.tree.has(("materials",)):

@@ -47,7 +47,8 @@ class Job:
 
     stack, mill, recipe: with the materials' own names where the files use aliases; materials: every material
     that stack and recipe name; column_map: what lies under each point; documents: the files, for places in
-    messages; inputs_sha256: of all they say; is_default_mill: no mill was given; notes: for the reader.
+    messages; inputs_sha256: of all they say; is_default_mill: no mill was given; notes: for the reader;
+    beam_share (regions,): the beam's current density in each region, as a share of the mill's.
     """
 
     title: str
@@ -64,6 +65,7 @@ class Job:
     inputs_sha256: str
     is_default_mill: bool = False
     notes: tuple[str, ...] = ()
+    beam_share: tuple[float, ...] = ()
 
     @cached_property
     def milled_materials(self) -> Mapping[str, Material]:
@@ -71,13 +73,17 @@ class Job:
         return {name: self.materials[name] for name in self.column_map.materials}
 
     def feature_index(self, layer: str, feature: str) -> int:
-        """The number of a feature in the column map's table. Raises KeyError where there is none."""
+        """The number in the column map's table of a feature that is in a layer. Raises KeyError without one."""
         return self._feature_numbers[layer, feature]
 
     @cached_property
     def _feature_numbers(self) -> Mapping[tuple[str, str], int]:
-        names = self.column_map.layers
-        return {(names[k], feature): n for n, (k, feature) in enumerate(self.column_map.features)}
+        numbers = {}
+        for n, (k, name) in enumerate(self.column_map.features):
+            layer = self.stack.layers[k]
+            feature = next(one for one in layer.features if one.name == name)
+            numbers |= dict.fromkeys(((passed, name) for passed in (layer.name, *feature.through)), n)
+        return numbers
 
     def step_error(self, step: int, *, passed: bool) -> InputError:
         """The error of a `to` or `seen` step whose level lies behind it (passed) or is never reached."""
@@ -235,6 +241,7 @@ def _job(reader: FileReader) -> Job:
         inputs_sha256=hashlib.sha256(contents.encode()).hexdigest(),
         is_default_mill=documents.is_default_mill,
         notes=fit.notes,
+        beam_share=fit.beam_share,
     )
 
 

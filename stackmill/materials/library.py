@@ -9,11 +9,11 @@ from typing import TypeVar
 
 from pydantic import BaseModel
 
-from stackmill.documents.material import AtomsFile, LabMaterial, LibraryEntry, SourcesFile
+from stackmill.documents.material import AtomsFile, CautionsFile, LabMaterial, LibraryEntry, SourcesFile
 from stackmill.documents.reading import read_document
 from stackmill.errors import InputError, Place
-from stackmill.materials.lab import overlay
-from stackmill.materials.material import Atom, Material
+from stackmill.materials.lab import estimated, mixed, overlay, relative
+from stackmill.materials.material import Atom, Caution, Material
 from stackmill.materials.reading import material_from_entry
 
 DATA = Path(__file__).parent / "data"
@@ -58,7 +58,7 @@ class Library:
             known.update(dict.fromkeys(aliases, name))
         library = cls(files, known, folder)
         for lab in overlays:
-            library._lay(lab)
+            library.lay(lab)
         return library
 
     def names(self) -> tuple[str, ...]:
@@ -101,19 +101,34 @@ class Library:
             self._citations = {name: source.citation for name, source in table.items()}
         return self._citations.get(key, key)
 
-    def _lay(self, lab: LabMaterial) -> None:
-        base_name = lab.like if lab.like is not None else lab.name
-        base = self.get(base_name) if base_name in self._known else None
-        if base is None and lab.like is not None:
-            raise UnknownMaterialError(lab.like, self.near(lab.like))
-        if base is None and lab.composition is None:
+    def cautions(self) -> Mapping[str, Caution]:
+        """Cautions an element brings into any compound of it, by symbol."""
+        table = _read(CautionsFile, self._folder / "tables" / "cautions.yaml").cautions
+        return {symbol: Caution(item.note, item.source, item.seen) for symbol, item in table.items()}
+
+    def lay(self, lab: LabMaterial) -> Material:
+        """Lay one of a lab's materials over this library; `get` finds it from then on by name and aliases.
+
+        Raises UnknownMaterialError, with near names, where it leads to a material that is not known.
+        """
+        for name in lab.references:
+            if name not in self._known:
+                raise UnknownMaterialError(name, self.near(name))
+        if not lab.references and lab.composition is None and lab.name not in self._known:
             raise UnknownMaterialError(lab.name, self.near(lab.name))
-        needs_atoms = lab.composition is not None
-        material = overlay(lab, base, self.atoms() if needs_atoms else {})
-        name = self._known.get(lab.name, lab.name) if lab.like is None else lab.name
+        if lab.composition is not None:
+            material = estimated(lab, self.atoms(), self.cautions())
+        elif lab.mixture is not None:
+            material = mixed(lab, {name: self.get(name) for name in lab.mixture})
+        elif lab.rate is not None:
+            material = relative(lab, self.get(lab.rate.material))
+        else:
+            material = overlay(lab, self.get(lab.like or lab.name))
+        name = lab.name if lab.references else self._known.get(lab.name, lab.name)
         self._read[name] = material
         self._known[name] = name
         self._known.update(dict.fromkeys(lab.aliases, name))
+        return material
 
 
 def _head(path: Path) -> tuple[str, tuple[str, ...]]:

@@ -6,6 +6,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 
 from stackmill.constants import ATOMS_1E22_PER_MOL_CM3
+from stackmill.documents.film_forms import RelativeRate
 from stackmill.frozen import frozen
 from stackmill.units import Measure
 
@@ -131,6 +132,22 @@ class Caution:
     seen: bool
 
 
+@frozen
+class Alarm:
+    """What goes wrong with the material when it gets hot; temperature in K."""
+
+    what: str
+    temperature: Sourced
+
+
+@frozen
+class Part:
+    """One part of a mixture and its share of the volume."""
+
+    material: Material
+    share: float
+
+
 @dataclass(frozen=True)
 class Material:
     """One material, as the library (and the lab's overlay) knows it.
@@ -138,6 +155,8 @@ class Material:
     composition: atoms of each element, any scale. mean_mass_u: mean atomic mass [u]. law: a name in
     laws.sputtering.LAWS; constants: by the law's names; empty means that they are to be averaged from `atoms`
     with formation_ev_per_atom, which makes the material an estimate. origin: library file or lab file.
+    relative: the material mills at this multiple of the rate that all else here describes; mixture: its rate
+    is made of its parts' (law, constants and tie say nothing then), with mixing_ln_sd for what mixing is worth.
     """
 
     name: str
@@ -158,12 +177,16 @@ class Material:
     formation: Sourced | None = None
     atoms: tuple[Atom, ...] = ()
     melting: Sourced | None = None
+    alarms: tuple[Alarm, ...] = ()
     toxicity: Caution | None = None
     disagreements: tuple[Disagreement, ...] = ()
     measured_rates: tuple[LabRate, ...] = ()
     notes: str = ""
     origin: str = "library"
     like: str = ""
+    relative: RelativeRate | None = None
+    mixture: tuple[Part, ...] = ()
+    mixing_ln_sd: float = 0.0
 
     @property
     def atom_density_1e22(self) -> float:
@@ -193,7 +216,9 @@ class Material:
         keys = [self.density.source, self.constants_source, self.angular.source]
         keys += [row.source for row in self.tie.rows] if self.tie else []
         keys += [item.source for item in (self.formation, self.melting, self.toxicity) if item is not None]
+        keys += [alarm.temperature.source for alarm in self.alarms]
         keys += [self.other_gases.source] if self.other_gases else []
         keys += [key for clash in self.disagreements for key in clash.sources]
         keys += [atom.source for atom in self.atoms]
+        keys += [key for part in self.mixture for key in part.material.source_keys]
         return tuple(dict.fromkeys(keys))

@@ -6,6 +6,7 @@ from types import MappingProxyType
 
 from stackmill.documents.material import AngularEntry, FitEntry, LibraryEntry
 from stackmill.materials.material import (
+    Alarm,
     AngularData,
     Caution,
     Disagreement,
@@ -45,6 +46,7 @@ def material_from_entry(entry: LibraryEntry) -> Material:
         other_gases=_other_gases(entry),
         formation=_formation(entry),
         melting=_melting(entry),
+        alarms=_alarms(entry),
         toxicity=_toxicity(entry),
         disagreements=tuple(
             Disagreement(clash.what, clash.taken, clash.other, clash.why, clash.sources)
@@ -93,6 +95,16 @@ def _melting(entry: LibraryEntry) -> Sourced | None:
     if point is None:
         return None
     return Sourced(point.value.value, point.value.sd, "K", "at 1 atm", point.source, point.seen)
+
+
+def _alarms(entry: LibraryEntry) -> tuple[Alarm, ...]:
+    return tuple(
+        Alarm(
+            alarm.what,
+            Sourced(alarm.temperature.value, alarm.temperature.sd, "K", "in vacuum", alarm.source, alarm.seen),
+        )
+        for alarm in entry.alarms
+    )
 
 
 def _toxicity(entry: LibraryEntry) -> Caution | None:

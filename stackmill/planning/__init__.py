@@ -1,1 +1,1 @@
-"""When to stop, which tilt, which recipe."""
+"""When to stop, and what the answer rests on."""

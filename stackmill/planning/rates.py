@@ -6,10 +6,10 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from stackmill.documents.recipe import Beam
+from stackmill.documents.recipe import Beam, Process
 from stackmill.jobs import Job
 from stackmill.materials.material import Material
-from stackmill.rates.model import rate_model
+from stackmill.rates.model import RateModel, rate_model
 from stackmill.rates.yields import angular_shape, normal_yield
 
 
@@ -17,54 +17,72 @@ from stackmill.rates.yields import angular_shape, normal_yield
 class RateRow:
     """The milling rate of one material in one step, with everything known of the mill in its sd.
 
-    yield_atoms_per_ion: at the incidence, of singly charged ions; rate_rel_sd: sd of ln rate; source: what the
-    rate rests on.
+    yield_atoms_per_ion: at the incidence, of singly charged ions, as the rate says it; rate_rel_sd: sd of ln
+    rate; source: what the rate rests on. A process has a stated rate and nothing of a beam (None).
     """
 
     step: str
     material: str
-    energy_ev: float
-    incidence_deg: float
-    current_density_ma_per_cm2: float
-    yield_atoms_per_ion: float
+    energy_ev: float | None
+    incidence_deg: float | None
+    current_density_ma_per_cm2: float | None
+    yield_atoms_per_ion: float | None
     rate_nm_per_min: float
     rate_rel_sd: float
     source: str
 
 
 def rate_rows(job: Job) -> list[RateRow]:
-    """A row for each beam step and each material of the job."""
+    """A row for each step that lowers and each material of the job."""
     model = rate_model(job.mill, job.recipe.steps, job.milled_materials)
-    rows = []
+    rows: list[RateRow] = []
     for i, step in enumerate(job.recipe.steps):
-        if not isinstance(step, Beam):
-            continue
-        best, sd = model.best_nm_per_s(i, job.mill.doubly_charged.value), model.ln_rate_sd(i)
-        current = (step.current_density or job.mill.current_density).value
-        for m, (name, material) in enumerate(job.milled_materials.items()):
-            shape = angular_shape(material, energy_ev=step.energy, gas=job.mill.gas)
-            at_angle = float(shape.ratio(np.radians(step.incidence)))
-            rows.append(
-                RateRow(
-                    step=step.name,
-                    material=name,
-                    energy_ev=step.energy,
-                    incidence_deg=step.incidence,
-                    current_density_ma_per_cm2=current,
-                    yield_atoms_per_ion=at_angle
-                    * float(normal_yield(material, energy_ev=step.energy, gas=job.mill.gas)),
-                    rate_nm_per_min=60.0 * float(best[m]),
-                    rate_rel_sd=float(sd[m]),
-                    source=basis(material),
-                )
+        if isinstance(step, Beam):
+            rows += _beam_rows(job, model, i, step)
+        elif isinstance(step, Process):
+            rows += _process_rows(job, step)
+    return rows
+
+
+def _beam_rows(job: Job, model: RateModel, i: int, step: Beam) -> list[RateRow]:
+    best, sd = model.best_nm_per_s(i), model.ln_rate_sd(i)
+    current = (step.current_density or job.mill.current_density).value
+    rows = []
+    for m, (name, material) in enumerate(job.milled_materials.items()):
+        shape = angular_shape(material, energy_ev=step.energy, gas=job.mill.gas)
+        untaught = float(normal_yield(material, energy_ev=step.energy, gas=job.mill.gas))
+        taught = float(np.exp(model.ln_factor(i)[m]))
+        rows.append(
+            RateRow(
+                step=step.name,
+                material=name,
+                energy_ev=step.energy,
+                incidence_deg=step.incidence,
+                current_density_ma_per_cm2=current,
+                yield_atoms_per_ion=untaught * float(shape.ratio(np.radians(step.incidence))) * taught,
+                rate_nm_per_min=60.0 * float(best[m]),
+                rate_rel_sd=float(sd[m]),
+                source=basis(material),
             )
+        )
+    return rows
+
+
+def _process_rows(job: Job, step: Process) -> list[RateRow]:
+    rows = []
+    for name in job.milled_materials:
+        rate = step.rate(name)
+        assert rate is not None
+        sd = rate.rel_sd if rate.sd else 0.0
+        rows.append(RateRow(step.name, name, None, None, None, None, 60.0 * rate.value, sd, "stated in the recipe"))
     return rows
 
 
 def basis(material: Material) -> str:
     """What a material's rate rests on, in a few words."""
     if material.measured_rates:
-        return "measured on this mill"
+        where = ", ".join(f"{m.energy_ev:.4g} eV and {m.incidence_deg:.4g} deg" for m in material.measured_rates)
+        return f"measured on this mill at {where}"
     if material.estimate:
         return "estimate, good to a factor 1.5; mill a coupon"
     return f"library: {material.tie.basis}" if material.tie else "library"

@@ -15,6 +15,7 @@ from stackmill.rates.facets import shadow_multiple, slope_grid, speeds_of
 from stackmill.rates.model import setting
 from stackmill.rates.yields import angular_shape
 from stackmill.timing.flatness import SlopeSpeeds, flat_until
+from stackmill.timing.plan import last_milling
 
 Array = NDArray[np.float64]
 
@@ -105,7 +106,8 @@ def _slope_speeds(ensemble: Ensemble) -> list[SlopeSpeeds | None]:
             flat = dict(zip(names, best.rate_nm_per_s(i)[:, 0].tolist(), strict=True))
             shadow = shadow_multiple(step, job.mill.divergence)
             table = speeds_of(shapes, flat, step)
-            known[setting(step)] = SlopeSpeeds(slope_grid(), table, shadow, any_slope=step.motion.kind != "rotating")
+            slowest = table.min(axis=1) if table.shape[1] > 1 else None
+            known[setting(step)] = SlopeSpeeds(slope_grid(), table.max(axis=1), shadow, slowest)
         speeds.append(known[setting(step)])
     beams = [s for s in speeds if s is not None]
     return speeds + ([beams[-1]] if beams else [None]) * (len(ensemble.best.spans) - len(speeds))
@@ -134,8 +136,8 @@ def _rows(ensemble: Ensemble, flat: list[Array], confidence: float) -> list[Reac
                         time_late_s=_finite(float(late[c, k])),
                         depth_nm=highest - height,
                         height_nm=height,
-                        step=step_at(ensemble, time),
-                        flat_ok=bool(time <= flat[r][c] or time == 0.0),
+                        step=_step_of(ensemble, r, c, int(ensemble.best_ground.boundary[r][c][above])),
+                        flat_ok=bool(time <= flat[r][c] or above == 0),
                         basis="flat",
                         present=bool((region.layer[c, :count] == k).any()),
                         share=float(region.area[c]),
@@ -164,15 +166,15 @@ def _bounds(ensemble: Ensemble, times: Array, best: Array, confidence: float) ->
     return leg, early, late
 
 
-def step_at(ensemble: Ensemble, time_s: float) -> str | None:
-    """The name of the step that is running (at best values) at a time on the clock; None at the end of time."""
-    if not np.isfinite(time_s):
+def _step_of(ensemble: Ensemble, r: int, c: int, above: int) -> str | None:
+    """The step in which (at best values) everything above a boundary is gone; None at the start, or if never."""
+    if above == 0:
         return None
-    name = None
-    for span in ensemble.best.spans:
-        if span.start_s[0] <= time_s and (span.name or name is None):
-            name = span.name if span.end_s[0] > span.start_s[0] or name is None else name
-    return name
+    best = ensemble.best
+    for span, left in zip(best.spans, best.left_nm, strict=True):
+        if not left[r][c][:above].any():
+            return span.name or ensemble.inputs.job.recipe.steps[last_milling(ensemble.inputs.job)].name
+    return None
 
 
 def _finite(value: float) -> float | None:
@@ -182,9 +184,10 @@ def _finite(value: float) -> float | None:
 def _provisional(ensemble: Ensemble, window: Window, flat: list[Array]) -> bool:
     """Whether a column that decides the window stops being flat and lit before it does."""
     best = ensemble.best_outcome
-    r, c = window.exposed_by
-    if best.exposed_s[0] > flat[r][c]:
-        return True
+    if window.exposed_by is not None:
+        r, c = window.exposed_by
+        if best.exposed_s[0] > flat[r][c]:
+            return True
     if window.lost_by is None:
         return False
     r, c = window.lost_by

@@ -41,12 +41,15 @@ class Window:
     """When to stop. Times are on the clock at best values (s); see `leg` for where the stopwatch starts.
 
     exposed_s, lost_s: ends of the window at `confidence`, None where there is none (lost_s is None too where
-    nothing is ever lost); stop_s: the stop with the greatest chance, None without a window; best_stop_s: that
-    stop in any case; chance: of stop_s; best_chance: the greatest there is; first_look_s: the last moment at
-    which the chance of loss is under 5 %; exposed_by, lost_by: the columns (region, column) that most often
-    decide, lost_keep: the number of the keep that does, -1 for the goal; left_standing: mean share of the
-    goal's area still covered at best_stop_s; leg: 0 from the start, n after the nth step stopped by eye;
-    leg_start_s: the clock at best values when the leg starts.
+    nothing is ever lost, or the eye ends the leg before). stop_s: the earliest stop with the greatest chance, as
+    far as the draws can tell, None without a window; best_stop_s: that stop in any case; chance: of stop_s;
+    best_chance: the greatest there is. first_look_s: the last moment at which the chance of loss is under 5 %,
+    None where there is none, or it never ends; first_look_leg: the leg it lies in; lost_before: the chance of
+    loss by the start of `leg`. exposed_by, lost_by: the columns (region, column) that most often decide, None
+    where the goal is never exposed, or nothing ever lost; lost_keep: the number of the keep that is, -1 for the
+    goal. left_standing: mean share of the goal's area still covered at best_stop_s. leg: 0 from the start, n
+    after the nth step stopped by eye; leg_start_s: the clock at best values when the leg starts; by_eye: the eye
+    ends this leg.
     """
 
     confidence: float
@@ -57,12 +60,15 @@ class Window:
     chance: float | None
     best_chance: float
     first_look_s: float | None
-    exposed_by: tuple[int, int]
+    first_look_leg: int
+    lost_before: float
+    exposed_by: tuple[int, int] | None
     lost_by: tuple[int, int] | None
     lost_keep: int
     left_standing: float
     leg: int
     leg_start_s: float
+    by_eye: bool
 
 
 def success_spans(outcome: Outcome, leg: int) -> tuple[Array, Array]:
@@ -99,48 +105,62 @@ def find_window(ensemble: Ensemble, confidence: float) -> Window:
     """The window of a job's goal in its most promising leg."""
     outcome, weights = ensemble.outcome, ensemble.weights
     curves = [chance_curve(*success_spans(outcome, leg), weights) for leg in range(len(outcome.leg_start_s))]
-    leg = max(range(len(curves)), key=lambda k: (float(curves[k].chance.max()), k))
+    best = [float(curve.chance.max()) for curve in curves]
+    leg = max(range(len(curves)), key=lambda k: (best[k], k if best[k] > 0.0 else -k))
     curve = curves[leg]
-    stop = best_stop(curve)
-    ends = window_ends(curve, stop, confidence)
+    # What the draws themselves cannot tell: one standard error of a chance read off this many of them.
+    draws = 1.0 / float(np.sum(weights**2))
+    stop = best_stop(curve, np.sqrt(best[leg] * (1.0 - best[leg]) / draws))
+    ends = window_ends(curve, stop, confidence, 2.0 * np.sqrt(confidence * (1.0 - confidence) / draws))
     clock = float(ensemble.best_outcome.leg_start_s[leg][0])
     chance = curve.at(stop)
     lost_by, lost_keep = _lost_by(outcome, weights)
+    look = _first_look(ensemble)
     return Window(
         confidence=confidence,
         exposed_s=None if ends is None else clock + ends[0],
         lost_s=None if ends is None or ends[1] is None else clock + ends[1],
-        stop_s=None if ends is None else clock + stop,
+        stop_s=None if ends is None else clock + max(stop, ends[0]),
         best_stop_s=clock + stop,
         chance=None if ends is None else chance,
-        best_chance=chance,
-        first_look_s=_first_look(outcome, weights, leg, clock),
+        best_chance=best[leg],
+        first_look_s=look[1],
+        first_look_leg=look[0],
+        lost_before=float(weights[outcome.lost_s <= outcome.leg_start_s[leg]].sum()),
         exposed_by=_exposed_by(outcome, weights),
         lost_by=lost_by,
         lost_keep=lost_keep,
         left_standing=left_standing(outcome, weights, leg, stop),
         leg=leg,
         leg_start_s=clock,
+        by_eye=leg + 1 < len(curves),
     )
 
 
-def best_stop(curve: ChanceCurve) -> float:
-    """The time of the greatest chance: the middle of the longest stretch that has it (its start, if endless)."""
-    best = float(curve.chance.max())
-    ends = np.append(curve.time_s[1:], np.inf)
-    stretches = [(start, end) for start, end in _runs(curve, ends, best - 1e-12) if np.isfinite(start)]
-    if not stretches:
+def best_stop(curve: ChanceCurve, error: float = 0.0) -> float:
+    """The earliest time whose chance is the greatest, or within the draws' own error of it.
+
+    What is left can be milled later; what is gone cannot be put back.
+    """
+    if len(curve.time_s) == 1:
         return 0.0
-    start, end = max(stretches, key=lambda s: s[1] - s[0])
-    return float(start if np.isinf(end) else 0.5 * (start + end))
+    return float(curve.time_s[1:][np.argmax(curve.chance[1:] >= curve.chance.max() - error - 1e-12)])
 
 
-def window_ends(curve: ChanceCurve, stop_s: float, confidence: float) -> tuple[float, float | None] | None:
-    """The stretch around a stop in which the chance is at least the confidence; None where there is none."""
+def window_ends(
+    curve: ChanceCurve, stop_s: float, confidence: float, error: float = 0.0
+) -> tuple[float, float | None] | None:
+    """The first and last time around a stop at which the chance is at least the confidence; None if there is none.
+
+    Dips below it that are no deeper than `error`, what the draws cannot tell, do not part a window.
+    """
     ends = np.append(curve.time_s[1:], np.inf)
-    for start, end in _runs(curve, ends, confidence - 1e-12):
-        if start <= stop_s < end:
-            return float(start), None if np.isinf(end) else float(end)
+    good = _runs(curve, ends, confidence - 1e-12)
+    for start, end in _runs(curve, ends, confidence - error - 1e-12):
+        inside = [run for run in good if start <= run[0] and run[1] <= end]
+        if start <= stop_s < end and inside:
+            first, last = inside[0][0], inside[-1][1]
+            return float(first), None if np.isinf(last) else float(last)
     return None
 
 
@@ -162,14 +182,17 @@ def left_standing(outcome: Outcome, weights: Array, leg: int, stop_s: float) -> 
     return float(covered @ weights)
 
 
-def _first_look(outcome: Outcome, weights: Array, leg: int, clock_s: float) -> float | None:
-    """The last moment at which the chance of loss is under 5 %, None where it never gets there.
-
-    A loss before the leg began counts as a loss at its start: looking in this leg comes too late for it.
-    """
-    lost = np.maximum(outcome.lost_s - outcome.leg_start_s[leg], 0.0)
-    moment = weighted_quantile(lost, weights, FIRST_LOOK_RISK)
-    return clock_s + moment if np.isfinite(moment) else None
+def _first_look(ensemble: Ensemble) -> tuple[int, float | None]:
+    """The leg and the last moment (on the clock) at which the chance of loss is under 5 %; None if there is none."""
+    outcome, weights = ensemble.outcome, ensemble.weights
+    for leg, start in enumerate(outcome.leg_start_s):
+        moment = weighted_quantile(outcome.lost_s - start, weights, FIRST_LOOK_RISK)
+        last = leg + 1 == len(outcome.leg_start_s)
+        in_leg = outcome.lost_s <= (np.inf if last else outcome.leg_start_s[leg + 1])
+        if last or weights[in_leg].sum() >= FIRST_LOOK_RISK:
+            clock = float(ensemble.best_outcome.leg_start_s[leg][0])
+            return leg, clock + moment if np.isfinite(moment) and moment > 0.0 else None
+    return 0, None
 
 
 def weighted_quantile(values: Array, weights: Array, share: float) -> float:
@@ -179,10 +202,13 @@ def weighted_quantile(values: Array, weights: Array, share: float) -> float:
     return float(values[order][np.searchsorted(total, share * total[-1] * (1.0 - 1e-12))])
 
 
-def _exposed_by(outcome: Outcome, weights: Array) -> tuple[int, int]:
-    """The wanted column that most often decides when the goal is exposed."""
-    deciding = np.argmax(outcome.upper_s == outcome.exposed_s, axis=0)
-    return outcome.wanted[_most(deciding, weights)]
+def _exposed_by(outcome: Outcome, weights: Array) -> tuple[int, int] | None:
+    """The wanted column that most often decides when the goal is exposed; None where it never is."""
+    met = np.isfinite(outcome.exposed_s)
+    if not met.any():
+        return None
+    deciding = np.argmax(outcome.upper_s[:, met] == outcome.exposed_s[met], axis=0)
+    return outcome.wanted[_most(deciding, weights[met])]
 
 
 def _lost_by(outcome: Outcome, weights: Array) -> tuple[tuple[int, int] | None, int]:

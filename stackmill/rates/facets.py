@@ -31,27 +31,26 @@ def slope_grid() -> Array:
 
 
 def vertical_speed_ratio(shape: AngularShape, step: Beam, slope: Array) -> Array:
-    """Vertical speed of slopes (Q,) in one step, as a multiple of flat ground's (which is 1).
+    """Vertical speed of slopes, as a multiple of flat ground's (which is 1): (sides, Q).
 
-    Rotating: the average over azimuth. Still or rocking: the faster of the sides that face to and from the
-    beam; rocking is averaged over the swing.
+    Rotating: one side, the average over azimuth. Still or rocking: the sides that face to and from the beam,
+    averaged over the swing. The divergence is left out: it blurs a facet's speed by less than the shape's sd.
     """
-    incidence = _incidences(step)
-    if step.motion.kind == "rotating":
-        azimuth = np.pi * (np.arange(_AZIMUTHS) + 0.5) / _AZIMUTHS
-        speed = _vertical(shape, incidence[:, None, None], azimuth[:, None], slope).mean(axis=(0, 1))
-    else:
-        sides = np.array([0.0, np.pi])
-        speed = _vertical(shape, incidence[:, None, None], sides[:, None], slope).mean(axis=0).max(axis=0)
-    return np.asarray(speed / speed[0])
+    incidence, share = _incidences(step)
+    rotating = step.motion.kind == "rotating"
+    azimuth = np.pi * (np.arange(_AZIMUTHS) + 0.5) / _AZIMUTHS if rotating else np.array([0.0, np.pi])
+    speed = np.tensordot(share, _vertical(shape, incidence[:, None, None], azimuth[:, None], slope), axes=1)
+    sides = speed.mean(axis=0, keepdims=True) if rotating else speed
+    return np.asarray(sides / sides[:, :1])
 
 
-def _incidences(step: Beam) -> Array:
+def _incidences(step: Beam) -> tuple[Array, Array]:
+    """The incidences of a step, with the share of time spent at each."""
     swing = step.motion.half_angle if step.motion.kind == "rocking" else 0.0
     if not swing:
-        return np.radians([step.incidence])
-    nodes, _ = np.polynomial.legendre.leggauss(_ROCKING_NODES)
-    return np.radians(step.incidence + swing * nodes)
+        return np.radians([step.incidence]), np.ones(1)
+    nodes, weights = np.polynomial.legendre.leggauss(_ROCKING_NODES)
+    return np.radians(step.incidence + swing * nodes), 0.5 * weights
 
 
 def _vertical(shape: AngularShape, incidence: Array, azimuth: Array, slope: Array) -> Array:
@@ -71,6 +70,6 @@ def shadow_multiple(step: Beam, divergence_deg: float) -> float:
 
 
 def speeds_of(shapes: Mapping[str, AngularShape], flat_nm_per_s: Mapping[str, float], step: Beam) -> Array:
-    """Vertical speeds (M, Q) in nm/s of each material's slopes, in the order of `shapes`."""
+    """Vertical speeds (M, sides, Q) in nm/s of each material's slopes, in the order of `shapes`."""
     slope = slope_grid()
     return np.stack([flat_nm_per_s[name] * vertical_speed_ratio(shape, step, slope) for name, shape in shapes.items()])

@@ -23,7 +23,10 @@ from stackmill.rates import yields
 
 Array = NDArray[np.float64]
 
-_NODES = 9  # Chebyshev nodes across the dial's error: ln rate is smooth there, 9 give about 1e-9
+_SHARED = 3  # parameters that all materials share: current, dial, charge
+_NODES = 9  # Chebyshev nodes across the dial's error, where ln rate is smooth there: good to 1e-6
+_SMOOTH_TO_DEG = 65.0  # beyond, and about straight down, ln rate bends too much for that
+_GRID_DEG = 0.25
 _ZERO_ERROR_REACH_SD = 5.0
 _LEAST_REACH_DEG = 0.5
 _STEEPEST_DEG = 89.5
@@ -35,30 +38,32 @@ _PER_MATERIAL = ("rate", "energy", "angle")
 class BeamRates:
     """The rate curves of one beam step, near its setting of the dial, for all M materials.
 
-    single, double (M, 9): ln rate (nm/s) as Chebyshev series in the zero error, as if all current were carried
-    by singly charged ions of the step's energy, and of twice that energy; reach_deg: the series hold for zero
-    errors up to this, and are clipped there; terms (M, 3): how ln rate moves with each material's unknowns.
+    single, double (M, 9 or G): ln rate (nm/s) as if all current were carried by singly charged ions of the step's
+    energy, and of twice that energy: Chebyshev series in the zero error where the curve is smooth, else values on
+    grid_deg (G,), true incidences. incidence_deg: as set; reach_deg: the series hold for zero errors up to this;
+    terms (M, 3): how ln rate moves with each material's unknowns.
     """
 
     single: Array
     double: Array
+    incidence_deg: float
     reach_deg: float
+    grid_deg: Array | None
     terms: Array
-
-    def ln_single(self, zero_error_deg: Array) -> Array:
-        """Ln rate (M, D), nm/s, of singly charged ions at zero errors (D,) in degrees."""
-        return self._series(self.single, zero_error_deg)
 
     def rate_nm_per_s(self, zero_error_deg: Array, doubly_charged: Array) -> Array:
         """Milling rate (M, D) in nm/s at zero errors (D,) in degrees, for charge shares (D,)."""
-        single = np.exp(self._series(self.single, zero_error_deg))
-        double = np.exp(self._series(self.double, zero_error_deg))
+        single = np.exp(self._curve(self.single, zero_error_deg))
+        double = np.exp(self._curve(self.double, zero_error_deg))
         rate: Array = (1.0 - doubly_charged) * single + 0.5 * doubly_charged * double
         return rate
 
-    def _series(self, coefficients: Array, zero_error_deg: Array) -> Array:
+    def _curve(self, values: Array, zero_error_deg: Array) -> Array:
+        if self.grid_deg is not None:
+            incidence = np.minimum(np.abs(self.incidence_deg + zero_error_deg), _STEEPEST_DEG)
+            return np.stack([np.interp(incidence, self.grid_deg, row) for row in values])
         x = np.clip(zero_error_deg / self.reach_deg, -1.0, 1.0)
-        series: Array = coefficients @ np.polynomial.chebyshev.chebvander(x, _NODES - 1).T
+        series: Array = values @ np.polynomial.chebyshev.chebvander(x, _NODES - 1).T
         return series
 
 
@@ -66,22 +71,35 @@ class BeamRates:
 class RateModel:
     """All beam steps' curves (None for steps without a beam), with the belief about their parameters.
 
-    The belief's parameters are `current density` (ln), `dial zero error` (deg), then for each material
-    `NAME: rate`, `NAME: energy`, `NAME: angle` (ln).
+    The belief's parameters are `current density` (ln), `dial zero error` (deg), `doubly charged share` (off its
+    value), then for each material `NAME: rate`, `NAME: energy`, `NAME: angle` (ln), then `current density in STEP`
+    (ln) for each step that states a current with an error of its own. current: which parameter each step's
+    current is off by; charged: the mill's share of doubly charged ions.
     """
 
     materials: tuple[str, ...]
     steps: tuple[BeamRates | None, ...]
+    current: tuple[int, ...]
+    charged: float
     belief: RateBelief
     evidence: tuple[RateEvidence, ...]
 
-    def rate_nm_per_s(self, step: int, *, parameters: Array, doubly_charged: Array) -> Array:
-        """Milling rates (M, D) in nm/s in a beam step, for parameters (P, D) and charge shares (D,)."""
-        beam = self.beam(step)
-        each = parameters[2:].reshape(len(self.materials), len(_PER_MATERIAL), -1)
-        ln_factor = parameters[0] + np.einsum("mk,mkd->md", beam.terms, each)
-        rate: Array = beam.rate_nm_per_s(parameters[1], doubly_charged) * np.exp(ln_factor)
+    def rate_nm_per_s(self, step: int, parameters: Array) -> Array:
+        """Milling rates (M, D) in nm/s in a beam step, for parameters (P, D)."""
+        ln_factor = parameters[self.current[step]] + self._ln_material(step, parameters)
+        charged = np.clip(self.charged + parameters[2], 0.0, 1.0)
+        rate: Array = self.beam(step).rate_nm_per_s(parameters[1], charged) * np.exp(ln_factor)
         return rate
+
+    def ln_factor(self, step: int) -> Array:
+        """What is believed of each material's ln rate over its law's (M,), in a beam step."""
+        return self._ln_material(step, self.belief.mean[:, None])[:, 0]
+
+    def _ln_material(self, step: int, parameters: Array) -> Array:
+        count = len(_PER_MATERIAL) * len(self.materials)
+        each = parameters[_SHARED : _SHARED + count].reshape(len(self.materials), len(_PER_MATERIAL), -1)
+        ln: Array = np.einsum("mk,mkd->md", self.beam(step).terms, each)
+        return ln
 
     def beam(self, step: int) -> BeamRates:
         """The curves of a step that mills with the beam."""
@@ -89,23 +107,18 @@ class RateModel:
         assert beam is not None
         return beam
 
-    def best_nm_per_s(self, step: int, doubly_charged: float) -> Array:
+    def best_nm_per_s(self, step: int) -> Array:
         """The best values of the milling rates (M,) in a beam step, in nm/s."""
-        best = self.belief.mean[:, None]
-        return self.rate_nm_per_s(step, parameters=best, doubly_charged=np.array([doubly_charged]))[:, 0]
+        return self.rate_nm_per_s(step, self.belief.mean[:, None])[:, 0]
 
     def ln_rate_sd(self, step: int) -> Array:
-        """Sd of ln rate (M,) in a beam step, everything that is believed of the mill included."""
-        beam = self.beam(step)
-        around = beam.ln_single(self.belief.mean[1] + np.array([-0.5, 0.5]))
-        design = np.zeros((len(self.materials), len(self.belief.names)))
-        design[:, 0] = 1.0
-        design[:, 1] = around[:, 1] - around[:, 0]
-        for m, terms in enumerate(beam.terms):
-            k = 2 + len(_PER_MATERIAL) * m
-            design[m, k : k + len(_PER_MATERIAL)] = terms
-        sd: Array = np.sqrt(np.einsum("mp,pq,mq->m", design, self.belief.cov, design))
-        return sd
+        """Sd of ln rate (M,) in a beam step, to first order in everything that is believed of mill and materials."""
+        sd = np.maximum(self.belief.sd, 1e-9)
+        around = self.belief.mean[:, None] + 0.5 * sd[:, None] * np.concatenate([np.eye(len(sd)), -np.eye(len(sd))], 1)
+        ln = np.log(self.rate_nm_per_s(step, around))
+        slope = (ln[:, : len(sd)] - ln[:, len(sd) :]) / sd
+        found: Array = np.sqrt(np.einsum("mp,pq,mq->m", slope, self.belief.cov, slope))
+        return found
 
 
 def rate_model(mill: Mill, steps: Sequence[object], materials: Mapping[str, Material]) -> RateModel:
@@ -116,13 +129,16 @@ def rate_model(mill: Mill, steps: Sequence[object], materials: Mapping[str, Mate
         if isinstance(step, Beam) and setting(step) not in known:
             known[setting(step)] = _beam_rates(mill, step, materials)
     beams = tuple(known[setting(step)] if isinstance(step, Beam) else None for step in steps)
-    prior = _prior(mill, materials)
+    own = [step for step in steps if isinstance(step, Beam) and step.current_density and step.current_density.sd]
+    prior = _prior(mill, materials, own)
+    after = len(prior.names) - len(own)
+    current = tuple(after + own.index(step) if step in own else 0 for step in steps)
     evidence = tuple(
-        _evidence(mill, material, names, measured)
+        _evidence(mill, material, names, measured, len(prior.names))
         for material in materials.values()
         for measured in material.measured_rates
     )
-    return RateModel(names, beams, condition(prior, evidence), evidence)
+    return RateModel(names, beams, current, mill.doubly_charged.value, condition(prior, evidence), evidence)
 
 
 def setting(step: Beam) -> tuple[object, ...]:
@@ -130,10 +146,16 @@ def setting(step: Beam) -> tuple[object, ...]:
     return step.energy, step.incidence, step.motion, step.current_density
 
 
-def parameter_names(materials: Sequence[str]) -> tuple[str, ...]:
-    """The names of the rate model's parameters, in their order."""
-    each = tuple(f"{name}: {what}" for name in materials for what in _PER_MATERIAL)
-    return ("current density", "dial zero error", *each)
+def parameter_names(materials: Sequence[str], own_current: Sequence[str] = ()) -> tuple[str, ...]:
+    """The names of the parameters, in their order; own_current: steps with a current of their own."""
+    each = (f"{name}: {what}" for name in materials for what in _PER_MATERIAL)
+    return (
+        "current density",
+        "dial zero error",
+        "doubly charged share",
+        *each,
+        *(f"current density in {step}" for step in own_current),
+    )
 
 
 def energy_term(material: Material, energy_ev: float, gas: str) -> float:
@@ -149,12 +171,14 @@ def _terms(material: Material, energy_ev: float, incidence_deg: float, gas: str)
     return 1.0, energy_term(material, energy_ev, gas), angle
 
 
-def _prior(mill: Mill, materials: Mapping[str, Material]) -> RateBelief:
-    sd = [mill.current_density.rel_sd, mill.stage.zero_error.sd]
+def _prior(mill: Mill, materials: Mapping[str, Material], own_current: Sequence[Beam]) -> RateBelief:
+    sd = [mill.current_density.rel_sd, mill.stage.zero_error.sd, mill.doubly_charged.sd]
     for material in materials.values():
         # The energy term carries its own size, so that its unknown has an sd of one.
         sd += [_rate_sd(material, mill.gas), 1.0, material.angular_sd]
-    return RateBelief(parameter_names(tuple(materials)), np.zeros(len(sd)), np.diag(np.square(sd)))
+    sd += [step.current_density.rel_sd for step in own_current if step.current_density]
+    names = parameter_names(tuple(materials), [step.name for step in own_current])
+    return RateBelief(names, np.zeros(len(sd)), np.diag(np.square(sd)))
 
 
 def _rate_sd(material: Material, gas: str) -> float:
@@ -166,21 +190,23 @@ def _rate_sd(material: Material, gas: str) -> float:
 
 def _beam_rates(mill: Mill, step: Beam, materials: Mapping[str, Material]) -> BeamRates:
     reach = max(_ZERO_ERROR_REACH_SD * mill.stage.zero_error.sd, _LEAST_REACH_DEG)
-    angle = np.pi * (np.arange(_NODES) + 0.5) / _NODES
-    incidence_deg = np.clip(np.abs(step.incidence + reach * np.cos(angle)), 0.0, _STEEPEST_DEG)
     current = (step.current_density or mill.current_density).value
+    smooth = step.incidence >= reach and step.incidence + reach <= _SMOOTH_TO_DEG
+    angle = np.pi * (np.arange(_NODES) + 0.5) / _NODES
+    low, high = max(step.incidence - reach, 0.0), min(step.incidence + reach, _STEEPEST_DEG)
+    grid = None if smooth else np.linspace(low, high, int(np.ceil((high - low) / _GRID_DEG)) + 2)
+    incidence_deg = step.incidence + reach * np.cos(angle) if grid is None else grid
     # The Chebyshev transform, written out: chebfit would solve a least-squares problem for the same numbers.
     transform = np.cos(np.outer(np.arange(_NODES), angle)) * (2.0 / _NODES)
     transform[0] *= 0.5
-    single, double = (
-        np.log(
-            [_law_rate(mill, m, energy_ev, incidence_deg, current, step.motion.half_angle) for m in materials.values()]
-        )
-        @ transform.T
-        for energy_ev in (step.energy, 2.0 * step.energy)
-    )
+
+    def curves(energy_ev: float) -> Array:
+        swing = step.motion.half_angle
+        ln = np.log([_law_rate(mill, m, energy_ev, incidence_deg, current, swing) for m in materials.values()])
+        return ln if grid is not None else ln @ transform.T
+
     terms = np.array([_terms(m, step.energy, step.incidence, mill.gas) for m in materials.values()])
-    return BeamRates(single, double, reach, terms)
+    return BeamRates(curves(step.energy), curves(2.0 * step.energy), step.incidence, reach, grid, terms)
 
 
 def _law_rate(
@@ -204,7 +230,7 @@ def _law_rate(
     )
 
 
-def _evidence(mill: Mill, material: Material, names: Sequence[str], measured: LabRate) -> RateEvidence:
+def _evidence(mill: Mill, material: Material, names: Sequence[str], measured: LabRate, parameters: int) -> RateEvidence:
     """A lab's own rate, as one row: it fixes b + c at its stated current.
 
     The current's error (and the dial's) counts again on another day, so only a rate of the same day may tell
@@ -216,12 +242,14 @@ def _evidence(mill: Mill, material: Material, names: Sequence[str], measured: La
         _law_rate(mill, material, energy, np.clip(np.abs(incidence), 0.0, _STEEPEST_DEG), current)
         for energy in (measured.energy_ev, 2.0 * measured.energy_ev)
     )
-    ln_rate = np.log((1.0 - charged) * single + 0.5 * charged * double)
-    design = np.zeros(2 + len(_PER_MATERIAL) * len(names))
-    k = 2 + len(_PER_MATERIAL) * names.index(material.name)
-    design[k : k + 3] = _terms(material, measured.energy_ev, measured.incidence_deg, mill.gas)
+    rates = (1.0 - charged) * single + 0.5 * charged * double
+    ln_rate = np.log(rates)
+    design = np.zeros(parameters)
+    k = _SHARED + len(_PER_MATERIAL) * names.index(material.name)
+    design[k : k + len(_PER_MATERIAL)] = _terms(material, measured.energy_ev, measured.incidence_deg, mill.gas)
     if measured.same_day:
-        design[:2] = 1.0, ln_rate[2] - ln_rate[1]
+        design[:_SHARED] = 1.0, ln_rate[2] - ln_rate[1], (0.5 * double[0] - single[0]) / rates[0]
     rate = measured.rate
     what = f"{material.name}: measured {rate.value * 60:.3g} nm/min ± {100 * rate.rel_sd:.2g} %"
-    return RateEvidence(design, float(np.log(rate.value) - ln_rate[0]), rate.rel_sd, what)
+    noise = rate.rel_sd if measured.same_day else float(np.hypot(rate.rel_sd, measured.current_density.rel_sd))
+    return RateEvidence(design, float(np.log(rate.value) - ln_rate[0]), noise, what)

@@ -14,17 +14,31 @@ from numpy.typing import ArrayLike, NDArray
 
 from stackmill.constants import GASES, NM_PER_S_PER_MA_CM2
 from stackmill.frozen import frozen
-from stackmill.laws.compounds import effective_target, tie_of_unmeasured
 from stackmill.laws.incidence import (
     AngularShape,
     ep_constants,
     incidence_nodes,
     root_of_closeness,
 )
-from stackmill.laws.sputtering import LAWS, YieldLaw
 from stackmill.materials.material import Material
+from stackmill.rates.mixing import mixed_rate, time_shares
+from stackmill.rates.tying import (
+    ESTIMATE_ABOVE,
+    ESTIMATE_BELOW,
+    ESTIMATE_LN_SD,
+    ESTIMATE_RANGE_EV,
+    OTHER_GAS_LN_SD,
+    REFERENCE_GAS,
+    ion_of,
+    tied_law,
+)
 
 __all__ = [
+    "ESTIMATE_ABOVE",
+    "ESTIMATE_BELOW",
+    "ESTIMATE_LN_SD",
+    "ESTIMATE_RANGE_EV",
+    "OTHER_GAS_LN_SD",
     "AngularShape",
     "angular_leverage",
     "angular_shape",
@@ -38,47 +52,33 @@ __all__ = [
 
 Array = NDArray[np.float64]
 
-REFERENCE_GAS = "argon"
 REFERENCE_ANGLE_RAD = np.radians(60.0)
-# What an estimate is worth: a factor 1.5 either way, held to be so where compounds were measured.
-ESTIMATE_LN_SD = float(np.log(1.5))
-ESTIMATE_RANGE_EV = (200.0, 5000.0)
-ESTIMATE_BELOW, ESTIMATE_ABOVE = 0.40, 0.20
-# Seah, Nucl. Instrum. Meth. B 229, 348 (2005), abstract: 14 % for Ne and Xe where argon has 9 %.
-OTHER_GAS_LN_SD = 0.15
 SMALLEST_B = 0.05
-
-
-@frozen
-class _Tied:
-    """A law, its constants and its tie for one material under one gas."""
-
-    law: YieldLaw
-    constants: Mapping[str, float]
-    factor: float
-    exponent: float
-    at_ev: float
-    range_ev: tuple[float, float]
-    ln_sd: float
-    below: float
-    above: float
+ZERO_CELSIUS_K = 273.15
 
 
 def normal_yield(material: Material, *, energy_ev: ArrayLike, gas: str = REFERENCE_GAS) -> Array:
     """Yield at normal incidence, best value [atoms/ion]; shape of energy_ev.
 
-    law x factor x (E/E0)^exponent; the power is held at its end values outside the measured energies.
+    law x factor x (E/E0)^exponent; the power is held at its end values outside the measured energies. A
+    material known relative to another has that one's yield times the multiple; a mixture has the yield that
+    belongs to its milling rate (rates.mixing).
     """
-    tied = _tied(material, gas)
     energy = np.asarray(energy_ev, dtype=np.float64)
-    bare = tied.law.function(energy_ev=energy, **_ion(gas), **_pick(tied.constants, tied.law.needs))
+    if material.mixture:
+        parts = _part_speeds(material, energy, gas)
+        return _multiple(material) * material.atom_density_1e22 * mixed_rate(share=_shares(material), rate=parts)
+    tied = tied_law(material, gas)
+    bare = tied.law.function(energy_ev=energy, **ion_of(gas), **_pick(tied.constants, tied.law.needs))
     held = np.clip(energy, *tied.range_ev)
-    return np.asarray(bare * tied.factor * (held / tied.at_ev) ** tied.exponent)
+    return np.asarray(_multiple(material) * bare * tied.factor * (held / tied.at_ev) ** tied.exponent)
 
 
 def threshold_ev(material: Material, gas: str = REFERENCE_GAS) -> float:
-    """Energy below which nothing leaves [eV]."""
-    tied = _tied(material, gas)
+    """Energy below which nothing leaves [eV]; for a mixture, below which one of its parts stays."""
+    if material.mixture:
+        return max(threshold_ev(part.material, gas) for part in material.mixture)
+    tied = tied_law(material, gas)
     known = {**tied.constants, "m1_u": GASES[gas].mass_u}
     return float(tied.law.threshold(**_pick(known, tied.law.threshold_needs)))
 
@@ -87,9 +87,15 @@ def angular_shape(material: Material, *, energy_ev: ArrayLike, gas: str = REFERE
     """Y(incidence)/Y(0); f, b and c have the shape of energy_ev.
 
     The material's own constants where it has them, else the rule in the mass ratio. Own constants belong to
-    argon: for another gas the rule's step from argon to that gas is added to them.
+    argon: for another gas the rule's step from argon to that gas is added to them. A mixture's are its parts'
+    means, weighted by milling time: within a few per cent of what `rate_nm_per_s` takes part by part.
     """
     energy = np.asarray(energy_ev, dtype=np.float64)
+    if material.mixture:
+        weight = _time_shares(material, energy, gas)
+        shapes = [angular_shape(part.material, energy_ev=energy, gas=gas) for part in material.mixture]
+        f, b, c = (sum(w * getattr(s, key) for w, s in zip(weight, shapes, strict=True)) for key in "fbc")
+        return AngularShape(f=np.asarray(f), b=np.asarray(b), c=np.asarray(c))
     rule = _mass_rule(material, energy, gas)
     own = material.angular
     if not own.f:
@@ -103,13 +109,32 @@ def angular_shape(material: Material, *, energy_ev: ArrayLike, gas: str = REFERE
 
 
 def ln_yield_sd(material: Material, *, energy_ev: ArrayLike, gas: str = REFERENCE_GAS) -> Array:
-    """Sd of ln(yield at normal incidence); shape of energy_ev. The density's sd is not in it."""
-    return np.asarray(np.hypot(_tied(material, gas).ln_sd, outside_ln_sd(material, energy_ev=energy_ev, gas=gas)))
+    """Sd of ln(yield at normal incidence); shape of energy_ev. The density's sd is not in it.
+
+    The sd of a multiple, or of mixing, is; the parts of a mixture are taken to be off together.
+    """
+    outside = outside_ln_sd(material, energy_ev=energy_ev, gas=gas)
+    return np.asarray(np.hypot(_inside_ln_sd(material, np.asarray(energy_ev, dtype=np.float64), gas), outside))
+
+
+def _inside_ln_sd(material: Material, energy: Array, gas: str) -> Array:
+    """Sd of ln yield within the measured energies."""
+    own = material.relative.ln_sd if material.relative else 0.0
+    if material.mixture:
+        parts = [_inside_ln_sd(part.material, energy, gas) for part in material.mixture]
+        known = np.sum(_time_shares(material, energy, gas) * np.array(parts), axis=0)
+    else:
+        known = np.full(energy.shape, tied_law(material, gas).ln_sd)
+    return np.asarray(np.sqrt(known**2 + material.mixing_ln_sd**2 + own**2))
 
 
 def outside_ln_sd(material: Material, *, energy_ev: ArrayLike, gas: str = REFERENCE_GAS) -> Array:
     """The part of `ln_yield_sd` that comes from leaving the measured energies: 0 between them."""
-    tied = _tied(material, gas)
+    if material.mixture:
+        energy = np.asarray(energy_ev, dtype=np.float64)
+        parts = [outside_ln_sd(part.material, energy_ev=energy, gas=gas) for part in material.mixture]
+        return np.asarray(np.sum(_time_shares(material, energy, gas) * np.array(parts), axis=0))
+    tied = tied_law(material, gas)
     ln_e = np.log(np.asarray(energy_ev, dtype=np.float64))
     below = np.clip(np.log(tied.range_ev[0]) - ln_e, 0.0, None)
     above = np.clip(ln_e - np.log(tied.range_ev[1]), 0.0, None)
@@ -144,18 +169,59 @@ def rate_nm_per_s(
     """
     if not 0.0 <= doubly_charged < 1.0:
         raise ValueError(f"doubly_charged must be a share of the current from 0 to below 1, not {doubly_charged:g}")
+    flux = _Flux(energy_ev, doubly_charged, gas, angular_deviation)
     incidence = np.asarray(incidence_rad, dtype=np.float64)
-    charges = ((energy_ev, 1.0 - doubly_charged), (2.0 * energy_ev, 0.5 * doubly_charged))
-    total = np.zeros(incidence.size)
+    nodes = _nodes(tuple(incidence.ravel().tolist()), divergence_rad, rocking_rad)
+    removed = _removal(material, nodes, flux)
+    return np.asarray(NM_PER_S_PER_MA_CM2 * current_density_ma_per_cm2 * removed.reshape(incidence.shape))
+
+
+@frozen
+class _Flux:
+    """What arrives: energy [eV], share of doubly charged current, gas; and by how many sds the shape is off."""
+
+    energy_ev: float
+    doubly_charged: float
+    gas: str
+    deviation: float
+
+
+def _removal(material: Material, nodes: _Nodes, flux: _Flux) -> Array:
+    """Volume removed for each charge that arrives [1e-22 cm3], an entry an incidence; a mixture part by part."""
+    if material.mixture:
+        parts = [_removal(part.material, nodes, flux) for part in material.mixture]
+        return _multiple(material) * mixed_rate(share=_shares(material), rate=np.array(parts))
+    charges = ((flux.energy_ev, 1.0 - flux.doubly_charged), (2.0 * flux.energy_ev, 0.5 * flux.doubly_charged))
+    total = np.zeros(nodes.first.size)
     for energy, ions_per_charge in charges:
         if ions_per_charge == 0.0:
             continue
-        y0 = float(normal_yield(material, energy_ev=energy, gas=gas))
-        shape = _deviated(angular_shape(material, energy_ev=energy, gas=gas), material, angular_deviation)
-        nodes = _nodes(tuple(incidence.ravel().tolist()), divergence_rad, rocking_rad)
+        y0 = float(normal_yield(material, energy_ev=energy, gas=flux.gas))
+        shape = _deviated(angular_shape(material, energy_ev=energy, gas=flux.gas), material, flux.deviation)
         total += ions_per_charge * y0 * np.add.reduceat(nodes.weight * shape(nodes.incidence_rad), nodes.first)
-    speed = NM_PER_S_PER_MA_CM2 * current_density_ma_per_cm2 / material.atom_density_1e22
-    return np.asarray(speed * total.reshape(incidence.shape))
+    return np.asarray(total / material.atom_density_1e22)
+
+
+def _multiple(material: Material) -> float:
+    return material.relative.factor if material.relative else 1.0
+
+
+def _shares(material: Material) -> tuple[float, ...]:
+    return tuple(part.share for part in material.mixture)
+
+
+def _part_speeds(material: Material, energy: Array, gas: str) -> Array:
+    """Volume that an ion removes from each part alone, straight down [1e-22 cm3], (n, ...)."""
+    return np.array(
+        [
+            normal_yield(part.material, energy_ev=energy, gas=gas) / part.material.atom_density_1e22
+            for part in material.mixture
+        ]
+    )
+
+
+def _time_shares(material: Material, energy: Array, gas: str) -> Array:
+    return time_shares(share=_shares(material), rate=_part_speeds(material, energy, gas))
 
 
 @frozen
@@ -194,14 +260,62 @@ def trail(
     citation: Callable[[str], str] = str,
 ) -> list[str]:
     """Where a rate of this material comes from, line by line. citation: source key to full citation."""
-    tied = _tied(material, gas)
     sd = float(ln_yield_sd(material, energy_ev=energy_ev, gas=gas))
-    density = material.density
     return [
         f"{material.name}: {material.title}",
         *_estimate_line(material),
         f"yield at {energy_ev:g} eV {gas}: {float(normal_yield(material, energy_ev=energy_ev, gas=gas)):.3g}"
         f" atoms/ion ± {100 * sd:.0f} %",
+        *_relative_line(material),
+        *(_mixture_lines(material, energy_ev, gas, citation) or _law_lines(material, gas, citation)),
+        *(
+            f"sources differ on {clash.what}: {clash.taken} taken, not {clash.other}: {clash.why}"
+            for clash in material.disagreements
+        ),
+        *(
+            f"alarm: {alarm.what} from {alarm.temperature.value - ZERO_CELSIUS_K:.0f} ± {alarm.temperature.sd:.2g} degC"
+            f" ({_told(alarm.temperature.source, alarm.temperature.seen, citation)})"
+            for alarm in material.alarms
+        ),
+        *(f"caution: {material.toxicity.note}" for _ in [0] if material.toxicity),
+    ]
+
+
+def _relative_line(material: Material) -> list[str]:
+    """What a rate known relative to another material says of itself."""
+    told = material.relative
+    if told is None:
+        return []
+    return [
+        f"relative: mills as {told}, at every energy and angle ({material.origin}); its ± comes on top of that of"
+        f" {told.material}, whose law follows; a rate measured on {told.material} is not carried over"
+    ]
+
+
+def _mixture_lines(material: Material, energy_ev: float, gas: str, citation: Callable[[str], str]) -> list[str]:
+    """A mixture's rule and shares, then the trail of each part; empty for anything else."""
+    if not material.mixture:
+        return []
+    times = _time_shares(material, np.asarray(energy_ev), gas)
+    parts = ", ".join(
+        f"{100 * part.share:.3g} % {part.material.name} ({100 * time:.0f} % of the time)"
+        for part, time in zip(material.mixture, times, strict=True)
+    )
+    return [
+        f"mixture by volume ({material.origin}): {parts}",
+        "rule: 1/rate = sum of share/rate, true of thin laminates and, once the surface has settled, of uniform"
+        f" mixtures; parts off together, and {100 * material.mixing_ln_sd:.0f} % for mixing",
+        *(
+            f"part {line}" if k == 0 else f"  {line}"
+            for part in material.mixture
+            for k, line in enumerate(trail(part.material, energy_ev=energy_ev, gas=gas, citation=citation))
+        ),
+    ]
+
+
+def _law_lines(material: Material, gas: str, citation: Callable[[str], str]) -> list[str]:
+    tied, density = tied_law(material, gas), material.density
+    return [
         f"law: {tied.law.name}, {tied.law.citation}",
         "constants: "
         + ", ".join(f"{k} {v:g}" for k, v in tied.constants.items())
@@ -213,11 +327,6 @@ def trail(
         f" ({_told(density.source, density.seen, citation)})",
         f"angular shape: {material.angular.conditions}, sd {100 * material.angular_sd:.0f} % at 60 deg"
         f" ({_told(material.angular.source, material.angular.seen, citation)})",
-        *(
-            f"sources differ on {clash.what}: {clash.taken} taken, not {clash.other}: {clash.why}"
-            for clash in material.disagreements
-        ),
-        *(f"caution: {material.toxicity.note}" for _ in [0] if material.toxicity),
     ]
 
 
@@ -231,12 +340,6 @@ def _told(source: str, seen: bool, citation: Callable[[str], str]) -> str:
     return citation(source) if seen else f"{citation(source)}; from memory"
 
 
-def _ion(gas: str) -> dict[str, float]:
-    if gas not in GASES:
-        raise ValueError(f"'{gas}' is no beam gas known here; use one of {', '.join(GASES)}")
-    return {"z1": float(GASES[gas].z), "m1_u": GASES[gas].mass_u}
-
-
 def _pick(constants: Mapping[str, float], names: tuple[str, ...]) -> dict[str, float]:
     return {name: constants[name] for name in names}
 
@@ -245,68 +348,3 @@ def _mass_rule(material: Material, energy: Array, gas: str) -> AngularShape:
     return ep_constants(
         mass_ratio=GASES[gas].mass_u / material.mean_mass_u, eth_over_e=threshold_ev(material, gas) / energy
     )
-
-
-def _tied(material: Material, gas: str) -> _Tied:
-    _ion(gas)
-    tie = material.tie
-    if tie is None:
-        return _estimated(material, gas)
-    law, constants, factor, gas_sd = LAWS[material.law], material.constants, tie.factor, 0.0
-    if gas != REFERENCE_GAS:
-        gas_sd = OTHER_GAS_LN_SD
-    if gas not in law.gases and material.other_gases is not None:
-        other = material.other_gases
-        law, constants, factor, gas_sd = LAWS["yamamura_tawara"], other.constants, other.factor, other.ln_sd
-    return _Tied(
-        law,
-        constants,
-        factor,
-        tie.exponent,
-        tie.at_ev,
-        tie.range_ev,
-        float(np.hypot(tie.ln_sd, gas_sd)),
-        tie.below_per_efold,
-        tie.above_per_efold,
-    )
-
-
-def _estimated(material: Material, gas: str) -> _Tied:
-    factor = float(tie_of_unmeasured(mean_mass_u=material.mean_mass_u))
-    gas_sd = 0.0 if gas == REFERENCE_GAS else OTHER_GAS_LN_SD
-    return _Tied(
-        LAWS["yamamura_tawara"],
-        _effective_constants(material),
-        factor,
-        0.0,
-        1000.0,
-        ESTIMATE_RANGE_EV,
-        float(np.hypot(ESTIMATE_LN_SD, gas_sd)),
-        ESTIMATE_BELOW,
-        ESTIMATE_ABOVE,
-    )
-
-
-def _effective_constants(material: Material) -> Mapping[str, float]:
-    atoms = material.atoms
-    return _averaged(
-        tuple(material.composition[atom.symbol] for atom in atoms),
-        tuple((float(atom.z), atom.m_u, atom.us_ev, atom.q, atom.w_ev, atom.s) for atom in atoms),
-        material.formation_ev_per_atom,
-    )
-
-
-@lru_cache(maxsize=64)
-def _averaged(shares: tuple[float, ...], rows: tuple[tuple[float, ...], ...], formation: float) -> Mapping[str, float]:
-    z, m_u, us_ev, q, w_ev, s = np.array(rows).T
-    target = effective_target(
-        share=shares, z=z, m_u=m_u, us_ev=us_ev, q=q, w_ev=w_ev, s=s, formation_ev_per_atom=formation
-    )
-    return {
-        "z2": target.z2,
-        "m2_u": target.m2_u,
-        "us_ev": target.us_ev,
-        "q": target.q,
-        "w_ev": target.w_ev,
-        "s": target.s,
-    }

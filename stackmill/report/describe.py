@@ -22,7 +22,13 @@ _OTHER_INKS = "?!xvz"
 
 def describe(job: Job, paper: Paper) -> str:
     """The whole description, as wide as the paper."""
-    parts = [wrapped(job.title, paper.width), _layers(job), _regions(job), _seams(job), _recipe(job, paper)]
+    parts = [
+        wrapped(job.title, paper.width),
+        _layers(job),
+        _regions(job, paper.width),
+        _seams(job),
+        _recipe(job, paper),
+    ]
     parts += [section(job, region) for region in job.column_map.regions]
     parts.append(_legend(job, paper))
     return paper.plain("\n\n".join(part for part in parts if part))
@@ -55,7 +61,7 @@ def _measure(thickness: Measure) -> str:
     return text
 
 
-def _regions(job: Job) -> str:
+def _regions(job: Job, width: int) -> str:
     rows = []
     for region in job.column_map.regions:
         for c in range(len(region.area)):
@@ -63,7 +69,7 @@ def _regions(job: Job) -> str:
             share = f"{100 * region.area[c]:.3g} %"
             rows.append([name, region.label(c), share, length(float(region.top_nm[c])), _sequence(job, region, c)])
     headers = ["region", "column", "area", "height", "materials from the top"]
-    return Grid(headers, rows, frozenset({2, 3})).text()
+    return Grid(headers, rows, frozenset({2, 3})).text(width=width)
 
 
 def _sequence(job: Job, region: RegionColumns, c: int) -> str:
@@ -94,7 +100,7 @@ def section(job: Job, region: RegionColumns) -> str:
     for k in range(_SECTION_ROWS):
         height = top - (k + 0.5) * step
         inked = "".join(inks.get(_material_at(region, int(c), height), " ") for c in columns)
-        lines.append(f"{top - k * step:8.0f} nm |{inked}|")
+        lines.append(f"{round(top - k * step):8d} nm |{inked}|")
     return "\n".join(lines)
 
 

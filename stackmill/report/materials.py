@@ -49,14 +49,14 @@ def machine_rows(materials: Sequence[Material]) -> list[dict[str, Any]]:
     ]
 
 
-def as_json(materials: Sequence[Material], warnings: Sequence[str]) -> str:
+def as_json(materials: Sequence[Material], warnings: Sequence[str], paper: Paper) -> str:
     """The materials for machines."""
-    return json_text(machine_rows(materials), {"inputs_sha256": None, "seed": None, "warnings": list(warnings)})
+    return json_text(machine_rows(materials), {"inputs_sha256": None, "seed": None, "warnings": list(warnings)}, paper)
 
 
-def as_csv(materials: Sequence[Material]) -> str:
+def as_csv(materials: Sequence[Material], paper: Paper) -> str:
     """The materials as CSV."""
-    return csv_text(machine_rows(materials), ROW_NAMES)
+    return csv_text(machine_rows(materials), ROW_NAMES, paper)
 
 
 def listed(materials: Sequence[Material], paper: Paper, *, markdown: bool) -> str:
@@ -79,7 +79,7 @@ def listed(materials: Sequence[Material], paper: Paper, *, markdown: bool) -> st
         " `stackmill materials NAME` shows every value and its source.",
         paper.width,
     )
-    table = Grid(headers, rows, frozenset({2, 3, 4})).text("github" if markdown else "simple")
+    table = Grid(headers, rows, frozenset({2, 3, 4})).text("github" if markdown else "simple", paper.width)
     return paper.plain(f"{table}\n\n{note}")
 
 
@@ -110,6 +110,27 @@ def _full(m: Material, citation: Callable[[str], str]) -> list[str]:
     def told(source: str, seen: bool) -> str:
         return f"[{citation(source)}{'' if seen else '; from memory'}]"
 
+    shape = angular_shape(m, energy_ev=_ENERGY_EV)
+    rise = float(shape.ratio(np.radians(60.0)))
+    sd = float(ln_yield_sd(m, energy_ev=_ENERGY_EV))
+    atoms_per_ion = float(normal_yield(m, energy_ev=_ENERGY_EV))
+    return [
+        *_what_it_is(m, told),
+        *_law_and_tie(m, told),
+        f"  angular shape: Y(60°)/Y(0) = {rise:.3g} ± {100 * m.angular_sd:.0f} % at 1 keV argon, {m.angular.conditions}"
+        f" {told(m.angular.source, m.angular.seen)}",
+        *(f"  sources differ on {d.what}: {d.taken} taken, not {d.other}: {d.why}" for d in m.disagreements),
+        *([f"  caution: {m.toxicity.note} {told(m.toxicity.source, m.toxicity.seen)}"] if m.toxicity else []),
+        *([f"  note: {m.notes}"] if m.notes else []),
+        f"  so: {atoms_per_ion:.3g} atoms/ion straight down at 1 keV ± {100 * sd:.0f} %;"
+        f" {_rate(m):.3g} nm/min at 1 keV, 45°, 0.5 mA/cm²",
+    ]
+
+
+_Told = Callable[[str, bool], str]
+
+
+def _what_it_is(m: Material, told: _Told) -> list[str]:
     def sourced(what: str, s: Sourced) -> str:
         return f"  {what}: {s.value:.5g} ± {s.sd:.2g} {s.unit}, {s.conditions} {told(s.source, s.seen)}"
 
@@ -119,34 +140,26 @@ def _full(m: Material, citation: Callable[[str], str]) -> list[str]:
     if m.estimate:
         lines.append("  ESTIMATE: no trustworthy yield is known; good to a factor 1.5 at best: mill a coupon")
     lines.append("  atoms: " + ", ".join(f"{symbol} {share:g}" for symbol, share in m.composition.items()))
-    lines.append(sourced("density", m.density))
-    lines.append(f"  atom density: {m.atom_density_1e22:.4g}e22 per cm3")
+    lines += [sourced("density", m.density), f"  atom density: {m.atom_density_1e22:.4g}e22 per cm3"]
     lines += [sourced("heat of formation", m.formation)] if m.formation else []
     lines += [sourced("melting point", m.melting)] if m.melting else []
+    return lines
+
+
+def _law_and_tie(m: Material, told: _Told) -> list[str]:
+    lines = []
     if m.constants:
         values = ", ".join(f"{key} {value:g}" for key, value in m.constants.items())
         lines.append(f"  law: {m.law} with {values} {told(m.constants_source, m.constants_seen)}")
-    if m.tie:
-        lines.append(
-            f"  tie to measured yields: factor {m.tie.factor:.3g}, exponent {m.tie.exponent:+.3f} in"
-            f" E/{m.tie.at_ev:g} eV, sd {100 * m.tie.ln_sd:.0f} % from {m.tie.range_ev[0]:g} to"
-            f" {m.tie.range_ev[1]:g} eV, rms {100 * m.tie.rms:.0f} % ({m.tie.basis})"
-        )
-        lines += [
-            f"    {row.energy_ev:g} eV: {row.atoms_per_ion:g} atoms/ion,"
-            f" {100 * (np.exp(row.ln_over_law) - 1):+.0f} % from the untied law {told(row.source, row.seen)}"
-            for row in m.tie.rows
-        ]
-    shape = angular_shape(m, energy_ev=_ENERGY_EV)
+    if m.tie is None:
+        return lines
     lines.append(
-        f"  angular shape: Y(60°)/Y(0) = {float(shape.ratio(np.radians(60.0))):.3g}"
-        f" ± {100 * m.angular_sd:.0f} % at 1 keV argon, {m.angular.conditions} {told(m.angular.source, m.angular.seen)}"
+        f"  tie to measured yields: factor {m.tie.factor:.3g}, exponent {m.tie.exponent:+.3f} in E/{m.tie.at_ev:g} eV,"
+        f" sd {100 * m.tie.ln_sd:.0f} % from {m.tie.range_ev[0]:g} to {m.tie.range_ev[1]:g} eV,"
+        f" rms {100 * m.tie.rms:.0f} % ({m.tie.basis})"
     )
-    lines += [f"  sources differ on {d.what}: {d.taken} taken, not {d.other}: {d.why}" for d in m.disagreements]
-    lines += [f"  caution: {m.toxicity.note} {told(m.toxicity.source, m.toxicity.seen)}"] if m.toxicity else []
-    lines += [f"  note: {m.notes}"] if m.notes else []
-    lines.append(
-        f"  so: {float(normal_yield(m, energy_ev=_ENERGY_EV)):.3g} atoms/ion straight down at 1 keV"
-        f" ± {100 * float(ln_yield_sd(m, energy_ev=_ENERGY_EV)):.0f} %; {_rate(m):.3g} nm/min at 1 keV, 45°, 0.5 mA/cm²"
-    )
-    return lines
+    return lines + [
+        f"    {row.energy_ev:g} eV: {row.atoms_per_ion:g} atoms/ion, {100 * (np.exp(row.ln_over_law) - 1):+.0f} % from"
+        f" the untied law {told(row.source, row.seen)}"
+        for row in m.tie.rows
+    ]

@@ -1,6 +1,6 @@
 """Rows to text: for machines (JSON, CSV) and for people (plain and Markdown tables).
 
-The only place that rounds and aligns. Machine output keeps full precision, null for none, and never NaN.
+Machine output keeps full precision, null for none, and never NaN.
 """
 
 from __future__ import annotations
@@ -59,17 +59,29 @@ class Grid:
     rows: Sequence[Sequence[str]]
     right: frozenset[int] = frozenset()
 
-    def text(self, style: str = "plain") -> str:
-        """The table in a style of tabulate's: `plain` with a rule under the headers, or `github`."""
+    def text(self, style: str = "simple", width: int = 0) -> str:
+        """The table in a style of tabulate's: `simple` with a rule under the headers, or `github`.
+
+        width: fold the last column so that a simple table fits; 0: leave it as wide as it is.
+        """
         align = ["right" if k in self.right else "left" for k in range(len(self.headers))]
         if style == "github":
             headers = [header.replace("\n", " ") for header in self.headers]
             cells = [[cell.replace("|", "\\|") for cell in row] for row in self.rows]
             return tabulate(cells, headers, tablefmt="github", disable_numparse=True, colalign=align)
-        return tabulate(list(self.rows), list(self.headers), tablefmt="simple", disable_numparse=True, colalign=align)
+        rows = self._folded(width) if width and self.rows else self.rows
+        return tabulate(list(rows), list(self.headers), tablefmt="simple", disable_numparse=True, colalign=align)
+
+    def _folded(self, width: int) -> list[list[str]]:
+        import textwrap
+
+        columns = list(zip(self.headers, *self.rows, strict=True))[:-1]
+        used = sum(2 + max(len(line) for cell in column for line in cell.split("\n")) for column in columns)
+        room = max(width - used, len(self.headers[-1]), 16)
+        return [[*row[:-1], "\n".join(textwrap.wrap(row[-1], room)) or ""] for row in self.rows]
 
 
-def json_text(rows: Sequence[Mapping[str, Any]], envelope: Mapping[str, Any]) -> str:
+def json_text(rows: Sequence[Mapping[str, Any]], envelope: Mapping[str, Any], paper: Paper) -> str:
     """Machine output: the envelope's fields, then `rows`."""
     from stackmill import __version__
 
@@ -79,16 +91,16 @@ def json_text(rows: Sequence[Mapping[str, Any]], envelope: Mapping[str, Any]) ->
         **envelope,
         "rows": list(rows),
     }
-    return json.dumps(_finite(document), indent=2, ensure_ascii=False, allow_nan=False)
+    return json.dumps(_finite(document), indent=2, ensure_ascii=paper.ascii, allow_nan=False)
 
 
-def csv_text(rows: Sequence[Mapping[str, Any]], names: Sequence[str]) -> str:
+def csv_text(rows: Sequence[Mapping[str, Any]], names: Sequence[str], paper: Paper) -> str:
     """The rows as CSV with a header line; empty for none."""
     out = io.StringIO()
     writer = csv.DictWriter(out, fieldnames=list(names), lineterminator="\n", extrasaction="ignore")
     writer.writeheader()
     writer.writerows(_finite(list(rows)))
-    return out.getvalue().rstrip("\n")
+    return paper.plain(out.getvalue().rstrip("\n"))
 
 
 def _finite(value: Any) -> Any:

@@ -6,7 +6,9 @@ import math
 from collections.abc import Sequence
 from typing import Any
 
+from stackmill.documents.recipe import Beam, Process
 from stackmill.planning.stops import Reach, StopTable
+from stackmill.planning.windows import weighted_quantile
 from stackmill.report.render import Grid, Paper, csv_text, json_text, wrapped
 from stackmill.report.window_words import (
     column_name,
@@ -16,7 +18,7 @@ from stackmill.report.window_words import (
     lost_by,
     window_in_words,
 )
-from stackmill.report.words import step_in_words
+from stackmill.report.words import moment, percent, step_in_words
 from stackmill.units import clock
 
 ROW_NAMES = (
@@ -64,14 +66,15 @@ def machine_windows(table: StopTable) -> list[dict[str, Any]]:
             "left_standing_share": window.left_standing,
             "provisional": table.provisional,
             "best_stop_s": window.best_stop_s,
-            "exposed_by": column_name(table, *window.exposed_by),
+            "exposed_by": column_name(table, *window.exposed_by) if window.exposed_by else None,
+            "lost_before_leg": window.lost_before,
             "counted_from_s": window.leg_start_s,
             "counted_from": leg_name(table, window.leg),
         }
     ]
 
 
-def as_json(table: StopTable, warnings: Sequence[str]) -> str:
+def as_json(table: StopTable, warnings: Sequence[str], paper: Paper) -> str:
     """The whole answer for machines."""
     job = table.ensemble.inputs.job
     envelope = {
@@ -82,21 +85,23 @@ def as_json(table: StopTable, warnings: Sequence[str]) -> str:
         "windows": machine_windows(table),
         "variance_shares": [{"input": s.name, "share": s.share} for s in table.shares],
     }
-    return json_text(machine_rows(table), envelope)
+    return json_text(machine_rows(table), envelope, paper)
 
 
-def as_csv(table: StopTable) -> str:
+def as_csv(table: StopTable, paper: Paper) -> str:
     """The rows as CSV."""
-    return csv_text(machine_rows(table), [*ROW_NAMES, "present", "area_share"])
+    return csv_text(machine_rows(table), [*ROW_NAMES, "present", "area_share"], paper)
 
 
 def as_text(table: StopTable, paper: Paper, *, markdown: bool = False, every: bool = False) -> str:
     """The answer for people, as wide as the paper."""
     parts = [_heading(table, paper)]
     parts += _grids(table, paper, "github" if markdown else "simple", every=every)
-    parts.append("\n".join(wrapped(line, paper.width, "  ") for line in _notes(table, every=every)))
+    bullet = "- " if markdown else ""
+    parts.append("\n".join(wrapped(bullet + line, paper.width, "  ") for line in _notes(table, every=every)))
     if table.window is not None:
-        parts.append("\n".join(wrapped(line, paper.width, "  ") for line in window_in_words(table, table.window)))
+        words = [bullet + line.lstrip() if markdown else line for line in window_in_words(table, table.window)]
+        parts.append("\n".join(wrapped(line, paper.width, "  ") for line in words))
     return paper.plain("\n\n".join(part for part in parts if part))
 
 
@@ -150,7 +155,7 @@ def shown_columns(table: StopTable, *, every: bool) -> list[_Key]:
     if every:
         return [(r, c) for r, region in enumerate(regions) for c in range(len(region.area))]
     window = table.window
-    deciding = {window.exposed_by, *([window.lost_by] if window.lost_by else [])} if window else set()
+    deciding = {window.exposed_by, window.lost_by} - {None} if window else set()
     last = _shown_layers(table)[-1]
     chosen = []
     for r, region in enumerate(regions):
@@ -158,7 +163,7 @@ def shown_columns(table: StopTable, *, every: bool) -> list[_Key]:
         wide = [row for row in rows if row.share >= _NARROW] or rows
         by_time = sorted(wide, key=lambda row: math.inf if row.time_s is None else row.time_s)
         keep = {0, by_time[0].column_number, by_time[-1].column_number}
-        keep |= {c for rr, c in deciding if rr == r}
+        keep |= {key[1] for key in deciding if key and key[0] == r}
         chosen += [(r, c) for c in sorted(keep)]
     return chosen
 
@@ -173,13 +178,12 @@ def _cell(row: Reach) -> str:
     """One time with its bounds, `*` where the column alone is not to be trusted, blank where no layer is."""
     if not row.present:
         return "·"
-    if row.time_s is None:
+    if row.time_s is None and row.time_early_s is None:
         return "not reached"
     if row.time_s == 0.0 and row.time_late_s == 0.0:
         return "0:00"
-    early = "never" if row.time_early_s is None else clock(row.time_early_s)
-    late = "never" if row.time_late_s is None else clock(row.time_late_s)
-    return f"{clock(row.time_s)} ({early}–{late}){'' if row.flat_ok else '*'}"
+    early, late = moment(row.time_early_s), moment(row.time_late_s)
+    return f"{moment(row.time_s)} ({early}–{late}){'' if row.flat_ok else '*'}"
 
 
 def _shown_layers(table: StopTable) -> list[str]:
@@ -192,26 +196,45 @@ def _shown_layers(table: StopTable) -> list[str]:
 
 
 def _notes(table: StopTable, *, every: bool) -> list[str]:
+    job = table.ensemble.inputs.job
     q = table.confidence
+    beam = any(isinstance(step, Beam) for step in job.recipe.steps)
     notes = [
-        f"Times are beam-on (min:s), best value (early–late): {50 * (1 - q):.3g} % of draws come before the early"
-        f" one and {50 * (1 - q):.3g} % after the late one. A dot: the layer is not in this column."
+        f"Times are {'beam-on' if beam else 'process'} time (min:s, from an hour on h:min:s), best value (early–late):"
+        f" {percent(0.5 * (1 - q))} of draws come before the early one and as many after the late one. A dot: the layer"
+        " is not in this column."
     ]
     if any(not row.flat_ok for row in table.rows):
         notes.append(
             "* by the column alone: a facet or a shadow from a neighbour gets to the column's centre before,"
             " so the true time may differ."
         )
-    for leg in range(1, len(table.ensemble.best_outcome.leg_start_s)):
-        at = float(table.ensemble.best_outcome.leg_start_s[leg][0])
+    if beam and any(isinstance(step, Process) for step in job.recipe.steps):
         notes.append(
-            f"Times after {clock(at)} count from the end of {leg_name(table, leg)!r}, stopped by eye at about"
-            f" {clock(at)}: start the stopwatch again there."
+            "Strips and processes with rates take no beam-on time: what they reach is reached at their moment."
         )
+    notes += _look_notes(table)
     hidden = len(shown_columns(table, every=True)) - len(shown_columns(table, every=every))
     if hidden:
         notes.append(
             f"{hidden} more column{'s' if hidden > 1 else ''} left out: shown are those that decide, the first and the"
             " last down, and the widest of each region (--all shows every one)."
+        )
+    return notes
+
+
+def _look_notes(table: StopTable) -> list[str]:
+    """For each step that the eye stops: when to start watching, and how its end restarts the stopwatch."""
+    best, draws = table.ensemble.best_outcome.leg_start_s, table.ensemble.outcome.leg_start_s
+    notes = []
+    for leg in range(1, len(best)):
+        at, before = float(best[leg][0]), float(best[leg - 1][0])
+        early = weighted_quantile(draws[leg] - draws[leg - 1], table.ensemble.weights, 0.5 * (1 - table.confidence))
+        name = leg_name(table, leg)
+        until = f" and before {clock(float(best[leg + 1][0]))}" if leg + 1 < len(best) else ""
+        notes.append(
+            f"{name!r} is stopped by eye: watch from {clock(before + early)} on. Times after {clock(at)}{until} are"
+            f" for a stop at {clock(at)} sharp: restart the stopwatch when the eye stops it, and subtract {clock(at)}"
+            " from them."
         )
     return notes

@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
+from stackmill.documents.recipe import Beam, Process, Strip
 from stackmill.planning.stops import StopTable
-from stackmill.planning.windows import Window
+from stackmill.planning.windows import FIRST_LOOK_RISK, Window
 from stackmill.report.words import percent
 from stackmill.units import clock, format_time
 
@@ -12,25 +13,24 @@ def window_in_words(table: StopTable, window: Window) -> list[str]:
     """The window, line by line."""
     lines = [f"Goal: {goal_name(table)} in {', '.join(goal_regions(table))}, {_goal_level(table)}."]
     lines += _no_window(table, window) if window.exposed_s is None else _safe_window(table, window)
-    if window.first_look_s is not None:
-        which = "Next look" if window.leg else "First look"
-        lines.append(f"  {which} no later than {_at(table, window, window.first_look_s)}:")
-        lines[-1] += " until then the chance of loss is under 5 %."
+    lines += _look(table, window)
     if window.best_chance > 0.0:
         lines.append(f"  Left standing at the stop: {percent(window.left_standing)} of the goal's area.")
     if window.stop_s is not None:
-        lines += _planned_end(table, window.stop_s)
+        lines += _planned_end(table, window.stop_s, window.lost_s)
     if table.provisional:
         lines.append("  PROVISIONAL: a facet or a shadow gets to the centre of a deciding column before; see *.")
     return lines
 
 
 def _no_window(table: StopTable, window: Window) -> list[str]:
+    if window.exposed_by is None:
+        return ["THE GOAL IS NEVER EXPOSED: it stays covered, or the recipe ends before."]
     verdict = "NO STOP SUCCEEDS in any draw: by the time the goal is exposed, something is lost."
     if window.best_chance > 0.0:
         stop = _at(table, window, window.best_stop_s)
         verdict = f"NO SAFE WINDOW at {percent(window.confidence)}: the best stop, {stop}, has a chance of"
-        verdict += f" {window.best_chance:.2f}."
+        verdict += f" {chance_text(window.best_chance)}."
     return [
         verdict,
         f"  In conflict: {column_name(table, *window.exposed_by)} is exposed last,"
@@ -41,38 +41,89 @@ def _no_window(table: StopTable, window: Window) -> list[str]:
 def _safe_window(table: StopTable, window: Window) -> list[str]:
     assert window.exposed_s is not None
     assert window.stop_s is not None
+    assert window.chance is not None
+    assert window.exposed_by is not None
     sure = percent(window.confidence)
-    lines = [f"STOP AT {_at(table, window, window.stop_s)}: chance {window.chance:.2f}."]
-    if window.lost_s is None:
-        lines.append(f"  Window at {sure}: from {clock(window.exposed_s)} on; nothing is lost after it.")
-    else:
+    start = _at(table, window, window.exposed_s)
+    stop = _at(table, window, window.stop_s) + _after(table, window.stop_s)
+    lines = [f"STOP AT {stop}: chance {chance_text(window.chance)}."]
+    if window.lost_s is not None:
         wide = format_time(window.lost_s - window.exposed_s)
-        lines.append(f"  Window at {sure}: {clock(window.exposed_s)} to {clock(window.lost_s)} ({wide}).")
+        lines.append(f"  Window at {sure}: from {start} on, for {wide}.")
         lines.append(f"  LATEST STOP {_at(table, window, window.lost_s)}.")
+    elif window.by_eye:
+        eye = leg_name(table, window.leg + 1)
+        lines.append(f"  Window at {sure}: from {start} until the eye stops {eye!r}; stop there, start no later step.")
+    else:
+        lines.append(f"  Window at {sure}: from {start} on.")
     lines.append(f"  Exposed last: {column_name(table, *window.exposed_by)}.")
-    lines.append(f"  Lost first: {lost_by(table, window) or 'nothing'}.")
+    if window.lost_s is not None:
+        lines.append(f"  Lost first: {lost_by(table, window) or 'nothing'}.")
     return lines
 
 
-def _at(table: StopTable, window: Window, time_s: float) -> str:
+def _after(table: StopTable, stop_s: float) -> str:
+    """Which strips and processes stand at the very moment of a stop, and come before it."""
+    recipe = table.ensemble.inputs.job.recipe
+    if not any(isinstance(step, Beam) for step in recipe.steps):
+        return ""
+    spans = zip(table.ensemble.best.spans, recipe.steps, strict=False)
+    names = [repr(s.name) for s, step in spans if isinstance(step, Process | Strip) and s.start_s[0] == stop_s]
+    return f", after {' and '.join(names)}" if names and stop_s > 0.0 else ""
+
+
+def _look(table: StopTable, window: Window) -> list[str]:
+    """When to look: in this leg if that is in time, before it if not."""
+    lines = []
+    if window.lost_before >= FIRST_LOOK_RISK:
+        before = f"before {leg_name(table, window.leg)!r} is stopped" if window.leg else "from the start"
+        lines.append(f"  LOST ALREADY {before} with a chance of {chance_text(window.lost_before)}: look earlier.")
+    if window.first_look_s is None:
+        return lines
+    moment = _at(table, window, window.first_look_s, window.first_look_leg)
+    if window.first_look_leg == window.leg and window.first_look_s >= window.best_stop_s:
+        return [*lines, f"  Look at the stop. The chance of loss stays under 5 % until {moment}."]
+    which = "Next look" if window.first_look_leg else "First look"
+    return [*lines, f"  {which} no later than {moment}: until then the chance of loss is under 5 %."]
+
+
+def _at(table: StopTable, window: Window, time_s: float, leg: int | None = None) -> str:
     """A moment on the clock, and from the last stop by eye where there is one before it."""
-    if not window.leg:
+    leg = window.leg if leg is None else leg
+    if not leg:
         return clock(time_s)
-    since = clock(max(time_s - window.leg_start_s, 0.0))
-    return f"{clock(time_s)} ({since} after {leg_name(table, window.leg)!r} is stopped)"
+    since = clock(max(time_s - float(table.ensemble.best_outcome.leg_start_s[leg][0]), 0.0))
+    return f"{clock(time_s)} ({since} after {leg_name(table, leg)!r} is stopped)"
 
 
-def _planned_end(table: StopTable, stop_s: float) -> list[str]:
+def chance_text(chance: float) -> str:
+    """A chance with two decimals, and never as certain as it is not."""
+    if chance >= 0.995:
+        return "over 0.99"
+    return "under 0.01" if 0.0 < chance < 0.005 else f"{chance:.2f}"
+
+
+def _planned_end(table: StopTable, stop_s: float, lost_s: float | None) -> list[str]:
     """What the stop means for the recipe: steps left unused, or staying beyond its end."""
     recipe = table.ensemble.inputs.job.recipe
     spans = table.ensemble.best.spans[: len(recipe.steps)]
-    unused = [span.name for span in spans if span.start_s[0] >= stop_s and span.length_s[0] > 0.0]
+    # A strip or a process at the very moment of the stop belongs to it: the clock stands while it runs.
+    milling = [span for span, step in zip(spans, recipe.steps, strict=True) if isinstance(step, Beam)]
+    others = [span for span, step in zip(spans, recipe.steps, strict=True) if isinstance(step, Process | Strip)]
+    unused = [span.name for span in milling if span.start_s[0] >= stop_s]
+    unused += [span.name for span in others if milling and span.start_s[0] > stop_s]
     if unused:
         return [f"  The stop leaves unused: {', '.join(unused)}."]
     end = float(spans[-1].end_s[0])
-    if stop_s > end * (1 + 1e-9):
-        return [f"  The recipe itself ends at {clock(end)}: stay on in its last step."]
-    return []
+    beyond = [
+        what for what, time in (("the stop", stop_s), ("the latest stop", lost_s or 0.0)) if time > end * (1 + 1e-9)
+    ]
+    if not beyond:
+        return []
+    last = next(span.name for span in reversed(spans) if span.length_s[0] > 0.0)
+    lies = "lie" if len(beyond) > 1 else "lies"
+    staying = f"staying on means more of {last!r}, with what is covered still covered"
+    return [f"  The recipe ends at {clock(end)}; {' and '.join(beyond)} {lies} beyond it: {staying}."]
 
 
 def leg_name(table: StopTable, leg: int) -> str:

@@ -47,12 +47,13 @@ def _end(step: Beam | Process) -> str:
     if step.for_ is not None:
         return f"for {format_time(step.for_)}"
     if step.seen is not None:
-        within = f" within ± {step.seen.within.sd:.3g} s" if step.seen.within.sd else ""
+        within = f" within ± {format_time(step.seen.within.sd)}" if step.seen.within.sd else " by a perfect eye"
         where = f" of {' and '.join(step.seen.in_)}" if step.seen.in_ else ""
         return f"until {_target(step.seen)} is seen over {100 * step.seen.area:.3g} %{where}{within}"
     assert step.to is not None
     where = f" in {', '.join(step.to.in_)}" if step.to.in_ else ""
-    return f"planned to end at {_target(step.to)}{where}"
+    share = f", {percent(step.to.area)} of it" if step.to.area is not None else ""
+    return f"planned to end at {_target(step.to)}{where}{share}"
 
 
 def _target(target: Target | Seen) -> str:

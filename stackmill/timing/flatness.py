@@ -27,14 +27,15 @@ class SlopeSpeeds:
     """How fast sloped ground comes down in one step, at best values.
 
     slope (Q,): tangents of slope angles, from 0 up; speed_nm_per_s (M, Q): vertical speed of each material's
-    surface at each slope; shadow_tan: how far a shadow reaches, as a multiple of the height that throws it;
-    any_slope: the speeds differ with the side a slope faces, so that no slope is known to be the steepest.
+    surface at each slope, of the side that falls fastest; shadow_tan: how far a shadow reaches, as a multiple of
+    the height that throws it; slowest_nm_per_s (M, Q): of the side that falls slowest, where that differs: then
+    no slope is known to be the steepest.
     """
 
     slope: Array
     speed_nm_per_s: Array
     shadow_tan: float
-    any_slope: bool = False
+    slowest_nm_per_s: Array | None = None
 
     @property
     def flat_nm_per_s(self) -> Array:
@@ -48,8 +49,9 @@ class SlopeSpeeds:
 
     @cached_property
     def foot_nm_per_s(self) -> Array:
-        """(M,): how fast the foot of a standing wall spreads over a floor, max (H(0) - H(q)) / q."""
-        return np.asarray(self._chords(self.speed_nm_per_s[:, :1] - self.speed_nm_per_s)[:, -1])
+        """(M, Q): how fast the foot of a slope up to each one spreads over a floor, max (H(0) - H(q)) / q."""
+        slowest = self.speed_nm_per_s if self.slowest_nm_per_s is None else self.slowest_nm_per_s
+        return self._chords(self.speed_nm_per_s[:, :1] - slowest)
 
     def _chords(self, rise: Array) -> Array:
         chords = np.zeros_like(rise)
@@ -64,7 +66,7 @@ class SlopeSpeeds:
         """
         flat = self.flat_nm_per_s
         keeps_up = self.speed_nm_per_s[:, None, :] >= flat[None, :, None]
-        if self.any_slope:
+        if self.slowest_nm_per_s is not None:
             keeps_up = np.zeros_like(keeps_up)
         index = np.where(keeps_up.any(axis=-1), np.argmax(keeps_up, axis=-1), len(self.slope) - 1)
         slower = flat[:, None] < flat[None, :] * (1.0 - _SAME_SPEED)
@@ -99,7 +101,8 @@ class _Pairs:
         """
         speed = np.where(material >= 0, speeds.flat_nm_per_s[material], 0.0)
         fallen = np.cumsum(speed * span_s[:, None], axis=0)
-        height = self.height_nm - np.concatenate([np.zeros((1, len(self.height_nm))), fallen[:-1]])
+        after = self.height_nm - fallen
+        height = np.concatenate([self.height_nm[None], after[:-1]])
         below = height[:, :, None] < height[:, None, :]
         both = (material[:, :, None] >= 0) & (material[:, None, :] >= 0)
         steepest = np.where(both, speeds.steepest[material[:, :, None], material[:, None, :]], 0)
@@ -107,7 +110,10 @@ class _Pairs:
         steepest = np.where(self.wall & ~below, len(speeds.slope) - 1, steepest)
         slope = np.maximum.accumulate(np.maximum(steepest, self.slope), axis=0)
         kink = speeds.kink_nm_per_s[material[:, :, None], slope]
-        foot = np.where(self.wall & below, speeds.foot_nm_per_s[material][:, :, None], 0.0)
+        # The lower one's floor is met by the foot of whatever slope there is in its neighbour.
+        beside = np.where(self.wall, len(speeds.slope) - 1, np.swapaxes(slope, 1, 2))
+        low = below | (after[:, :, None] < after[:, None, :])
+        foot = np.where(low, speeds.foot_nm_per_s[material[:, :, None], beside], 0.0)
         pace = np.maximum(kink, foot)
         travel = self.travel_nm + np.cumsum(pace * span_s[:, None, None], axis=0)
         self._meet(self.distance_nm - (travel - pace * span_s[:, None, None]), pace, start_s, span_s)

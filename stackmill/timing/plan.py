@@ -22,7 +22,8 @@ Array = NDArray[np.float64]
 Index = NDArray[np.intp]
 
 DEFAULT_SHARE = 0.95  # of the area that must be down for a `to` step, where no goal says otherwise
-LOST_SHARE = 0.01  # the goal or a keep is lost when this much of its area is
+LOST_SHARE = 0.01  # the goal is lost when this much of its area has passed its lower level
+ANY_SHARE = 1e-9  # a keep is lost where any of it is too thin
 
 
 @frozen
@@ -80,8 +81,19 @@ def _cut_columns(region: RegionColumns, deltas_nm: Array) -> list[CutColumn]:
     for c, count in enumerate(region.segments):
         thickness = region.thickness_nm[c, :count, None] + region.dthickness[c, :count] @ deltas_nm
         material = region.material[c, :count].tolist()
-        cut.append(CutColumn(material, list(np.clip(thickness, 0.0, None)), float(region.area[c])))
+        cut.append(CutColumn(material, list(_standing(thickness)), float(region.area[c])))
     return cut
+
+
+def _standing(thickness_nm: Array) -> Array:
+    """Thicknesses (S, D), top down, none below zero.
+
+    Where a draw would have a segment thinner than nothing, what lies on it gives way, so that outer sizes hold.
+    """
+    if thickness_nm.min() >= 0.0:
+        return thickness_nm
+    tops = np.maximum.accumulate(np.maximum(np.cumsum(thickness_nm[::-1], axis=0), 0.0), axis=0)
+    return np.diff(tops, axis=0, prepend=0.0)[::-1]
 
 
 # A place to be turned into a Spot once all cuts are made: region, column, and which of its levels or boundaries.
@@ -188,7 +200,7 @@ def fall_steps(
         if isinstance(step, CoverStep | UncoverStep):
             named = step.cover if isinstance(step, CoverStep) else step.uncover
             # What is covered or bared after the last milling changes no time, and must not while staying on.
-            shielded = frozenset(map(regions.index, named)) if i < _last_milling(job) else frozenset()
+            shielded = frozenset(map(regions.index, named)) if i < last_milling(job) else frozenset()
             steps.append(Cover(shielded, isinstance(step, CoverStep), step.name))
         elif isinstance(step, StripStep):
             known = job.column_map.materials
@@ -206,7 +218,7 @@ def fall_steps(
     return steps + _going_on(steps, draws)
 
 
-def _last_milling(job: Job) -> int:
+def last_milling(job: Job) -> int:
     """The number of the last step that lowers or strips."""
     milling = (i for i, step in enumerate(job.recipe.steps) if not isinstance(step, CoverStep | UncoverStep))
     return max(milling, default=-1)
@@ -223,7 +235,7 @@ def _until(job: Job, where: Ground, step: Beam | Process, late_s: Array) -> Unti
     target: Target | Seen | None = step.to or step.seen
     assert target is not None
     columns, area = [], []
-    wanted = target.in_ or (job.goal.in_ if job.goal else ())
+    wanted = target.in_ or _goal_regions(job)
     for r, region in enumerate(job.column_map.regions):
         if wanted and region.name not in wanted:
             continue
@@ -234,6 +246,14 @@ def _until(job: Job, where: Ground, step: Beam | Process, late_s: Array) -> Unti
                 area.append(float(region.area[c]))
     share = target.area if target.area is not None else (job.goal.clear if job.goal else DEFAULT_SHARE)
     return Until(tuple(columns), np.array(area), share, late_s)
+
+
+def _goal_regions(job: Job) -> tuple[str, ...]:
+    """The regions in which the goal is wanted: those it names, or all that have it; none without a goal."""
+    if job.goal is None:
+        return ()
+    regions = job.column_map.regions
+    return tuple(dict.fromkeys(regions[r].name for r, *_ in wanted_columns(job, job.goal)))
 
 
 def _target_above(job: Job, where: Ground, r: int, c: int, target: Target | Seen) -> int | None:

@@ -12,7 +12,7 @@ from pathlib import Path
 
 import pytest
 
-from stackmill.cli.main import main
+from stackmill.cli.main import app, main
 
 ROOT = Path(__file__).parents[2]
 LOOK, LAB = "stacks/four-metal/look.yaml", "stacks/four-metal/lab.yaml"
@@ -53,7 +53,7 @@ def test_exit_codes_and_what_is_said(arguments, code, says, capsys):
     assert "Traceback" not in error
 
 
-@pytest.mark.parametrize("verb", ["check", "materials", "rates", "stops"])
+@pytest.mark.parametrize("verb", sorted(command.callback.__name__ for command in app.registered_commands))
 def test_every_help_has_an_example(verb, capsys):
     assert main([verb, "--help"]) == 0
     assert f"Example: stackmill {verb}" in capsys.readouterr().out
@@ -205,3 +205,59 @@ def test_why_traces_every_rate_and_ends_with_what_would_narrow_it(capsys):
     for word in ("Yamamura", "measured on this mill: 41 nm/min", "density", "angular shape", "sha256", "seed 2026"):
         assert word in told
     assert told.rstrip().splitlines()[-1].startswith("To narrow it:")
+
+
+def test_what_is_no_plain_file_is_never_replaced_and_a_link_stays_a_link(tmp_path, capsys):
+    pipe, target, link = tmp_path / "pipe.csv", tmp_path / "target.csv", tmp_path / "link.csv"
+    os.mkfifo(pipe)
+    assert main(["stops", LOOK, "-o", str(pipe), "--force"]) == 4
+    assert "not a plain file" in capsys.readouterr().err
+    assert pipe.is_fifo()
+    target.write_text("old", encoding="utf-8")
+    target.chmod(0o640)
+    link.symlink_to(target)
+    assert main(["stops", LOOK, "-o", str(link), "--force"]) == 0
+    assert link.is_symlink()
+    assert target.read_text(encoding="utf-8").startswith("region,")
+    assert target.stat().st_mode & 0o777 == 0o640
+
+
+def test_a_new_file_has_the_usual_mode(tmp_path):
+    before = os.umask(0o027)
+    try:
+        main(["stops", LOOK, "-o", str(tmp_path / "a.csv")])
+    finally:
+        os.umask(before)
+    assert (tmp_path / "a.csv").stat().st_mode & 0o777 == 0o640
+
+
+@pytest.mark.parametrize("arguments", [["stops", LOOK, "--why"], ["stops", LOOK, "--all"], ["rates", LOOK, "--why"]])
+def test_an_option_that_a_format_would_ignore_is_refused(arguments, capsys):
+    assert main([*arguments, "-f", "json"]) == 2
+    assert "does nothing for json" in capsys.readouterr().err
+
+
+def test_a_full_disk_or_no_output_at_all_is_no_fault_of_ours():
+    full = subprocess.run(
+        f"{sys.executable} -m stackmill materials W > /dev/full", shell=True, capture_output=True, text=True, cwd=ROOT, check=False
+    )
+    assert full.returncode == 4
+    assert "standard output cannot be written" in full.stderr
+    gone = subprocess.run(
+        f"{sys.executable} -m stackmill materials W >&-", shell=True, capture_output=True, text=True, cwd=ROOT, check=False
+    )
+    assert gone.returncode == 4
+    assert "Traceback" not in gone.stderr
+
+
+def test_json_is_ascii_on_paper_that_knows_no_other(tmp_path):
+    stack = (ROOT / "stacks/two-metal/stack.yaml").read_text(encoding="utf-8").replace("overcoat", "é±top")
+    (tmp_path / "s.yaml").write_text(stack, encoding="utf-8")
+    for form in ("json", "csv", "table"):
+        answer = run("stops", str(tmp_path / "s.yaml"), "-f", form, env={**os.environ, "PYTHONIOENCODING": "ascii"})
+        assert answer.returncode == 0, answer.stderr
+        assert answer.stdout.isascii()
+
+
+def test_a_negative_seed_is_a_usage_error(capsys):
+    assert main(["stops", LOOK, "--seed", "-1"]) == 2

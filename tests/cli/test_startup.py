@@ -8,6 +8,8 @@ from pathlib import Path
 
 import pytest
 
+from stackmill.cli.main import app
+
 ROOT = Path(__file__).parents[2]
 HEAVY = {"pandas", "pint", "scipy", "matplotlib", "numba", "rich", "statistics"}
 PROBE = """
@@ -31,16 +33,28 @@ def loaded(*arguments):
     return set(run.stderr.split("LOADED", 1)[1].split())
 
 
-@pytest.mark.parametrize("verb", ["check", "rates", "stops", "materials"])
+VERBS = sorted(command.callback.__name__ for command in app.registered_commands)
+
+
+@pytest.mark.parametrize("verb", VERBS)
 def test_help_loads_only_the_command_line(verb):
     for arguments in (["--help"], [verb, "--help"]):
         modules = loaded(*arguments)
         assert not modules & (HEAVY | {"numpy", "yaml"})  # typer itself brings pydantic
 
 
-def test_check_and_stops_load_no_heavy_library():
-    assert not loaded("check", "stacks/four-metal/look.yaml") & HEAVY
-    assert not loaded("stops", "stacks/four-metal/look.yaml") & HEAVY
+LIGHT = {
+    "check": ["stacks/four-metal/look.yaml"],
+    "materials": ["W"],
+    "rates": ["stacks/four-metal/look.yaml"],
+    "schema": ["stack"],
+    "stops": ["stacks/four-metal/look.yaml"],
+}
+
+
+@pytest.mark.parametrize("verb", VERBS)
+def test_no_verb_loads_a_heavy_library(verb):
+    assert not loaded(verb, *LIGHT[verb]) & HEAVY
 
 
 def test_importing_the_package_loads_next_to_nothing():

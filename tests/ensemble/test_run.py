@@ -59,7 +59,7 @@ def test_a_rate_measured_without_the_days_current_carries_the_currents_error_aga
     text = LINEAR.replace("0.5 mA/cm2, stage", "0.5 mA/cm2 ± 6 %, stage")
     today = load_job(text.replace("current_density: 0.5 mA/cm2}", "current_density: 0.5 mA/cm2, same_day: yes}"))
     assert at(today, Inputs.of(today).model.ln_rate_sd(0), "SiO2") == pytest.approx(0.01, rel=1e-3)
-    assert at(today, Inputs.of(today).model.best_nm_per_s(0, 0.0), "W") * 60 == pytest.approx(20.0, rel=0.01)
+    assert at(today, Inputs.of(today).model.best_nm_per_s(0), "W") * 60 == pytest.approx(20.0, rel=0.01)
     # a rate of today says something of today's current, and so of materials that were not measured
     assert at(today, Inputs.of(today).model.ln_rate_sd(0), "Si") < at(same, Inputs.of(same).model.ln_rate_sd(0), "Si")
 
@@ -102,3 +102,12 @@ def test_variance_shares_of_a_nearly_linear_time(linear):
     shares = {s.name: s.share for s in table.shares}
     names = ["thickness of top", "thickness of middle", "SiO2: rate", "W: rate"]
     assert [shares[name] for name in names] == pytest.approx(list(want), abs=0.03)
+
+
+@pytest.mark.closed_form
+def test_every_stated_error_of_a_current_counts():
+    step = load_job(LINEAR.replace("motion: rotating, for", "motion: rotating, current_density: 0.5 mA/cm2 ± 40 %, for"))
+    assert at(step, Inputs.of(step).model.ln_rate_sd(0), "SiO2") == pytest.approx(np.hypot(0.01, 0.4), rel=1e-3)
+    text = LINEAR.replace("current_density: 0.5 mA/cm2}", "current_density: 0.5 mA/cm2 ± 3 %}")
+    coupon = load_job(text)
+    assert at(coupon, Inputs.of(coupon).model.ln_rate_sd(0), "SiO2") == pytest.approx(np.hypot(0.01, 0.03), rel=0.01)

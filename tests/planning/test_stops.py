@@ -2,12 +2,18 @@
 
 from __future__ import annotations
 
+import re
+
 import numpy as np
 import pytest
+from scipy.optimize import brentq
 
 from stackmill.errors import InputError
 from stackmill.jobs import load_job
 from stackmill.planning.stops import stop_table
+from stackmill.rates.yields import angular_shape
+from stackmill.report.window_words import window_in_words
+from stackmill.timing.plan import _standing
 
 JOB = """
 stack:
@@ -68,8 +74,8 @@ def test_exposed_lost_and_chance_by_brute_force(level, upper, lower):
         assert window.exposed_s is None
         assert window.stop_s is None
         return
-    assert window.exposed_s <= good.min() <= window.exposed_s + 2.0
-    assert window.lost_s - 2.0 <= good.max() <= window.lost_s
+    assert window.exposed_s <= good.min() <= window.exposed_s + 5.0
+    assert window.lost_s - 5.0 <= good.max() <= window.lost_s
 
 
 @pytest.mark.closed_form
@@ -112,12 +118,112 @@ def test_a_step_to_a_layer_already_passed_is_refused_with_its_place():
         forecast(JOB.replace("LEVEL", "top").replace("for: 5 min}]}", "for: 5 min}, " + steps + "]}"))
 
 
+NARROW = """
+stack:
+  cell: {x: 2 um, y: 2 um}
+  layers:
+    - {name: level, material: SiO2 PECVD, thickness: 900 nm ± 1 %,
+       features: [{name: wall, material: W, line: {along: y, centre: 1 um, width: WIDTH}}]}
+    - {name: under, material: SiO2 PECVD, thickness: 900 nm}
+    - {name: substrate, material: Si, thickness: 300 um}
+mill: {gas: argon, current_density: 0.5 mA/cm2, divergence: 0 deg, stage: {zero_error: ± 0 deg}}
+materials:
+  materials:
+    - name: SiO2 PECVD
+      measured_rate: {rate: 40 nm/min ± 1 %, energy: 1 keV, incidence: 0 deg, current_density: 0.5 mA/cm2}
+    - name: W
+      measured_rate: {rate: 36 nm/min ± 1 %, energy: 1 keV, incidence: 0 deg, current_density: 0.5 mA/cm2}
+recipe: {steps: [{name: mill, energy: 1 keV, incidence: 0 deg, motion: rotating, for: 5 min}]}
+goal: {layer: under, at: top, clear: 100 %}
+"""
+
+
+@pytest.mark.independent
+def test_a_slow_line_is_flat_until_its_kinks_meet_and_a_window_on_it_is_provisional():
+    narrow, wide = (forecast(NARROW.replace("WIDTH", width)) for width in ("200 nm", "1200 nm"))
+    rows = {r.column: r for r in narrow.rows if r.layer == "under"}
+    assert not rows["wall"].flat_ok
+    assert narrow.provisional
+    # the kink speed of tungsten beside oxide 10/9 as fast, from its own angular shape by a root and a search
+    job = narrow.ensemble.inputs.job
+    shape = angular_shape(job.materials["W"], energy_ev=1000.0)
+
+    def ratio(p):
+        return float(shape.ratio(np.arctan(p)))
+
+    steepest = brentq(lambda p: ratio(p) - 40 / 36, 1e-4, 1.5)
+    chords = [(ratio(p) - 1.0) / p for p in np.linspace(1e-3, steepest, 4000)]
+    flat_for = 600.0 / (36.0 / 60.0 * max(chords))
+    assert flat_for > 1500.0 > flat_for / 6.0  # the line is through at 1500 s, the narrow one has a sixth of the width
+    assert {r.column: r for r in wide.rows if r.layer == "under"}["wall"].flat_ok
+
+
 @pytest.mark.closed_form
-def test_flat_rows_are_those_before_a_facet_arrives():
-    table = forecast(JOB.replace("LEVEL", "top"))
-    rows = {(r.region, r.column, r.layer): r for r in table.rows}
-    assert all(r.flat_ok for key, r in rows.items() if key[0] == "field")
-    assert rows["array", "bar", "metal"].flat_ok
+def test_a_film_alone_is_flat_for_ever_and_its_window_not_provisional():
+    table = forecast(
+        NARROW.replace(
+            ",\n       features: [{name: wall, material: W, line: {along: y, centre: 1 um, width: WIDTH}}]", ""
+        )
+    )
+    assert all(row.flat_ok for row in table.rows)
+    assert not table.provisional
+
+
+STEP = "energy: 1 keV, incidence: 45 deg, motion: rotating"
+
+
+@pytest.mark.closed_form
+def test_a_process_takes_no_beam_on_time_and_the_stop_after_it_keeps_it():
+    wet = "{name: wet, rates: {SiO2 PECVD: 150 nm/min, other: 0 nm/min}, for: 4 min}"
+    recipe = f"{{name: bulk, {STEP}, for: 2 min}}, {wet}"
+    text = re.sub(
+        r"steps: \[.*\]}", f"steps: [{recipe}, {{name: on, {STEP}, for: 1 min}}]}}", JOB.replace("LEVEL", "top")
+    )
+    table = forecast(text)
+    rows = {(r.column, r.layer): r for r in table.rows if r.region == "array"}
+    assert rows["bar", "metal"].time_s == 120.0
+    assert rows["bar", "metal"].step == "wet"
+    assert table.ensemble.best.spans[2].start_s[0] == 120.0
+    words = "\n".join(window_in_words(table, table.window))
+    assert "unused: wet" not in words
+
+
+@pytest.mark.closed_form
+def test_a_to_step_lasts_as_long_in_every_draw_and_counts_the_goals_regions():
+    text = re.sub(
+        r"steps: \[.*\]}", f"steps: [{{name: down, {STEP}, to: metal}}, {{name: on, {STEP}, for: 1 min}}]}}", JOB
+    )
+    text = text.replace("LEVEL", "top").replace(", in: [array]", "")
+    outcome = forecast(text).ensemble.outcome
+    assert np.ptp(outcome.end_s) == 0.0
+    covered = text.replace("steps: [", "steps: [{cover: [field], with: silver paint}, ")
+    assert forecast(covered).ensemble.outcome.end_s[0] == outcome.end_s[0]
+
+
+@pytest.mark.independent
+def test_the_window_hardly_depends_on_the_seed():
+    job = load_job(JOB.replace("LEVEL", "50 % ± 150 nm"))
+    windows = [stop_table(job, seed=seed).window for seed in range(8)]
+    ends = np.array([(w.exposed_s, w.lost_s, w.stop_s) for w in windows])
+    assert (np.ptp(ends, axis=0) < 0.08 * ends.mean(axis=0)).all()
+
+
+@pytest.mark.closed_form
+def test_what_is_lost_before_the_look_is_said_and_the_first_look_comes_before_it():
+    text = re.sub(
+        r"steps: \[.*\]}", f"steps: [{{name: bulk, {STEP}, seen: {{layer: under, in: array, area: 100 %}}}}]}}", JOB
+    ).replace("LEVEL", "top")
+    table = forecast(text)
+    assert (table.window.leg, table.window.first_look_leg) == (0, 0)
+    assert table.window.by_eye
+    assert 0.0 < table.window.first_look_s < table.ensemble.best_outcome.lost_s[0]
+
+
+@pytest.mark.closed_form
+def test_a_draw_thinner_than_nothing_gives_way_and_outer_sizes_hold():
+    thickness = np.array([[60.0, 60.0], [-20.0, 40.0], [30.0, 30.0]])
+    standing = _standing(thickness)
+    np.testing.assert_allclose(standing, [[40.0, 60.0], [0.0, 40.0], [30.0, 30.0]])
 
 
 @pytest.mark.closed_form

@@ -90,6 +90,16 @@ def test_columns_that_fall_alike_stay_flat_and_differences_add_up_over_layers():
 
 
 @pytest.mark.closed_form
+def test_the_foot_of_a_slope_spreads_over_the_faster_floor():
+    # a curve on which gentle slopes come down slower than flat ground, as under a tilted rotating beam
+    slope = np.array([0.0, 0.5, 1.0, 2.0])
+    table = SlopeSpeeds(slope, np.array([[1.0, 0.8, 1.1, 1.5], [0.9, 1.0, 1.2, 1.3]]), 0.0)
+    columns = [column((0, 1e5)), column((1, 1e5))]
+    times = until(columns, [beam(1.0, 0.9)], [[np.inf, 300.0], [1e9, np.inf]], [table])
+    assert times[0] == pytest.approx(300.0 / 0.4)  # (1.0 - 0.8) / 0.5, up to the slope that keeps up
+
+
+@pytest.mark.closed_form
 def test_a_shadow_falls_on_what_lies_low_beside_what_stands_high():
     columns = [column((0, 1e5)), column((1, 1e5))]
     tan = np.tan(np.radians(60.0))
