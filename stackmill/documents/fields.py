@@ -274,7 +274,7 @@ def _on_off(value: Any) -> bool:
     return choices[word]
 
 
-OnOff = Annotated[bool, PlainValidator(_on_off), WithJsonSchema({"enum": ["on", "off", "yes", "no", True, False]})]
+OnOff = Annotated[bool, PlainValidator(_on_off), WithJsonSchema({"enum": ["on", "off", "yes", "no"]})]
 
 
 def split_reference(text: str) -> tuple[str, str | None]:

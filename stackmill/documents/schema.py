@@ -13,7 +13,7 @@ from pydantic import BaseModel
 from pydantic.json_schema import GenerateJsonSchema, JsonSchemaMode, JsonSchemaValue
 from pydantic_core import core_schema
 
-from stackmill.documents import job, mill, recipe, stack
+from stackmill.documents import recipe
 from stackmill.documents.fields import one_or_more
 from stackmill.documents.job import JobFile
 from stackmill.documents.material import MaterialsFile
@@ -36,13 +36,13 @@ _MODELS: Mapping[str, type[BaseModel]] = {
 _NUMBER = r"[+-]?([0-9]+\.?[0-9]*|\.[0-9]+)([eE][+-]?[0-9]+)?"
 _UNIT = r"[^0-9\s,±+-][^\s,±]*"
 _PLUS_MINUS = r"(±|\+/-|\+-)"
+_SD = rf"{_PLUS_MINUS}\s*{_NUMBER}\s*{_UNIT}\s*"
 # Of the unit only that there is one: any unit of the right kind is taken, and their list has no end.
-_EXACT = rf"^\s*{_NUMBER}\s*{_UNIT}(\s+{_NUMBER}\s*{_UNIT})*\s*$"
-_MEASURE = (
-    rf"^\s*{_NUMBER}\s*{_UNIT}\s*({_PLUS_MINUS}\s*{_NUMBER}\s*{_UNIT}\s*)?"
-    rf"(,\s*across (the )?die\s*{_PLUS_MINUS}\s*{_NUMBER}\s*{_UNIT}\s*)?$"
-)
-_ERROR = rf"^\s*{_PLUS_MINUS}\s*{_NUMBER}\s*{_UNIT}\s*$"
+_PATTERNS = {
+    "exact": rf"^\s*({_NUMBER}\s*{_UNIT}\s*)+$",
+    "uncertain": rf"^\s*{_NUMBER}\s*{_UNIT}\s*({_SD})?(,\s*across (the )?die\s*{_SD})?$",
+    "plus-minus": rf"^\s*{_SD}$",
+}
 _WRITTEN_AS = "written as "
 
 _Wrap = Callable[[Schema], Schema]
@@ -60,7 +60,6 @@ def _or_text(inner: Schema) -> Schema:
 _SHORT_FORMS: Mapping[Any, _Wrap] = {
     one_or_more: _list_or_one,
     recipe._reference: _or_text,
-    job._goal_reference: _or_text,
 }
 _EITHER = {
     "Feature": ("line", "via", "block", "pattern_density"),
@@ -101,10 +100,11 @@ def json_schema(kind: FileKind) -> Schema:
         _bind_files(body, definitions)
     for title, block in {name: body, **definitions}.items():
         _tidy(title, block)
-    _without_titles(body)
-    _without_titles(definitions)
-    top = {"$schema": DIALECT, "title": f"stackmill {kind} file"}
-    return top | body | ({"$defs": definitions} if definitions else {})
+    if "Goal" in definitions:
+        definitions["Goal"] = _or_text(definitions["Goal"])
+    definitions |= {title: {"type": "string", "pattern": pattern} for title, pattern in _PATTERNS.items()}
+    body, definitions = _lean(body), _lean(definitions)
+    return {"$schema": DIALECT, "title": f"stackmill {kind} file", **body, "$defs": definitions}
 
 
 def _bind_files(body: Schema, definitions: Schema) -> None:
@@ -128,32 +128,38 @@ def _tidy(title: str, block: Schema) -> None:
         block["oneOf"] = [{"required": [key]} for key in _EITHER[title]]
     if title in _STEPS:
         required -= {"name"}
+    if title in ("Goal", "Keep"):
+        required -= {"layer"}
+        block["anyOf"] = [{"required": ["layer"]}, {"required": ["feature"]}]
     if "required" in block:
         block["required"] = [key for key in block["required"] if key in required]
 
 
-def _without_titles(node: Any) -> None:
-    """Leave out what only says the same again, and give texts with a unit their pattern."""
+def _lean(node: Any) -> Any:
+    """A schema without titles that say nothing, without nulls, and with a pattern for texts that have a unit."""
     if isinstance(node, list):
-        for item in node:
-            _without_titles(item)
-    elif isinstance(node, dict):
-        if isinstance(node.get("title"), str):
-            del node["title"]
-        if not isinstance(node.get("default"), str | bool | int | float):
-            node.pop("default", None)
-        _give_pattern(node)
-        for value in list(node.values()):
-            _without_titles(value)
+        return [_lean(item) for item in node]
+    if not isinstance(node, dict):
+        return node
+    choices = [choice for choice in node.get("anyOf", ()) if choice != {"type": "null"}]
+    if len(choices) == 1:
+        rest = {key: value for key, value in node.items() if key != "anyOf"}
+        return _lean(choices[0] | rest)
+    lean = {key: _lean(value) for key, value in node.items() if not _says_nothing(key, value)}
+    if choices:
+        lean["anyOf"] = _lean(choices)
+    if "yes" in lean.get("enum", ()):
+        # Editors that read YAML as it was before 2009 take these words for truth values.
+        lean["enum"] = [*dict.fromkeys(map(str, lean["enum"])), True, False]
+    description = lean.get("description")
+    if lean.get("type") == "string" and isinstance(description, str) and _WRITTEN_AS in description:
+        example = description.split(_WRITTEN_AS, 1)[1]
+        form = "plus-minus" if example.startswith("±") else "uncertain" if "±" in example else "exact"
+        lean = {"examples": [example], **lean, "$ref": f"#/$defs/{form}"}
+    return lean
 
 
-def _give_pattern(node: Schema) -> None:
-    description = node.get("description")
-    if node.get("type") != "string" or not isinstance(description, str) or _WRITTEN_AS not in description:
-        return
-    example = description.split(_WRITTEN_AS, 1)[1]
-    node.setdefault("examples", [example])
-    if example.startswith("±"):
-        node["pattern"] = _ERROR
-    else:
-        node["pattern"] = f"{_MEASURE}|{_EXACT}"
+def _says_nothing(key: str, value: Any) -> bool:
+    if key == "title":
+        return isinstance(value, str)
+    return key == "default" and not isinstance(value, str | bool)

@@ -263,9 +263,8 @@ def off_the_map(region: str) -> Sentence:
 
 def out_of_beam(region: str) -> Sentence:
     """A region that the beam's formula leaves without current."""
-    return Sentence(
-        f"region {quoted(region)} lies where the mill's profile leaves no beam", "check 'at' and the profile"
-    )
+    what = f"region {quoted(region)} lies where the mill's profile leaves no beam"
+    return Sentence(what, "check the region's 'at' and the profile")
 
 
 def overlapping(first: str, second: str) -> Sentence:

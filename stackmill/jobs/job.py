@@ -78,7 +78,7 @@ class Job:
 
     @cached_property
     def _feature_numbers(self) -> Mapping[tuple[str, str], int]:
-        numbers = {}
+        numbers: dict[tuple[str, str], int] = {}
         for n, (k, name) in enumerate(self.column_map.features):
             layer = self.stack.layers[k]
             feature = next(one for one in layer.features if one.name == name)

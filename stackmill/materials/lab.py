@@ -51,7 +51,7 @@ def relative(lab: LabMaterial, base: Material) -> Material:
         told = RelativeRate(
             told.factor * base.relative.factor, base.relative.material, math.hypot(told.ln_sd, base.relative.ln_sd)
         )
-    changes = {"title": f"{lab.name}, mills as {lab.rate}", **_changes(lab), "name": lab.name, "like": base.name}
+    changes = {"title": f"mills as {lab.rate}", **_changes(lab), "name": lab.name, "like": base.name}
     changes |= {"aliases": lab.aliases, "relative": told, "estimate": base.estimate}
     if base.tie is not None:
         changes["tie"] = replace(base.tie, basis=f"{lab.rate}; {base.name}: {base.tie.basis}", rows=())
@@ -78,7 +78,7 @@ def mixed(lab: LabMaterial, parts: Mapping[str, Material]) -> Material:
     words = " + ".join(f"{100 * part.share:g} % {part.material.name}" for part in mix)
     whole = Material(
         name=lab.name,
-        title=f"{lab.name}: {words} by volume",
+        title=f"{words} by volume",
         kind="composite",
         aliases=lab.aliases,
         composition=MappingProxyType(atoms),

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import difflib
+import re
 from collections.abc import Mapping, Sequence
 from pathlib import Path
 from typing import TypeVar
@@ -71,7 +72,9 @@ class Library:
     def near(self, name: str, most: int = 3) -> tuple[str, ...]:
         """The names most like `name`, best first."""
         folded = {key.casefold(): target for key, target in self._known.items()}
-        hits = difflib.get_close_matches(name.casefold(), list(folded), n=2 * most, cutoff=0.6)
+        wanted = name.casefold()
+        hits = difflib.get_close_matches(wanted, list(folded), n=4 * most, cutoff=0.6)
+        hits.sort(key=lambda hit: (_likeness(wanted, hit), _likeness(_plain(wanted), _plain(hit))), reverse=True)
         return tuple(dict.fromkeys(folded[hit] for hit in hits))[:most]
 
     def get(self, name: str) -> Material:
@@ -143,6 +146,15 @@ def _head(path: Path) -> tuple[str, tuple[str, ...]]:
         )
     inside = second.split("[", 1)[1].rsplit("]", 1)[0]
     return first[6:].strip(), tuple(alias.strip() for alias in inside.split(",") if alias.strip())
+
+
+def _likeness(one: str, other: str) -> float:
+    return difflib.SequenceMatcher(None, other, one).ratio()
+
+
+def _plain(name: str) -> str:
+    """A name with all digits alike: SiO3 is more likely meant for SiO2 than for SiON."""
+    return re.sub("[0-9]", "0", name)
 
 
 def _read(model: type[_Model], path: Path) -> _Model:

@@ -106,8 +106,65 @@ def test_variance_shares_of_a_nearly_linear_time(linear):
 
 @pytest.mark.closed_form
 def test_every_stated_error_of_a_current_counts():
-    step = load_job(LINEAR.replace("motion: rotating, for", "motion: rotating, current_density: 0.5 mA/cm2 ± 40 %, for"))
+    step = load_job(
+        LINEAR.replace("motion: rotating, for", "motion: rotating, current_density: 0.5 mA/cm2 ± 40 %, for")
+    )
     assert at(step, Inputs.of(step).model.ln_rate_sd(0), "SiO2") == pytest.approx(np.hypot(0.01, 0.4), rel=1e-3)
     text = LINEAR.replace("current_density: 0.5 mA/cm2}", "current_density: 0.5 mA/cm2 ± 3 %}")
     coupon = load_job(text)
     assert at(coupon, Inputs.of(coupon).model.ln_rate_sd(0), "SiO2") == pytest.approx(np.hypot(0.01, 0.03), rel=0.01)
+
+
+LOOK = LINEAR.replace(
+    "steps: [{name: mill, energy: 1 keV, incidence: 45 deg, motion: rotating, for: 1 h}]",
+    "steps: [{name: eye, energy: 1 keV, incidence: 45 deg, motion: rotating, seen: {layer: middle, within: ± 20 s}},"
+    " {name: wet, rates: {W: 60 nm/min ± 5 %, other: 0 nm/min}, for: 1 min},"
+    " {name: on, energy: 1 keV, incidence: 45 deg, motion: rotating, for: 1 h}]",
+)
+
+
+@pytest.mark.independent
+def test_the_eye_and_a_process_vary_as_stated():
+    ensemble = run(load_job(LOOK))
+    sample = ensemble.inputs.sample(ensemble.z)
+    reached = sample.thickness_deltas_nm()[0][0] + 500.0
+    late = ensemble.outcome.leg_start_s[1] - reached / sample.rate_nm_per_s(0)[0]
+    assert late.std() == pytest.approx(20.0, rel=0.02)
+    assert late.mean() == pytest.approx(0.0, abs=0.5)
+    wet = sample.rate_nm_per_s(1)
+    assert np.log(wet[1]).std() == pytest.approx(0.05, rel=0.02)
+    assert np.exp(np.log(wet[1]).mean()) == pytest.approx(1.0, rel=1e-3)
+    assert (wet[0] == 0.0).all()
+
+
+@pytest.mark.independent
+def test_times_after_a_look_are_early_and_late_by_what_comes_after_it():
+    table = stop_table(load_job(LOOK + "goal: {layer: bottom, at: top}\n"))
+    row = next(r for r in table.rows if r.layer == "bottom")
+    outcome = table.ensemble.outcome
+    since = np.sort(outcome.layer_s[0][0, 2] - outcome.leg_start_s[1])
+    best_look = float(table.ensemble.best_outcome.leg_start_s[1][0])
+    ranks = [int(np.ceil(share * 4096)) - 1 for share in (0.05, 0.95)]
+    assert [row.time_early_s, row.time_late_s] == pytest.approx([best_look + since[k] for k in ranks])
+
+
+@pytest.mark.closed_form
+def test_one_per_cent_of_the_goal_is_lost_and_any_of_a_keep():
+    text = """
+stack:
+  cell: {x: 1 um, y: 1 um}
+  layers:
+    - {name: film, material: SiO2, thickness: 300 nm, features: [
+        {name: weak, material: Cu, block: {x: [0 um, 0.09 um], y: [0 um, 0.1 um]}}]}
+    - {name: substrate, material: Si, thickness: 300 um}
+recipe: {steps: [{name: mill, energy: 1 keV, incidence: 0 deg, motion: rotating, for: 1 h}]}
+goal: {layer: film, at: 90 % ± 10 nm}
+"""
+    best = run(load_job(text)).best_outcome
+    columns = run(load_job(text)).best_ground.goal_lower
+    reach = run(load_job(text)).best.reach
+    slow, fast = (float(reach(0, c, columns[c].above)[0]) for c in (0, 1))
+    assert fast < slow  # copper is 0.9 % of the goal: not yet a loss
+    assert best.lost_s[0] == slow
+    kept = run(load_job(text + "keep: [{layer: film, at_least: 260 nm}]\n")).best_outcome
+    assert kept.lost_s[0] < slow

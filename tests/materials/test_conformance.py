@@ -163,6 +163,9 @@ def test_every_number_has_its_sd_and_conditions(name):
     assert material.tie.range_ev[0] <= material.tie.range_ev[1]
     if len(material.composition) > 1:
         assert material.formation.conditions
+    if material.melting is not None:
+        assert material.melting.unit == "K"
+        assert 0.0 < material.melting.sd < 0.05 * material.melting.value
 
 
 @pytest.mark.parametrize("name", NAMES)

@@ -141,6 +141,7 @@ def test_the_shape_told_of_a_mixture_is_close_to_what_its_rate_takes():
     assert told == pytest.approx(exact / exact[0], rel=0.05)
 
 
+@pytest.mark.closed_form
 def test_mixtures_and_multiples_nest():
     library = library_of(
         "{name: a, mixture: {SiO2: 50 %, SiN PECVD: 50 %}}",
@@ -197,6 +198,7 @@ def test_a_film_can_be_laid_over_a_library_that_is_in_use():
     assert "mystery" not in Library.load()
 
 
+@pytest.mark.closed_form
 def test_a_library_material_can_be_scaled_under_its_own_name():
     shipped = Library.load().get("SiO2")
     scaled = library_of("{name: SiO2, rate: 0.8 x SiO2 ± 10 %}").get("thermal oxide")

@@ -41,6 +41,11 @@ def test_an_unknown_name_is_met_with_the_nearest(wrong, near):
     assert caught.value.exit_code == 3
 
 
+def test_a_slip_in_a_digit_finds_the_other_digit_first():
+    assert Library.load().near("SiO3")[0] == "SiO2"
+    assert Library.load().near("SiO3", most=1) == ("SiO2",)
+
+
 def test_a_name_like_nothing_points_to_the_list():
     with pytest.raises(UnknownMaterialError, match=re.escape("`stackmill materials` lists the names")):
         Library.load().get("xyzzy quux")
