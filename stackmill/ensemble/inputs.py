@@ -62,6 +62,11 @@ class Sample:
         for k, i in enumerate(column_map.inputs):
             if i.thickness.sd:
                 shared[k] = i.thickness.sd * self.rows[f"thickness of {i.name}"]
+        if column_map.scale_sd:
+            # One error of the microscope stretches everything it measured, which the substrate's depth is not.
+            last = len(column_map.layers) - 1
+            value = np.array([0.0 if i.layer == last else i.thickness.value for i in column_map.inputs])
+            shared += np.outer(value, column_map.scale_sd * self.rows["measured scale"])
         regions = []
         for region in column_map.regions:
             deltas = shared.copy()
@@ -70,6 +75,17 @@ class Sample:
                     deltas[k] += i.thickness.across_sd * self.rows[f"thickness of {i.name} at {region.name}"]
             regions.append(deltas)
         return regions
+
+    def region_share(self) -> tuple[Array, ...] | None:
+        """The share (D,) of the beam's current that reaches each region; None: the whole everywhere."""
+        job = self.inputs.job
+        sd = job.mill.uniformity_sd
+        if not sd and all(share == 1.0 for share in job.beam_share):
+            return None
+        return tuple(
+            share * np.exp(sd * self.rows[f"current density at {region.name}"]) if sd else np.full(self.draws, share)
+            for share, region in zip(job.beam_share, job.column_map.regions, strict=True)
+        )
 
     def rate_nm_per_s(self, step: int) -> Array:
         """Milling rates (M, D) of the column map's materials in a step of the recipe."""
@@ -97,6 +113,10 @@ class Sample:
 
 def _names(job: Job, model: RateModel) -> Iterator[str]:
     yield from model.belief.names
+    if job.mill.uniformity_sd:
+        yield from (f"current density at {region.name}" for region in job.column_map.regions)
+    if job.column_map.scale_sd:
+        yield "measured scale"
     for i in job.column_map.inputs:
         if i.thickness.sd:
             yield f"thickness of {i.name}"

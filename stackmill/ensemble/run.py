@@ -69,7 +69,9 @@ def run(job: Job, *, draws: int = DRAWS, seed: int = SEED, jobs: int = 1) -> Ens
     inputs = Inputs.of(job)
     best = inputs.best()
     best_ground = ground(job, best.thickness_deltas_nm())
-    steps = fall_steps(job, best_ground, best.rate_nm_per_s, durations_s={}, late_s={})
+    steps = fall_steps(
+        job, best_ground, best.rate_nm_per_s, durations_s={}, late_s={}, region_share=best.region_share()
+    )
     best_fall = fall(best_ground.columns, steps, keep_left=True)
     durations = _planned(job, best_fall)
     z = latin_hypercube(inputs.names, draws, seed)
@@ -93,7 +95,14 @@ def run(job: Job, *, draws: int = DRAWS, seed: int = SEED, jobs: int = 1) -> Ens
 def _chunk_outcome(sample: Sample, durations_s: Mapping[int, float]) -> Outcome:
     job = sample.inputs.job
     where = ground(job, sample.thickness_deltas_nm())
-    steps = fall_steps(job, where, sample.rate_nm_per_s, durations_s=durations_s, late_s=sample.late_s())
+    steps = fall_steps(
+        job,
+        where,
+        sample.rate_nm_per_s,
+        durations_s=durations_s,
+        late_s=sample.late_s(),
+        region_share=sample.region_share(),
+    )
     return _outcome(job, where, fall(where.columns, steps))
 
 

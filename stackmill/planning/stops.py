@@ -78,6 +78,7 @@ def _flat_until(ensemble: Ensemble) -> list[Array]:
     """For each region, the clock (C,) at which each column stops being flat and lit."""
     job, best = ensemble.inputs.job, ensemble.best
     speeds = _slope_speeds(ensemble)
+    share = ensemble.inputs.best().region_share()
     return [
         flat_until(
             sloped=region.slope > 0,
@@ -85,7 +86,7 @@ def _flat_until(ensemble: Ensemble) -> list[Array]:
             columns=ensemble.best_ground.columns[r],
             best=best,
             region=r,
-            speeds=speeds,
+            speeds=[s and s.scaled(float(share[r][0])) for s in speeds] if share else speeds,
         )
         for r, region in enumerate(job.column_map.regions)
     ]

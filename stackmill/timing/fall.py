@@ -44,7 +44,8 @@ class Lowering:
     """A step that lowers: rate_nm_per_s (M, D). Its length is a time, or the reaching of a level.
 
     duration_s (D,) or None; until: columns and level whose `share` of area ends the step; error_s (D,): how
-    much too late the eye stops it. counts: whether it runs the clock; name: for messages.
+    much too late the eye stops it. counts: whether it runs the clock; name: for messages; region_share: for each
+    region, the share (D,) of the rates that acts there; None: the whole everywhere.
     """
 
     rate_nm_per_s: Array
@@ -52,6 +53,14 @@ class Lowering:
     until: Until | None = None
     counts: bool = True
     name: str = ""
+    region_share: tuple[Array, ...] | None = None
+
+    def slowness(self, region: int) -> Array:
+        """Seconds per nm (M, D) in a region."""
+        share = 1.0 if self.region_share is None else self.region_share[region]
+        with np.errstate(divide="ignore"):
+            slowness: Array = np.minimum(1.0 / (self.rate_nm_per_s * share), _STANDSTILL)
+        return slowness
 
 
 @frozen
@@ -175,10 +184,12 @@ def fall(regions: Sequence[Sequence[Column]], steps: Sequence[Step], *, keep_lef
     for step in steps:
         start, duration = clock, np.zeros(draws)
         if isinstance(step, Lowering):
-            slowness = _slowness(step.rate_nm_per_s)
+            slowness = [step.slowness(r) for r in range(len(columns))]
             duration = _duration(step, columns, slowness)
-            for column in _bare(columns):
-                column.lower(slowness, duration, clock, step.counts)
+            for pace, falling in zip(slowness, columns, strict=True):
+                for column in falling:
+                    if not column.covered:
+                        column.lower(pace, duration, clock, step.counts)
             if step.counts:
                 clock = clock + duration
         elif isinstance(step, Strip):
@@ -204,18 +215,12 @@ def _bare(columns: Sequence[Sequence[_Falling]]) -> list[_Falling]:
     return [column for region in columns for column in region if not column.covered]
 
 
-def _slowness(rate_nm_per_s: Array) -> Array:
-    with np.errstate(divide="ignore"):
-        slowness: Array = np.minimum(1.0 / rate_nm_per_s, _STANDSTILL)
-        return slowness
-
-
-def _duration(step: Lowering, columns: Sequence[Sequence[_Falling]], slowness: Array) -> Array:
+def _duration(step: Lowering, columns: Sequence[Sequence[_Falling]], slowness: Sequence[Array]) -> Array:
     if step.duration_s is not None:
         return step.duration_s
     assert step.until is not None
     until = step.until
-    times = np.stack([_time_to_end(columns[r][c], above, slowness) for r, c, above in until.columns])
+    times = np.stack([_time_to_end(columns[r][c], above, slowness[r]) for r, c, above in until.columns])
     reached = area_quantile(times, until.area, until.share)
     return np.maximum(reached + until.error_s, 0.0)
 

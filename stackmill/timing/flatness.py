@@ -37,6 +37,11 @@ class SlopeSpeeds:
     shadow_tan: float
     slowest_nm_per_s: Array | None = None
 
+    def scaled(self, share: float) -> SlopeSpeeds:
+        """The same under a share of the current."""
+        slowest = None if self.slowest_nm_per_s is None else share * self.slowest_nm_per_s
+        return SlopeSpeeds(self.slope, share * self.speed_nm_per_s, self.shadow_tan, slowest)
+
     @property
     def flat_nm_per_s(self) -> Array:
         """Speeds (M,) of flat ground."""

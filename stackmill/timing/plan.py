@@ -185,11 +185,13 @@ def fall_steps(
     *,
     durations_s: Mapping[int, float],
     late_s: Mapping[int, Array],
+    region_share: tuple[Array, ...] | None = None,
 ) -> list[Step]:
     """The recipe as steps to fall by, and after its end the last beam going on.
 
     durations_s: the lengths of `to` steps, once known (a `to` that is not there ends by reaching); late_s (D,):
-    how much too late each `seen` step is stopped. The extra last step, named "", lets the forecast say what
+    how much too late each `seen` step is stopped; region_share: what share (D,) of the beam's current reaches
+    each region. The extra last step, named "", lets the forecast say what
     happens to someone who stays longer than the recipe.
     """
     draws = where.columns[0][0].draws
@@ -214,7 +216,8 @@ def fall_steps(
             else:
                 until = _until(job, where, step, late_s.get(i, np.zeros(draws)))
             counts = isinstance(step, Beam) or not has_beam
-            steps.append(Lowering(rates_of(i), duration, until, counts, step.name))
+            share = region_share if isinstance(step, Beam) else None
+            steps.append(Lowering(rates_of(i), duration, until, counts, step.name, share))
     return steps + _going_on(steps, draws)
 
 
@@ -228,7 +231,8 @@ def _going_on(steps: Sequence[Step], draws: int) -> list[Step]:
     lowering = [step for step in steps if not isinstance(step, Cover)]
     if not lowering or not isinstance(lowering[-1], Lowering) or not lowering[-1].counts:
         return []
-    return [Lowering(lowering[-1].rate_nm_per_s, np.full(draws, np.inf))]
+    last = lowering[-1]
+    return [Lowering(last.rate_nm_per_s, np.full(draws, np.inf), region_share=last.region_share)]
 
 
 def _until(job: Job, where: Ground, step: Beam | Process, late_s: Array) -> Until:

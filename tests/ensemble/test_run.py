@@ -168,3 +168,25 @@ goal: {layer: film, at: 90 % ± 10 nm}
     assert best.lost_s[0] == slow
     kept = run(load_job(text + "keep: [{layer: film, at_least: 260 nm}]\n")).best_outcome
     assert kept.lost_s[0] < slow
+
+
+@pytest.mark.closed_form
+def test_a_measured_scale_stretches_every_layer_alike_but_not_the_substrate():
+    text = LINEAR.replace("stack:\n", "stack:\n  measured: {scale: ± 2 %}\n").replace(" ± 4 %", "").replace(" ± 6 %", "")
+    ensemble = run(load_job(text.replace(" ± 5 %", "")))
+    deltas = ensemble.inputs.sample(ensemble.z).thickness_deltas_nm()[0]
+    np.testing.assert_allclose(deltas[0] / 500.0, deltas[1] / 200.0)
+    assert (deltas[0] / 500.0).std() == pytest.approx(0.02, rel=0.01)
+    assert (deltas[-1] == 0.0).all()
+
+
+@pytest.mark.closed_form
+def test_a_region_off_the_beams_centre_mills_slower_by_the_profile_and_an_uneven_beam_differs_by_region():
+    regions = "  regions: [{name: here, at: {x: 0 mm, y: 0 mm}}, {name: there, at: {x: 10 mm, y: 0 mm}}]\nmill: {gas"
+    text = LINEAR.replace("mill: {gas", regions)
+    profile = run(load_job(text.replace("0.5 mA/cm2, stage", "0.5 mA/cm2, profile: {falls: 20 %, at: 10 mm}, stage")))
+    here, there = (float(profile.best_outcome.layer_s[r][0, 3, 0]) for r in (0, 1))
+    assert there == pytest.approx(here / 0.8)
+    uneven = run(load_job(text.replace("0.5 mA/cm2, stage", "0.5 mA/cm2, uniformity: ± 9 %, stage")))
+    ratio = np.log(uneven.outcome.layer_s[0][0, 1] / uneven.outcome.layer_s[1][0, 1])
+    assert ratio.std() == pytest.approx(np.sqrt(2) * 0.09 / np.sqrt(3), rel=0.03)
