@@ -22,12 +22,13 @@ _ROUNDING_NM = 1e-6
 class Overlapping:
     """Two features in one layer that share an area of the plan but not material and films.
 
-    layer: where they meet; either may be written in another layer, and go through this one.
+    layer: where they meet; passing: whether one of them goes through several layers, and may be written in another.
     """
 
     layer: str
     feature: str
     other: str
+    passing: bool = False
 
 
 @frozen
@@ -61,9 +62,10 @@ def overlaps(stack: Stack) -> tuple[Overlapping, ...]:
     met: dict[frozenset[tuple[int, int]], Overlapping] = {}
     for index, layer in enumerate(found.layers):
         for one, other in _overlaps(layer, cell):
-            pair = frozenset((found.homes[index][one], found.homes[index][other]))
-            names = layer.features[one].name, layer.features[other].name
-            met.setdefault(pair, Overlapping(layer.name, *names))
+            homes = frozenset((found.homes[index][one], found.homes[index][other]))
+            pair = layer.features[one], layer.features[other]
+            passing = any(len(feature.through) > 1 for feature in pair)
+            met.setdefault(homes, Overlapping(layer.name, pair[0].name, pair[1].name, passing))
     return tuple(met.values())
 
 

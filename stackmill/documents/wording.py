@@ -267,9 +267,11 @@ def out_of_beam(region: str) -> Sentence:
     return Sentence(what, "check the region's 'at' and the profile")
 
 
-def overlapping(first: str, second: str) -> Sentence:
-    """Two features of one layer in one place."""
+def overlapping(first: str, second: str, layer: str, *, passing: bool) -> Sentence:
+    """Two features in one place of a layer. passing: one of them goes through several layers."""
     what = f"features {quoted(first)} and {quoted(second)} overlap"
+    if passing:
+        return Sentence(f"{what} in {quoted(layer)}", "move one: a feature through several layers is there alone")
     return Sentence(what, "move one, or give both the same material and films")
 
 

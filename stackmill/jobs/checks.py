@@ -218,7 +218,8 @@ def _geometry(stack: Stack) -> Iterator[Complaint]:
     for lost in outside(stack):
         yield wording.outside_cell(lost.feature), _feature_path(stack, lost.layer, lost.feature)
     for pair in overlaps(stack):
-        yield wording.overlapping(pair.feature, pair.other), _feature_path(stack, pair.layer, pair.other)
+        says_so = wording.overlapping(pair.feature, pair.other, pair.layer, passing=pair.passing)
+        yield says_so, _feature_path(stack, pair.layer, pair.other)
     for full in liner_too_thick(stack):
         films, room = f"{plain(full.films_nm)} nm", f"{plain(full.room_nm)} nm"
         says = wording.films_across if full.across else wording.films_in_height

@@ -114,9 +114,6 @@ class Library:
 
         Raises UnknownMaterialError, with near names, where it leads to a material that is not known.
         """
-        for name in lab.references:
-            if name not in self._known:
-                raise UnknownMaterialError(name, self.near(name))
         if not lab.references and lab.composition is None and lab.name not in self._known:
             raise UnknownMaterialError(lab.name, self.near(lab.name))
         if lab.composition is not None:

@@ -75,7 +75,7 @@ def listed(materials: Sequence[Material], paper: Paper, *, markdown: bool) -> st
     headers = ["material", "kind", "g/cm3", "nm/min", "sd", "rests on"]
     note = wrapped(
         f"Milling rates: argon, {_ENERGY_EV / 1e3:g} keV, {_INCIDENCE_DEG:g}° from the normal, {_CURRENT} mA/cm²;"
-        " the sd is the yield's at 1 keV and the density's."
+        " the sd is the yield's at 1 keV and the density's; an estimate is good to a factor 1.5 at best."
         " `stackmill materials NAME` shows every value and its source.",
         paper.width,
     )
@@ -84,7 +84,10 @@ def listed(materials: Sequence[Material], paper: Paper, *, markdown: bool) -> st
 
 
 def _basis(m: Material) -> str:
-    return "estimate, factor 1.5" if m.estimate else f"{len(m.tie.rows)} rows" if m.tie and m.tie.rows else "tie"
+    if m.estimate:
+        return "estimate"
+    rows = len(m.tie.rows) if m.tie else 0
+    return f"{rows} row{'s' if rows > 1 else ''}" if rows else "relatives"
 
 
 def _rate(m: Material) -> float:
@@ -143,6 +146,7 @@ def _what_it_is(m: Material, told: _Told) -> list[str]:
     lines += [sourced("density", m.density), f"  atom density: {m.atom_density_1e22:.4g}e22 per cm3"]
     lines += [sourced("heat of formation", m.formation)] if m.formation else []
     lines += [sourced("melting point", m.melting)] if m.melting else []
+    lines += [sourced(f"alarm, {alarm.what}", alarm.temperature) for alarm in m.alarms]
     return lines
 
 

@@ -7,6 +7,7 @@ from collections.abc import Sequence
 from typing import Any
 
 from stackmill.documents.recipe import Beam, Process
+from stackmill.jobs import Job
 from stackmill.planning.stops import Reach, StopTable
 from stackmill.planning.windows import weighted_quantile
 from stackmill.report.render import Grid, Paper, csv_text, json_text, wrapped
@@ -214,6 +215,7 @@ def _notes(table: StopTable, *, every: bool) -> list[str]:
             "Strips and processes with rates take no beam-on time: what they reach is reached at their moment."
         )
     notes += _look_notes(table)
+    notes += cautions(job)
     hidden = len(shown_columns(table, every=True)) - len(shown_columns(table, every=every))
     if hidden:
         notes.append(
@@ -221,6 +223,13 @@ def _notes(table: StopTable, *, every: bool) -> list[str]:
             " last down, and the widest of each region (--all shows every one)."
         )
     return notes
+
+
+def cautions(job: Job) -> list[str]:
+    """A line for each material of the stack whose dust is toxic; local rules and trained staff decide."""
+    toxic = [m for m in job.milled_materials.values() if m.toxicity]
+    lines = [f"CAUTION, {m.name}: {m.toxicity.note.rstrip('.')}." for m in toxic if m.toxicity]
+    return [*lines, "Local rules and trained staff decide what is done about it."] if lines else []
 
 
 def _look_notes(table: StopTable) -> list[str]:

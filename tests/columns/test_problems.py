@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
+import numpy as np
 import pytest
 from dies import crowded, die
 
 from stackmill.columns import build, liner_too_thick, outside, overlaps
+from stackmill.columns.outlines import overlap, primitive
 from stackmill.columns.problems import FilmsTooThick, OutsideCell, Overlapping
 
 LEVEL = "  - name: level\n    material: SiO2\n    thickness: 100 nm\n    features:\n"
@@ -38,6 +40,49 @@ def test_features_of_one_make_may_overlap_and_touching_is_no_overlap():
     assert not overlaps(level(square("one", "W", 100, 300), dot("other", 342, 342, 118, "Cu")))
     line = "{name: rail, material: Al, line: {along: x, centre: 980 nm, width: 100 nm}}"
     assert overlaps(level(line, dot("other", 500, 60, 120)))
+
+
+def scattered(count, seed):
+    """Features of two makes in random places."""
+    at = np.random.default_rng(seed).integers(0, 1000, (count, 2))
+    made = []
+    for k, (x, y) in enumerate(at.tolist()):
+        material, size = ("W", "Cu")[k % 2], 20 + 13 * (k % 9)
+        if k % 3 == 0:
+            made.append(dot(f"f{k}", x, y, size, material))
+        elif k % 3 == 1:
+            block = f"block: {{x: [{x - size} nm, {x + 9} nm], y: [{y - 7} nm, {y + size} nm]}}"
+            made.append(f"{{name: f{k}, material: {material}, {block}}}")
+        elif k < 12:
+            line = f"line: {{along: {'xy'[k % 2]}, centre: {x} nm, width: {size} nm}}"
+            made.append(f"{{name: f{k}, material: {material}, {line}}}")
+    return level(*made)
+
+
+@pytest.mark.independent
+@pytest.mark.parametrize("seed", range(3))
+def test_overlaps_are_those_of_every_pair_tried_in_every_cell_around(seed):
+    stack = scattered(60, seed)
+    features, cell = stack.layers[0].features, (1000.0, 1000.0)
+    figures = [primitive(feature.shape, cell) for feature in features]
+    expected = set()
+    for k, one in enumerate(figures):
+        for j, other in enumerate(figures[:k]):
+            moved = [other.moved(1000.0 * a, 1000.0 * b) for a in range(-2, 3) for b in range(-2, 3)]
+            if features[j].material != features[k].material and any(overlap(one, copy) for copy in moved):
+                expected.add((features[j].name, features[k].name))
+    assert len(expected) > 20
+    assert {(found.feature, found.other) for found in overlaps(stack)} == expected
+
+
+@pytest.mark.closed_form
+def test_features_far_apart_are_told_by_their_boxes_alone(monkeypatch):
+    places = [(20 + 40 * a, 20 + 40 * b) for a in range(25) for b in range(25)]
+    stack = level(*(dot(f"f{k}", x, y, 30, ("W", "Cu")[k % 2]) for k, (x, y) in enumerate(places)))
+    tried = []
+    monkeypatch.setattr("stackmill.columns.problems.overlap", lambda *pair: tried.append(pair))
+    assert not overlaps(stack)
+    assert not tried
 
 
 @pytest.mark.closed_form

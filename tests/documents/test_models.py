@@ -198,3 +198,24 @@ def test_all_mistakes_of_a_file_come_at_once_in_order() -> None:
         (9, "along cannot be 'q'"),
         (12, "layer 'substrate' has no key 'thicknes'"),
     ]
+
+
+def test_a_bad_word_for_one_of_some_words_or_nothing() -> None:
+    """A choice that may also be left out is complained about like any other."""
+    from typing import Literal
+
+    from pydantic import Field
+
+    from stackmill.documents.healing import healed
+    from stackmill.documents.reading import Record, read_document
+
+    class Sieve(Record):
+        mesh: Literal["fine", "coarse"] | None = Field(default=None, examples=["fine"])
+
+    with pytest.raises(InputErrors) as refused:
+        read_document(Sieve, "mesh: coarze\n")
+    assert refused.value.errors[0].headline() == "<text>:1:7: error: mesh cannot be 'coarze' (did you mean coarse?)"
+    with pytest.raises(ValidationError) as invalid:
+        Sieve.model_validate({"mesh": "coarze"})
+    assert healed(invalid.value, Sieve, {"mesh": "coarze"}) == ({"mesh": "fine"}, (("mesh",),))
+    assert read_document(Sieve, "{}").model.mesh is None
