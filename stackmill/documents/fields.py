@@ -118,6 +118,7 @@ def _schema(limits: Limits, form: str) -> WithJsonSchema:
 _THICKNESS = Limits(
     "length", 0.1, 1e6, "is thinner than an atom", "is thicker than a wafer", "check its number and unit"
 )
+_TOP = Limits("length", 0.0, 1e6, "is no height", "is thicker than a wafer", "check its number and unit")
 _SIGN = "check its sign and unit"
 # One atom across; a cell repeats, so 10 mm is a die, not a cell.
 _SIZE = Limits("length", 0.1, 1e7, "is smaller than an atom", "is larger than a die", _SIGN)
@@ -195,6 +196,7 @@ _LATENESS = Limits("time", 0.0, 3.6e4, "is no time", "is not stopping by eye", "
 _RATE = Limits("rate", 0.0, 1e5 / 60.0, "would grow, not mill", "is too fast to be true", "write 0 nm/min or more")
 
 Thickness = Annotated[Measure, PlainValidator(_measure_reader(_THICKNESS)), _schema(_THICKNESS, "600 nm ± 8 %")]
+Top = Annotated[Measure, PlainValidator(_measure_reader(_TOP)), _schema(_TOP, "5.37 um ± 50 nm")]
 Depth = Annotated[float, PlainValidator(_number_reader(_THICKNESS)), _schema(_THICKNESS, "300 nm")]
 Size = Annotated[float, PlainValidator(_number_reader(_SIZE)), _schema(_SIZE, "1.6 um")]
 PlanPosition = Annotated[float, PlainValidator(_number_reader(_PLAN)), _schema(_PLAN, "2.4 um")]
@@ -222,8 +224,11 @@ read_some_share = _number_reader(_SOME_SHARE)
 _read_current = _measure_reader(_CURRENT)
 
 
+FROM_COUPON = "from coupon"
+
+
 def _current_density(value: Any) -> Measure:
-    if isinstance(value, str) and value.strip().casefold() == "from coupon":
+    if isinstance(value, str) and value.strip().casefold() == FROM_COUPON:
         raise refuse(
             "a current density 'from coupon' needs a calibration, which cannot be made yet",
             "write the current you measured, as in 0.5 mA/cm2 ± 10 %",
@@ -231,7 +236,11 @@ def _current_density(value: Any) -> Measure:
     return _read_current(value)
 
 
-CurrentDensity = Annotated[Measure, PlainValidator(_current_density), _schema(_CURRENT, "0.5 mA/cm2 ± 6 %")]
+CurrentDensity = Annotated[
+    Measure,
+    PlainValidator(_current_density),
+    WithJsonSchema({"anyOf": [_schema(_CURRENT, "0.5 mA/cm2 ± 6 %").json_schema, {"const": FROM_COUPON}]}),
+]
 
 
 def _name(value: Any) -> Any:

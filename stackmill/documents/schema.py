@@ -6,6 +6,7 @@ knows limits, names and what belongs together.
 
 from __future__ import annotations
 
+import re
 from collections.abc import Callable, Mapping
 from typing import Any, Literal
 
@@ -34,7 +35,7 @@ _MODELS: Mapping[str, type[BaseModel]] = {
 }
 
 _NUMBER = r"[+-]?([0-9]+\.?[0-9]*|\.[0-9]+)([eE][+-]?[0-9]+)?"
-_UNIT = r"[^0-9\s,±+-][^\s,±]*"
+_UNIT = r"[A-Za-zµμÅ\u212b°%][^\s,±]*"
 _PLUS_MINUS = r"(±|\+/-|\+-)"
 _SD = rf"{_PLUS_MINUS}\s*{_NUMBER}\s*{_UNIT}\s*"
 # Of the unit only that there is one: any unit of the right kind is taken, and their list has no end.
@@ -86,7 +87,7 @@ class _AsWritten(GenerateJsonSchema):
 
     def str_schema(self, schema: core_schema.StringSchema) -> JsonSchemaValue:
         """A name may look like a number."""
-        return {"type": ["string", "number"]}
+        return {**super().str_schema(schema), "type": ["string", "number"]}
 
 
 def json_schema(kind: FileKind) -> Schema:
@@ -110,11 +111,12 @@ def json_schema(kind: FileKind) -> Schema:
 def _bind_files(body: Schema, definitions: Schema) -> None:
     """A job's files are paths, or what the files would hold."""
     for kind in ("stack", "mill", "recipe", "materials"):
-        inner = json_schema(kind)  # type: ignore[arg-type]
+        inner = json_schema(kind)
         definitions.update(inner.pop("$defs", {}))
         name = _MODELS[kind].__name__
         definitions[name] = {key: value for key, value in inner.items() if key not in ("$schema", "title")}
-        either = [{"type": "string", "description": f"path of a {kind} file"}, {"$ref": f"#/$defs/{name}"}]
+        path = {"type": "string", "description": f"path of a {kind} file"}
+        either: list[Schema] = [path, {"$ref": f"#/$defs/{name}"}]
         if kind == "materials":
             either.append({"type": "array", "items": {"anyOf": list(either)}})
         body["properties"][kind] = {"anyOf": either}
@@ -155,7 +157,9 @@ def _lean(node: Any) -> Any:
     if lean.get("type") == "string" and isinstance(description, str) and _WRITTEN_AS in description:
         example = description.split(_WRITTEN_AS, 1)[1]
         form = "plus-minus" if example.startswith("±") else "uncertain" if "±" in example else "exact"
-        lean = {"examples": [example], **lean, "$ref": f"#/$defs/{form}"}
+        lean.setdefault("examples", [example])
+        if re.fullmatch(_PATTERNS[form], example):
+            lean["$ref"] = f"#/$defs/{form}"
     return lean
 
 

@@ -20,6 +20,7 @@ from stackmill.documents.fields import (
     Sidewall,
     Size,
     Thickness,
+    Top,
     one_or_more,
 )
 from stackmill.documents.reading import Record
@@ -146,7 +147,7 @@ class Layer(Record):
     name: Name = Field(examples=["metal 2"])
     material: Label = Field(examples=["SiO2 PECVD"])
     thickness: Thickness = Field(examples=["600 nm ± 8 %"])
-    top: Thickness | None = None
+    top: Top | None = None
     coverage: Literal["planarised", "conformal"] = "planarised"
     sidewall: Sidewall = 1.0
     level: Literal["region", "die"] = "region"

@@ -19,6 +19,8 @@ from stackmill.timing.plan import last_milling
 
 Array = NDArray[np.float64]
 
+_TELLING = 16  # draws that agree to the last digit in so many agree in all
+
 
 @frozen
 class Reach:
@@ -157,13 +159,18 @@ def _bounds(ensemble: Ensemble, times: Array, best: Array, confidence: float) ->
     shares = [(1 - confidence) / 2, (1 + confidence) / 2]
     best_start = ensemble.best_outcome.leg_start_s[:, 0]
     leg = np.sum(best[..., None] > best_start[1:], axis=-1)
+    # Columns that are alike down to a level meet it alike in every draw: each such level is ranked once.
+    alike: dict[tuple[int, bytes], list[tuple[int, int]]] = {}
+    for c, k in np.argwhere((times > 0.0).any(axis=-1)):
+        alike.setdefault((int(leg[c, k]), times[c, k, :_TELLING].tobytes()), []).append((int(c), int(k)))
     early, late = np.zeros_like(best), np.zeros_like(best)
-    for k, start in enumerate(best_start):
-        here = (leg == k) & (best > 0.0)
-        shifted = times[here] + (start - ensemble.outcome.leg_start_s[k]) if k else times[here]
-        early[here], late[here] = quantiles(shifted, ensemble.weights, shares)
-    at_once = (best <= 0.0) & (times > 0.0).any(axis=-1)
-    early[at_once], late[at_once] = quantiles(times[at_once], ensemble.weights, shares)
+    for (begun, _), levels in alike.items():
+        since = times[levels[0]]
+        if begun:
+            since = since + (best_start[begun] - ensemble.outcome.leg_start_s[begun])
+        bounds = quantiles(since, ensemble.weights, shares)
+        for level in levels:
+            early[level], late[level] = bounds
     return leg, early, late
 
 

@@ -6,7 +6,7 @@ import math
 from pathlib import Path
 
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from stackmill.documents import read_mill
@@ -54,6 +54,7 @@ def test_a_map_is_met_at_its_points_and_straight_between():
 
 
 @pytest.mark.independent
+@settings(deadline=None)
 @given(st.floats(-1, 3), st.floats(0, 2))
 def test_a_map_agrees_with_scipy(x, y):
     from scipy.interpolate import RegularGridInterpolator
