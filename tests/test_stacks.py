@@ -11,7 +11,8 @@ from stackmill.jobs import load_job
 from stackmill.planning.stops import stop_table
 
 ROOT = Path(__file__).parents[1]
-JOBS = sorted(path for path in (ROOT / "stacks").rglob("*.yaml") if "\nrecipe:" in path.read_text(encoding="utf-8"))
+FOUND = sorted(path for path in (ROOT / "stacks").rglob("*.yaml") if "\nrecipe:" in path.read_text(encoding="utf-8"))
+JOBS = [path for path in FOUND if path.name != "from-coupon.yaml"]
 
 
 @pytest.mark.parametrize("job", JOBS, ids=lambda path: str(path.relative_to(ROOT)))
@@ -56,3 +57,41 @@ def test_covered_pads_keep_their_metal_and_the_look_makes_the_window():
     assert all(row.time_s is None for row in pads)
     assert table.window.leg == 1
     assert table.window.best_chance > 0.9
+
+
+@pytest.mark.regression
+def test_copper_lands_inside_the_via_only_by_its_looks():
+    table = stop_table(load_job(ROOT / "stacks/copper/job.yaml"))
+    assert table.window.leg == 3
+    assert table.window.best_chance > 0.85
+    assert table.window.lost_s - table.window.exposed_s < 120  # a stop of seconds, not minutes
+    first = {row.region: row.time_s for row in table.rows if row.layer == "pad oxide" and row.column_number == 0}
+    # the beam falls by 3 % at 10 mm, as the square: 0.03 x (1 + 4) mm2 / 100 mm2 in the field at (-1, 2) mm
+    assert first["filled field"] / first["array"] == pytest.approx(1 / (1 - 0.03 * 5 / 100), rel=1e-9)
+
+
+def test_arsenic_is_warned_of(capsys):
+    main(["stops", str(ROOT / "stacks/gaas-amplifier/job.yaml")])
+    told = capsys.readouterr().out
+    assert "CAUTION, GaAs: arsenic" in told
+    assert "trained staff" in told
+
+
+@pytest.mark.regression
+def test_the_sensors_membrane_is_kept():
+    table = stop_table(load_job(ROOT / "stacks/sensor/job.yaml"))
+    assert table.window.best_chance > 0.95
+    assert table.window.lost_keep in (-1, 0)
+
+
+@pytest.mark.regression
+def test_an_unknown_die_has_no_safe_window_but_a_first_look():
+    table = stop_table(load_job(ROOT / "stacks/unknown/job.yaml"))
+    assert table.window.exposed_s is None
+    assert 0.0 < table.window.first_look_s < table.window.best_stop_s
+    assert table.shares[0].name == "grey metal: rate" or "rate" in table.shares[0].name
+
+
+def test_a_current_from_a_coupon_is_refused_with_a_pointer(capsys):
+    assert main(["stops", str(ROOT / "stacks/unknown/from-coupon.yaml")]) == 3
+    assert "needs a calibration" in capsys.readouterr().err

@@ -124,7 +124,7 @@ def _rows(ensemble: Ensemble, flat: list[Array], confidence: float) -> list[Reac
         leg, early, late = _bounds(ensemble, ensemble.outcome.layer_s[r], best, confidence)
         highest = float(region.top_nm.max())
         for c in range(len(region.area)):
-            count = int(region.segments[c])
+            count, gone = int(region.segments[c]), _steps_gone(ensemble, r, c)
             for k, layer in enumerate(job.column_map.layers):
                 above = int(np.searchsorted(region.layer[c, :count], k))
                 height = float(region.top_nm[c] if above == 0 else region.floor_nm[c, above - 1])
@@ -139,7 +139,7 @@ def _rows(ensemble: Ensemble, flat: list[Array], confidence: float) -> list[Reac
                         time_late_s=_finite(float(late[c, k])),
                         depth_nm=highest - height,
                         height_nm=height,
-                        step=_step_of(ensemble, r, c, int(ensemble.best_ground.boundary[r][c][above])),
+                        step=_step_name(ensemble, gone, int(ensemble.best_ground.boundary[r][c][above])),
                         flat_ok=bool(time <= flat[r][c] or above == 0),
                         basis="flat",
                         present=bool((region.layer[c, :count] == k).any()),
@@ -174,15 +174,18 @@ def _bounds(ensemble: Ensemble, times: Array, best: Array, confidence: float) ->
     return leg, early, late
 
 
-def _step_of(ensemble: Ensemble, r: int, c: int, above: int) -> str | None:
-    """The step in which (at best values) everything above a boundary is gone; None at the start, or if never."""
-    if above == 0:
+def _steps_gone(ensemble: Ensemble, r: int, c: int) -> NDArray[np.intp]:
+    """For each step of the best fall, how many segments from the top are gone after it (steps,)."""
+    left = (after[r][c][:, 0] for after in ensemble.best.left_nm)
+    return np.array([int(np.argmax(thick > 0.0)) if thick.any() else len(thick) for thick in left])
+
+
+def _step_name(ensemble: Ensemble, gone: NDArray[np.intp], above: int) -> str | None:
+    """The step in which (at best values) everything above a boundary goes; None at the start, or if never."""
+    if above == 0 or gone[-1] < above:
         return None
-    best = ensemble.best
-    for span, left in zip(best.spans, best.left_nm, strict=True):
-        if not left[r][c][:above].any():
-            return span.name or ensemble.inputs.job.recipe.steps[last_milling(ensemble.inputs.job)].name
-    return None
+    job = ensemble.inputs.job
+    return ensemble.best.spans[int(np.argmax(gone >= above))].name or job.recipe.steps[last_milling(job)].name
 
 
 def _finite(value: float) -> float | None:

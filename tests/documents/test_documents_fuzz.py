@@ -81,7 +81,7 @@ def test_random_yaml(source: str) -> None:
 
 
 @given(st.data())
-@settings(max_examples=150)
+@settings(max_examples=150, deadline=None)
 def test_mutated_files(data: st.DataObject) -> None:
     """A piece of a good file is cut out, doubled, or replaced."""
     text = data.draw(st.sampled_from(sorted(READERS)))
