@@ -151,7 +151,7 @@ def _lean(node: Any) -> Any:
     if choices:
         lean["anyOf"] = _lean(choices)
     if "yes" in lean.get("enum", ()):
-        # Editors that read YAML as it was before 2009 take these words for truth values.
+        # Editors that read YAML 1.1 take these words for truth values.
         lean["enum"] = [*dict.fromkeys(map(str, lean["enum"])), True, False]
     description = lean.get("description")
     if lean.get("type") == "string" and isinstance(description, str) and _WRITTEN_AS in description:

@@ -27,7 +27,7 @@ class Inputs:
     @classmethod
     def of(cls, job: Job) -> Inputs:
         """All inputs of a job that can differ from their best values."""
-        model = rate_model(job.mill, job.recipe.steps, job.milled_materials)
+        model = rate_model(job.mill, job.recipe.steps, job.rated_materials)
         return cls(job, model, tuple(_names(job, model)), model.belief.root())
 
     def sample(self, z: Array) -> Sample:
@@ -88,7 +88,7 @@ class Sample:
         )
 
     def rate_nm_per_s(self, step: int) -> Array:
-        """Milling rates (M, D) of the column map's materials in a step of the recipe."""
+        """Milling rates (M or more, D) in a step of the recipe, the column map's materials first."""
         job = self.inputs.job
         what = job.recipe.steps[step]
         if isinstance(what, Process):

@@ -72,6 +72,13 @@ class Job:
         """The materials of the columns, in the column map's order."""
         return {name: self.materials[name] for name in self.column_map.materials}
 
+    @cached_property
+    def rated_materials(self) -> Mapping[str, Material]:
+        """The milled materials, then those that a milled one is known as a multiple of."""
+        told = (m.relative.material for m in self.milled_materials.values() if m.relative)
+        more = {name: self.library.get(name) for name in told if name not in self.milled_materials}
+        return {**self.milled_materials, **more}
+
     def feature_index(self, layer: str, feature: str) -> int:
         """The number in the column map's table of a feature that is in a layer. Raises KeyError without one."""
         return self._feature_numbers[layer, feature]

@@ -34,7 +34,7 @@ class RateRow:
 
 def rate_rows(job: Job) -> list[RateRow]:
     """A row for each step that lowers and each material of the job."""
-    model = rate_model(job.mill, job.recipe.steps, job.milled_materials)
+    model = rate_model(job.mill, job.recipe.steps, job.rated_materials)
     rows: list[RateRow] = []
     for i, step in enumerate(job.recipe.steps):
         if isinstance(step, Beam):

@@ -106,7 +106,7 @@ def _slope_speeds(ensemble: Ensemble) -> list[SlopeSpeeds | None]:
             continue
         if setting(step) not in known:
             shapes = {n: angular_shape(job.materials[n], energy_ev=step.energy, gas=job.mill.gas) for n in names}
-            flat = dict(zip(names, best.rate_nm_per_s(i)[:, 0].tolist(), strict=True))
+            flat = dict(zip(names, best.rate_nm_per_s(i)[: len(names), 0].tolist(), strict=True))
             shadow = shadow_multiple(step, job.mill.divergence)
             table = speeds_of(shapes, flat, step)
             slowest = table.min(axis=1) if table.shape[1] > 1 else None

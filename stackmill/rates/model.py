@@ -122,7 +122,11 @@ class RateModel:
 
 
 def rate_model(mill: Mill, steps: Sequence[object], materials: Mapping[str, Material]) -> RateModel:
-    """The rate model of a recipe on a mill, with every measured rate of the materials taken in."""
+    """The rate model of a recipe on a mill, with every measured rate of the materials taken in.
+
+    A material known as a multiple of another's rate learns from the other's measured rates where that one is
+    among the materials too.
+    """
     names = tuple(materials)
     known: dict[tuple[object, ...], BeamRates] = {}
     for step in steps:
@@ -178,7 +182,26 @@ def _prior(mill: Mill, materials: Mapping[str, Material], own_current: Sequence[
         sd += [_rate_sd(material, mill.gas), 1.0, material.angular_sd]
     sd += [step.current_density.rel_sd for step in own_current if step.current_density]
     names = parameter_names(tuple(materials), [step.name for step in own_current])
-    return RateBelief(names, np.zeros(len(sd)), np.diag(np.square(sd)))
+    variance = np.square(sd)
+    follows = np.eye(len(sd))
+    for film, reference in _followers(materials):
+        # What is not known of the reference is not known of the film either; only the rest is the film's own.
+        variance[film] = np.maximum(variance[film] - variance[reference], 0.0)
+        follows[film, reference] = 1.0
+    return RateBelief(names, np.zeros(len(sd)), follows @ np.diag(variance) @ follows.T)
+
+
+def _followers(materials: Mapping[str, Material]) -> list[tuple[int, int]]:
+    """The parameters of materials known as a multiple of another's rate, each with the one it follows."""
+    names = list(materials)
+    pairs = []
+    for material in materials.values():
+        if material.relative is not None and material.relative.material in materials:
+            film, reference = (
+                _SHARED + len(_PER_MATERIAL) * names.index(name) for name in (material.name, material.relative.material)
+            )
+            pairs += [(film + k, reference + k) for k in range(len(_PER_MATERIAL))]
+    return pairs
 
 
 def _rate_sd(material: Material, gas: str) -> float:

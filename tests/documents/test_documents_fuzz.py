@@ -16,8 +16,18 @@ from stackmill.documents.showing import report
 from stackmill.errors import InputErrors
 
 MILL = "gas: argon\ncurrent_density: 0.5 mA/cm2 ± 6 %\nstage: {dial: from surface, zero_error: ± 1 deg}\n"
+MILL += "profile: {falls: 3 %, at: 10 mm, centre: {x: 0 mm, y: 1 mm}}\nuniformity: ± 3 %\n"
+FORMS = """\
+measured: {scale: ± 2 %}
+cell: {x: 1 um, y: 1 um}
+layers:
+  - {name: upper, material: SiO2, top: 600 nm ± 20 nm, level: die, features: [{name: fill, material: Al, pattern_density: 20 %}]}
+  - {name: lower, material: SiO2, top: 250 nm, features: [{name: post, material: W, via: {x: 3 nm, y: 3 nm, diameter: 9 nm}, through: [upper, lower]}]}
+  - {name: substrate, material: Si, thickness: 300 um}
+regions: [{name: array, solid: {lower: post}}]
+"""
 JOB = "stack: a.yaml\nrecipe: b.yaml\ngoal: {layer: metal 1, feature: strap, at: 50 % ± 30 nm}\nkeep: [{layer: a, at_least: 3 nm}]\n"
-READERS = {STACK: read_stack, RECIPE: read_recipe, MILL: read_mill, JOB: read_job}
+READERS = {STACK: read_stack, FORMS: read_stack, RECIPE: read_recipe, MILL: read_mill, JOB: read_job}
 PIECES = [
     "\n",
     "  ",

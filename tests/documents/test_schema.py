@@ -86,6 +86,7 @@ MILL = "gas: argon\ncurrent_density: 0.5 mA/cm2\n"
         ("recipe", STEP.format("to: metal 1 / strap"), True),
         ("recipe", STEP.format("seen: {layer: metal 1, in: array, within: ± 20 s}"), True),
         ("recipe", STEP.format("for: 12"), False),
+        ("recipe", STEP.format("for: about 12 min"), False),
         ("recipe", STEP.format("for: 1 min, to: metal 1"), False),
         ("recipe", "steps: [{name: nothing}]", False),
         ("job", "stack: a.yaml\nrecipe: b.yaml\ngoal: metal 1\nkeep: {feature: m / f, at_least: 3 nm}", True),

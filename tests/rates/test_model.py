@@ -7,6 +7,7 @@ import pytest
 
 from stackmill.documents.mill import Mill, Stage
 from stackmill.documents.recipe import Beam, Motion
+from stackmill.jobs import load_job
 from stackmill.materials.library import Library
 from stackmill.rates.facets import shadow_multiple, slope_grid, vertical_speed_ratio
 from stackmill.rates.model import rate_model
@@ -76,6 +77,25 @@ def test_energy_outside_the_rows_widens_the_rate_by_the_librarys_own_slope():
     )
     grown = aluminium.tie.above_per_efold * np.log(5000.0 / aluminium.tie.range_ev[1])
     assert outside == pytest.approx(np.hypot(inside, grown), rel=0.01)
+
+
+@pytest.mark.closed_form
+def test_a_multiple_of_a_material_learns_from_its_measured_rate():
+    told = load_job(
+        """
+stack: {layers: [{name: film, material: dark, thickness: 100 nm}, {name: substrate, material: Si, thickness: 300 um}]}
+mill: {gas: argon, current_density: 0.5 mA/cm2, stage: {zero_error: ± 0 deg}}
+materials:
+  materials:
+    - {name: dark, rate: 0.8 x SiO2 ± 5 %}
+    - {name: SiO2, measured_rate: {rate: 40 nm/min ± 3 %, energy: 1 keV, incidence: 45 deg, current_density: 0.5 mA/cm2}}
+recipe: {steps: [{name: mill, energy: 1 keV, incidence: 45 deg, motion: rotating, for: 1 min}]}
+"""
+    )
+    model = rate_model(told.mill, told.recipe.steps, told.rated_materials)
+    assert model.materials == ("dark", "Si", "SiO2")
+    assert 60 * model.best_nm_per_s(0)[0] == pytest.approx(32.0, rel=0.01)
+    assert model.ln_rate_sd(0)[0] == pytest.approx(np.hypot(0.05, 0.03), rel=0.02)
 
 
 def dense(shape, incidences, shares, azimuths, slope):
