@@ -28,7 +28,8 @@ class Place:
     excerpt: str = ""
 
     def __str__(self) -> str:
-        return f"{self.file}:{self.line}:{self.column}" if self.line else self.file
+        file = "".join(letter if letter.isprintable() else "?" for letter in self.file)
+        return f"{file}:{self.line}:{self.column}" if self.line else file
 
 
 class StackmillError(Exception):

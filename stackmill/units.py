@@ -309,6 +309,8 @@ def _bare_cure(number: str, kind: str) -> str:
         usual = "keV"
     if kind == "fraction" and 0 < abs(value) < 1:
         number = plain(100 * value)
+    if kind == "time":
+        return f"write {number} s, or {number} min"
     return f"write {number} {usual}"
 
 

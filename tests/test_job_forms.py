@@ -73,6 +73,11 @@ def test_a_map_counts_from_the_folder_of_the_mill_and_into_the_hash(tmp_path: Pa
         assert found.beam_share == (1.0, pytest.approx(0.75 + rim / 4), 1.0)
         hashes.add(found.inputs_sha256)
     assert len(hashes) == 2
+    stack = tmp_path / "mills/stack.yaml"
+    stack.write_text(STACK, encoding="utf-8")
+    lone = load_job(stack, overrides={"mill.profile": "{map: beam.csv}"})
+    assert lone.is_default_mill
+    assert lone.beam_share == (1.0, pytest.approx(0.95), 1.0)
 
 
 @pytest.mark.closed_form

@@ -12,7 +12,14 @@ PAGE = Path(__file__).parents[1] / "docs" / "glossary.md"
 def page() -> str:
     """The page as Markdown."""
     rows = [f"| {word.name} | {word.meaning} | {word.unit} |" for word in GLOSSARY]
-    head = ["# Glossary", "", "Written from stackmill/glossary.py.", "", "| word | meaning | inside unit |", "|---|---|---|"]
+    head = [
+        "# Glossary",
+        "",
+        "Written from stackmill/glossary.py.",
+        "",
+        "| word | meaning | inside unit |",
+        "|---|---|---|",
+    ]
     return "\n".join([*head, *rows]) + "\n"
 
 

@@ -89,6 +89,10 @@ def _measure_reader(limits: Limits) -> Callable[[Any], Measure]:
             return read(Measure(float(value)))
         measure = read_measure(_text_of(value, limits.kind), limits.kind)
         limits.check(measure.value, " ".join(value.replace("+/-", "±").split("±")[0].split()).rstrip(","))
+        if measure.across_sd and limits is not _THICKNESS:
+            what = KINDS[limits.kind].name
+            cure = "give the mill a profile or a uniformity" if limits is _CURRENT else "leave 'across die' out"
+            raise UnitsError(f"only a thickness may differ across the die, not {what}", cure)
         if measure.value == 0.0 and (measure.sd or measure.across_sd):
             raise UnitsError(f"{quoted(value)} is an uncertain nothing", "give the value you expect, and its ±")
         return measure
@@ -102,7 +106,12 @@ def _error_reader(limits: Limits) -> Callable[[Any], Measure]:
             return value
         if isinstance(value, int | float) and not isinstance(value, bool):
             return Measure(0.0, float(value))
-        sd = read_plus_minus(_text_of(value, limits.kind), limits.kind)
+        try:
+            sd = read_plus_minus(_text_of(value, limits.kind), limits.kind)
+        except UnitsError as error:
+            raise UnitsError(
+                error.what, error.cure.replace("write ", "write ± ").replace("or ", "or ± ").replace("± ±", "±")
+            ) from None
         limits.check(sd, " ".join(value.split()))
         return Measure(0.0, sd)
 

@@ -28,6 +28,8 @@ KeyPath = tuple[str | int, ...]
 _Loader: Any = getattr(yaml, "CLoader", yaml.Loader)
 # Control characters, halves of characters, and the line breaks that only YAML would count as such.
 _ODD_CHARACTER = re.compile("[\x00-\x08\x0b\x0c\x0e-\x1f\x7f-\x9f\u2028\u2029\ud800-\udfff\ufeff\ufffe\uffff]")
+# What a quoted text can hold by its escapes: all control characters, and those that turn the writing's direction.
+_ODD_IN_VALUE = re.compile("[\x00-\x1f\x7f-\x9f\u2028-\u202e\u2066-\u2069\ufeff]")
 _TAB_BEFORE_COMMENT = re.compile(r"^[^#\n]*?\t", re.MULTILINE)
 
 
@@ -243,6 +245,9 @@ class _Reader:
             plain = not event.style  # None from one of PyYAML's parsers, empty from the other
             if plain and end.line > mark.line and event.value:
                 self._complain(mark, wording.SEVERAL_LINES)
+            odd = _ODD_IN_VALUE.search(event.value)
+            if odd:
+                self._complain(mark, wording.odd_character(odd[0]))
             return Scalar(line, column, event.value, not plain)
         if isinstance(event, yaml.SequenceStartEvent):
             items = Items(line, column)

@@ -24,6 +24,8 @@ def _quantity(kind: str, *, above_zero: bool = False) -> PlainValidator:
 
     def read(value: Any) -> Measure:
         measure = value if isinstance(value, Measure) else read_measure(_text(value), kind)
+        if measure.across_sd:
+            raise UnitsError("only a layer's thickness may differ across the die", "leave 'across die' out")
         if above_zero and measure.value <= 0.0:
             raise UnitsError(f"{quoted(str(value))} is not above zero", "check its sign and unit")
         return measure

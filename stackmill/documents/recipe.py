@@ -78,6 +78,8 @@ def read_motion(value: Any) -> Motion:
         first = text.split(" ")[0]
         near = nearest(first, ("rotating", "still", "rocking"))
         cure = f"did you mean {near}?" if near else "write rotating, still or rocking ± 20 deg"
+        if near == "rocking":
+            cure = "write rocking ± 20 deg"
         raise refuse(f"{quoted(text)} is no motion", cure)
     if (found["half"] is not None) != (kind == "rocking"):
         if kind == "rocking":

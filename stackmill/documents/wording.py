@@ -251,6 +251,11 @@ def not_covered(region: str) -> Sentence:
     return Sentence(f"region {quoted(region)} is not covered here", "cover it in an earlier step, or leave it out")
 
 
+def band_leaves_its_layer(band: str, layer: str, thickness: str) -> Sentence:
+    """A goal's band that reaches past its layer."""
+    return Sentence(f"the band {band} reaches past {layer}, which is {thickness} thick", "narrow it, or move it inward")
+
+
 def keeps_more_than_there_is(what: str, thickness: str) -> Sentence:
     """A keep thicker than what it keeps."""
     return Sentence(f"{what} is only {thickness} thick to begin with", "ask for less")

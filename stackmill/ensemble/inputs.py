@@ -7,6 +7,7 @@ from collections.abc import Iterator, Mapping
 import numpy as np
 from numpy.typing import NDArray
 
+from stackmill.columns.columns import ThicknessInput
 from stackmill.documents.recipe import OTHER, Beam, Process
 from stackmill.frozen import frozen
 from stackmill.jobs import Job
@@ -61,7 +62,7 @@ class Sample:
         shared = np.zeros((len(column_map.inputs), self.draws))
         for k, i in enumerate(column_map.inputs):
             if i.thickness.sd:
-                shared[k] = i.thickness.sd * self.rows[f"thickness of {i.name}"]
+                shared[k] = i.thickness.sd * self.rows[_called(i)]
         if column_map.scale_sd:
             # One error of the microscope stretches everything it measured, which the substrate's depth is not.
             last = len(column_map.layers) - 1
@@ -72,7 +73,7 @@ class Sample:
             deltas = shared.copy()
             for k, i in enumerate(column_map.inputs):
                 if i.thickness.across_sd:
-                    deltas[k] += i.thickness.across_sd * self.rows[f"thickness of {i.name} at {region.name}"]
+                    deltas[k] += i.thickness.across_sd * self.rows[f"{_called(i)} at {region.name}"]
             regions.append(deltas)
         return regions
 
@@ -111,6 +112,10 @@ class Sample:
         }
 
 
+def _called(measured: ThicknessInput) -> str:
+    return f"{'height' if measured.is_height else 'thickness'} of {measured.name}"
+
+
 def _names(job: Job, model: RateModel) -> Iterator[str]:
     yield from model.belief.names
     if job.mill.uniformity_sd:
@@ -119,9 +124,9 @@ def _names(job: Job, model: RateModel) -> Iterator[str]:
         yield "measured scale"
     for i in job.column_map.inputs:
         if i.thickness.sd:
-            yield f"thickness of {i.name}"
+            yield _called(i)
         if i.thickness.across_sd:
-            yield from (f"thickness of {i.name} at {region.name}" for region in job.column_map.regions)
+            yield from (f"{_called(i)} at {region.name}" for region in job.column_map.regions)
     for step in job.recipe.steps:
         if isinstance(step, Beam | Process) and step.seen and step.seen.within.sd:
             yield f"eye in {step.name}"

@@ -128,6 +128,7 @@ def _wants(documents: JobDocuments, stack: Stack) -> Iterator[Complaint]:
     job = documents.job.model
     if job.goal is not None:
         yield from _reference(stack, job.goal, ("goal",))
+        yield from _band(stack, job.goal)
     for k, keep in enumerate(job.keep):
         yield from _reference(stack, keep, ("keep", k))
         layer = stack.layer(keep.layer)
@@ -135,6 +136,16 @@ def _wants(documents: JobDocuments, stack: Stack) -> Iterator[Complaint]:
             what = quoted(layer.name if keep.feature is None else f"{layer.name} / {keep.feature}")
             thickness = f"{plain(layer.thickness.value)} nm"
             yield wording.keeps_more_than_there_is(what, thickness), ("keep", k, "at_least")
+
+
+def _band(stack: Stack, goal: Goal) -> Iterator[Complaint]:
+    """A goal's band must lie inside its layer."""
+    layer = stack.layer(goal.layer)
+    if layer is None or goal.at.top:
+        return
+    middle, thickness = goal.at.fraction * layer.thickness.value, layer.thickness.value
+    if middle - goal.at.half_width < 0.0 or middle + goal.at.half_width > thickness:
+        yield wording.band_leaves_its_layer(str(goal.at), quoted(layer.name), f"{plain(thickness)} nm"), ("goal", "at")
 
 
 # --- steps --------------------------------------------------------------------------------------------------

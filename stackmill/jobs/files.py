@@ -96,7 +96,7 @@ class FileReader:
         job = self._checked(JobFile, self.tree)
         stack = self._bound(Stack, "stack")
         is_default_mill = not self.tree.has(("mill",))
-        mill = self._mill_or_default() if is_default_mill else self._mill()
+        mill = self._with_map(self._mill_or_default() if is_default_mill else self._bound(Mill, "mill"))
         recipe = self._bound(Recipe, "recipe")
         materials = [self._one(MaterialsFile, "materials", node) for node in self._material_nodes()]
         self._refuse_unused()
@@ -110,8 +110,7 @@ class FileReader:
         self._override(tree, "mill")
         return self._checked(Mill, tree)
 
-    def _mill(self) -> Document[Mill] | None:
-        mill = self._bound(Mill, "mill")
+    def _with_map(self, mill: Document[Mill] | None) -> Document[Mill] | None:
         if mill is None or mill.model.profile is None:
             return mill
         node = self.tree.node(("mill",))

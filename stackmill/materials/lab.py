@@ -42,8 +42,8 @@ def overlay(lab: LabMaterial, base: Material) -> Material:
 def relative(lab: LabMaterial, base: Material) -> Material:
     """A material that mills at a multiple of `base`'s rate, at every energy and angle.
 
-    It keeps the base's law, density and angular shape; a rate measured on the base is not carried over, and
-    its own sd comes on top of the base's.
+    It keeps the base's law, density and angular shape; a rate measured on the base is carried over by
+    rates/model.py, and its own sd comes on top of the base's.
     """
     told = lab.rate
     assert told is not None

@@ -16,6 +16,7 @@ from stackmill.errors import InputError, Place
 from stackmill.materials.lab import estimated, mixed, overlay, relative
 from stackmill.materials.material import Atom, Caution, Material
 from stackmill.materials.reading import material_from_entry
+from stackmill.units import quoted
 
 DATA = Path(__file__).parent / "data"
 _Model = TypeVar("_Model", bound=BaseModel)
@@ -27,7 +28,7 @@ class UnknownMaterialError(InputError):
     def __init__(self, name: str, near: Sequence[str]) -> None:
         listed = " or ".join(f"'{item}'" for item in near)
         cure = f"did you mean {listed}?" if near else "`stackmill materials` lists the names"
-        super().__init__(f"no material is called '{name}'", cure=cure, key=name)
+        super().__init__(f"no material is called {quoted(name)}", cure=cure, key=name)
         self.name = name
         self.near = tuple(near)
 

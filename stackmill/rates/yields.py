@@ -288,7 +288,7 @@ def _relative_line(material: Material) -> list[str]:
         return []
     return [
         f"relative: mills as {told}, at every energy and angle ({material.origin}); its ± comes on top of that of"
-        f" {told.material}, whose law follows; a rate measured on {told.material} is not carried over"
+        f" {told.material}, whose law follows, and whatever is measured of it"
     ]
 
 

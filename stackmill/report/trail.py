@@ -55,7 +55,7 @@ def _day(measured: LabRate) -> str:
 
 def _advice(name: str) -> str:
     """What to measure when this input is the weakest."""
-    if name.startswith("thickness of "):
+    if name.startswith(("thickness of ", "height of ")):
         return f"measure the {name} on a section, or look on the way down (a step with `seen`)"
     if name.startswith("eye in "):
         return "make the look sharper, or look again later"

@@ -20,6 +20,7 @@ Array = NDArray[np.float64]
 
 _SAME_SPEED = 1e-9  # relative: rates closer than this are one rate
 _SAME_HEIGHT_NM = 1e-6
+_MOST_AT_ONCE = 200_000  # pairs of columns times stretches of time looked at together
 
 
 @frozen
@@ -180,4 +181,8 @@ def _fall_through(
         segment = np.searchsorted(times, moments, side="right")
         there = segment < len(column.material)
         material[there, c] = np.array(column.material)[segment[there]]
-    pairs.fall(speeds, material, float(span.start_s[0]) + moments, np.diff(np.append(moments, end_s)))
+    start, lasts = float(span.start_s[0]) + moments, np.diff(np.append(moments, end_s))
+    chunk = max(1, _MOST_AT_ONCE // len(columns) ** 2)
+    for k in range(0, len(moments), chunk):
+        part = slice(k, k + chunk)
+        pairs.fall(speeds, material[part], start[part], lasts[part])

@@ -237,15 +237,16 @@ def test_an_option_that_a_format_would_ignore_is_refused(arguments, capsys):
     assert "does nothing for json" in capsys.readouterr().err
 
 
+def shell(line):
+    command = f"{sys.executable} -m stackmill {line}"
+    return subprocess.run(command, shell=True, capture_output=True, text=True, cwd=ROOT, check=False)
+
+
 def test_a_full_disk_or_no_output_at_all_is_no_fault_of_ours():
-    full = subprocess.run(
-        f"{sys.executable} -m stackmill materials W > /dev/full", shell=True, capture_output=True, text=True, cwd=ROOT, check=False
-    )
+    full = shell("materials W > /dev/full")
     assert full.returncode == 4
     assert "standard output cannot be written" in full.stderr
-    gone = subprocess.run(
-        f"{sys.executable} -m stackmill materials W >&-", shell=True, capture_output=True, text=True, cwd=ROOT, check=False
-    )
+    gone = shell("materials W >&-")
     assert gone.returncode == 4
     assert "Traceback" not in gone.stderr
 

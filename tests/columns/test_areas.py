@@ -129,7 +129,7 @@ def test_disc_half_under_a_line_against_quadrature():
 @pytest.mark.parametrize("name", ["two_metals", "crowded", "stepped", "buried"])
 def test_areas_agree_with_points_counted_on_a_raster(name):
     for region in build(getattr(dies, name)()).regions:
-        side = 1000
+        side = 700
         counted = np.bincount(region.grid(side, side).ravel(), minlength=len(region.area)) / side**2
         assert np.abs(counted - region.area).max() < 2.5 / side  # borders of about a cell's edge each
 

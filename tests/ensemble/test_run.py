@@ -172,7 +172,9 @@ goal: {layer: film, at: 90 % ± 10 nm}
 
 @pytest.mark.closed_form
 def test_a_measured_scale_stretches_every_layer_alike_but_not_the_substrate():
-    text = LINEAR.replace("stack:\n", "stack:\n  measured: {scale: ± 2 %}\n").replace(" ± 4 %", "").replace(" ± 6 %", "")
+    text = (
+        LINEAR.replace("stack:\n", "stack:\n  measured: {scale: ± 2 %}\n").replace(" ± 4 %", "").replace(" ± 6 %", "")
+    )
     ensemble = run(load_job(text.replace(" ± 5 %", "")))
     deltas = ensemble.inputs.sample(ensemble.z).thickness_deltas_nm()[0]
     np.testing.assert_allclose(deltas[0] / 500.0, deltas[1] / 200.0)

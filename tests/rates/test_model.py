@@ -88,7 +88,8 @@ mill: {gas: argon, current_density: 0.5 mA/cm2, stage: {zero_error: ± 0 deg}}
 materials:
   materials:
     - {name: dark, rate: 0.8 x SiO2 ± 5 %}
-    - {name: SiO2, measured_rate: {rate: 40 nm/min ± 3 %, energy: 1 keV, incidence: 45 deg, current_density: 0.5 mA/cm2}}
+    - name: SiO2
+      measured_rate: {rate: 40 nm/min ± 3 %, energy: 1 keV, incidence: 45 deg, current_density: 0.5 mA/cm2}
 recipe: {steps: [{name: mill, energy: 1 keV, incidence: 45 deg, motion: rotating, for: 1 min}]}
 """
     )
