@@ -8,35 +8,30 @@ Exact while the column stays flat and lit (flatness.py says how long that is).
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from stackmill.frozen import frozen
+from stackmill.timing.tree import NEVER, Column, SegmentTree
 
 Array = NDArray[np.float64]
 
-NEVER = 1e290  # times beyond this mean that the level is not reached
+__all__ = [
+    "NEVER",
+    "Column",
+    "Cover",
+    "Fall",
+    "Lowering",
+    "Step",
+    "StepSpan",
+    "Strip",
+    "Until",
+    "area_quantile",
+    "fall",
+]
+
 _STANDSTILL = 1e300  # seconds per nm where nothing mills: finite, so that 0 nm still take 0 s
-
-
-@frozen
-class Column:
-    """One column to fall through, in all draws at once.
-
-    material (K,): index of each segment's material, top down; thickness_nm (K, D), or K rows of
-    (D,); area: share of its region.
-    """
-
-    material: tuple[int, ...]
-    thickness_nm: Array | Sequence[Array]
-    area: float = 1.0
-
-    @property
-    def draws(self) -> int:
-        """How many draws fall at once."""
-        return len(self.thickness_nm[0])
 
 
 @frozen
@@ -93,54 +88,6 @@ class Cover:
 Step = Lowering | Strip | Cover
 
 
-@dataclass
-class _Falling:
-    """A column on its way down. left_nm (K, D): what is there still; passed_s (K + 1, D): when boundaries were met."""
-
-    material: tuple[int, ...]
-    left_nm: list[Array]
-    passed_s: Array
-    first: int = 0
-    covered: bool = False
-
-    def time_to(self, above: int, slowness: Array) -> Array:
-        """Seconds (D,) from now until `above` segments are gone, at this slowness (M, D)."""
-        cost = np.zeros(len(self.left_nm[0]))
-        for k in range(self.first, above):
-            cost += self.left_nm[k] * slowness[self.material[k]]
-        return cost
-
-    def lower(self, slowness: Array, duration_s: Array, clock_s: Array, counts: bool) -> None:
-        """Fall for duration_s (D,), noting when each boundary is met."""
-        spent = np.zeros_like(duration_s)
-        for k in range(self.first, len(self.material)):
-            left, pace = self.left_nm[k], slowness[self.material[k]]
-            spent = spent + left * pace
-            through = spent <= duration_s
-            first_time = through & (self.passed_s[k + 1] >= NEVER)
-            self.passed_s[k + 1][first_time] = (clock_s + spent if counts else clock_s)[first_time]
-            if through.all():
-                left[:] = 0.0
-                if k == self.first:
-                    self.first += 1
-                continue
-            np.clip((spent - duration_s) / pace, 0.0, left, out=left)
-            if not through.any():
-                break
-
-    def strip(self, materials: frozenset[int], clock_s: Array) -> None:
-        """Lose the leading segments of these materials, draw by draw."""
-        bare = np.ones(len(self.left_nm[0]), dtype=bool)
-        for k in range(self.first, len(self.material)):
-            if self.material[k] in materials:
-                self.left_nm[k][bare] = 0.0
-            bare &= self.left_nm[k] <= 0.0
-            met = bare & (self.passed_s[k + 1] >= NEVER)
-            self.passed_s[k + 1][met] = clock_s[met]
-            if not bare.any():
-                break
-
-
 @frozen
 class StepSpan:
     """When a step began and ended on the clock, and how long it took in itself, per draw (D,)."""
@@ -155,20 +102,17 @@ class StepSpan:
 class Fall:
     """A recipe run down to its end.
 
-    passed_s[r][c] (K + 1, D): the clock when each boundary of column c of region r was met, NEVER where not;
-    spans: one for each step of the recipe, in order; left_nm[step][r][c] (K, D): what was still there after
-    each step, kept only when asked for.
+    trees: one for each region; spans: one for each step of the recipe, in order; left_nm[step][r][c] (K, D): what
+    was still there after each step, kept only when asked for.
     """
 
-    passed_s: tuple[tuple[Array, ...], ...]
+    trees: tuple[SegmentTree, ...]
     spans: tuple[StepSpan, ...]
     left_nm: tuple[tuple[tuple[Array, ...], ...], ...] = ()
 
     def reach(self, region: int, column: int, above: int | NDArray[np.intp]) -> Array:
         """When the level with `above` segments (one number, or one a draw) over it is reached (D,), inf if never."""
-        passed = self.passed_s[region][column]
-        times = passed[above, np.arange(passed.shape[1])] if isinstance(above, np.ndarray) else passed[above]
-        return np.where(times >= NEVER, np.inf, times)
+        return self.trees[region].reach(column, above)
 
 
 def fall(regions: Sequence[Sequence[Column]], steps: Sequence[Step], *, keep_left: bool = False) -> Fall:
@@ -176,59 +120,41 @@ def fall(regions: Sequence[Sequence[Column]], steps: Sequence[Step], *, keep_lef
 
     A step that ends on reaching a level which is never reached runs for ever, and later steps are never begun.
     """
-    draws = regions[0][0].draws
-    columns = [[_begin(column, draws) for column in region] for region in regions]
-    clock = np.zeros(draws)
+    trees = [SegmentTree(columns) for columns in regions]
+    clock = np.zeros(trees[0].draws)
     spans: list[StepSpan] = []
     left: list[tuple[tuple[Array, ...], ...]] = []
     for step in steps:
-        start, duration = clock, np.zeros(draws)
+        start, duration = clock, np.zeros_like(clock)
         if isinstance(step, Lowering):
-            slowness = [step.slowness(r) for r in range(len(columns))]
-            duration = _duration(step, columns, slowness)
-            for pace, falling in zip(slowness, columns, strict=True):
-                for column in falling:
-                    if not column.covered:
-                        column.lower(pace, duration, clock, step.counts)
+            slowness = [step.slowness(r) for r in range(len(trees))]
+            duration = _duration(step, trees, slowness)
+            for pace, tree in zip(slowness, trees, strict=True):
+                if not tree.covered:
+                    tree.lower(pace, duration, clock, step.counts)
             if step.counts:
                 clock = clock + duration
         elif isinstance(step, Strip):
-            for column in _bare(columns):
-                column.strip(step.materials, clock)
+            for tree in trees:
+                if not tree.covered:
+                    tree.strip(step.materials, clock)
         else:
             for region in step.regions:
-                for column in columns[region]:
-                    column.covered = step.covered
+                trees[region].covered = step.covered
         spans.append(StepSpan(step.name, start, clock, duration))
         if keep_left:
-            left.append(tuple(tuple(np.stack(c.left_nm) for c in region) for region in columns))
-    return Fall(tuple(tuple(c.passed_s for c in region) for region in columns), tuple(spans), tuple(left))
+            left.append(tuple(tuple(tree.left_nm(c) for c in range(len(tree.paths))) for tree in trees))
+    return Fall(tuple(trees), tuple(spans), tuple(left))
 
 
-def _begin(column: Column, draws: int) -> _Falling:
-    passed = np.full((len(column.material) + 1, draws), 2 * NEVER)
-    passed[0] = 0.0
-    return _Falling(column.material, [row.copy() for row in column.thickness_nm], passed)
-
-
-def _bare(columns: Sequence[Sequence[_Falling]]) -> list[_Falling]:
-    return [column for region in columns for column in region if not column.covered]
-
-
-def _duration(step: Lowering, columns: Sequence[Sequence[_Falling]], slowness: Sequence[Array]) -> Array:
+def _duration(step: Lowering, trees: Sequence[SegmentTree], slowness: Sequence[Array]) -> Array:
     if step.duration_s is not None:
         return step.duration_s
     assert step.until is not None
     until = step.until
-    times = np.stack([_time_to_end(columns[r][c], above, slowness[r]) for r, c, above in until.columns])
+    times = np.stack([trees[r].time_to(c, above, slowness[r]) for r, c, above in until.columns])
     reached = area_quantile(times, until.area, until.share)
     return np.maximum(reached + until.error_s, 0.0)
-
-
-def _time_to_end(column: _Falling, above: int, slowness: Array) -> Array:
-    if column.covered:
-        return np.full(slowness.shape[1], 2 * NEVER)
-    return column.time_to(above, slowness)
 
 
 def area_quantile(times: Array, area: Array, share: float) -> Array:

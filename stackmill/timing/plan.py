@@ -78,11 +78,25 @@ def ground(job: Job, deltas_nm: Sequence[Array]) -> Ground:
 
 def _cut_columns(region: RegionColumns, deltas_nm: Array) -> list[CutColumn]:
     cut = []
+    known: dict[tuple[float, bytes], Array] = {}
     for c, count in enumerate(region.segments):
-        thickness = region.thickness_nm[c, :count, None] + region.dthickness[c, :count] @ deltas_nm
-        material = region.material[c, :count].tolist()
-        cut.append(CutColumn(material, list(_standing(thickness)), float(region.area[c])))
+        rows = [
+            _drawn(known, thick, slope, deltas_nm)
+            for thick, slope in zip(region.thickness_nm[c, :count].tolist(), region.dthickness[c, :count], strict=True)
+        ]
+        if any(float(row.min()) < 0.0 for row in rows):
+            rows = list(_standing(np.stack(rows)))
+        cut.append(CutColumn(region.material[c, :count].tolist(), rows, float(region.area[c])))
     return cut
+
+
+def _drawn(known: dict[tuple[float, bytes], Array], thickness_nm: float, slope: Array, deltas_nm: Array) -> Array:
+    """A segment's drawn thickness (D,): one row for all segments that are drawn alike."""
+    key = (thickness_nm, slope.tobytes())
+    if key not in known:
+        moved = np.flatnonzero(slope)
+        known[key] = thickness_nm + slope[moved] @ deltas_nm[moved]
+    return known[key]
 
 
 def _standing(thickness_nm: Array) -> Array:
@@ -90,8 +104,6 @@ def _standing(thickness_nm: Array) -> Array:
 
     Where a draw would have a segment thinner than nothing, what lies on it gives way, so that outer sizes hold.
     """
-    if thickness_nm.min() >= 0.0:
-        return thickness_nm
     tops = np.maximum.accumulate(np.maximum(np.cumsum(thickness_nm[::-1], axis=0), 0.0), axis=0)
     return np.diff(tops, axis=0, prepend=0.0)[::-1]
 
