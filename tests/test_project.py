@@ -3,12 +3,15 @@
 from __future__ import annotations
 
 import ast
+import json
 import re
 import subprocess
 from pathlib import Path
 
 import pytest
 from write_glossary import page
+
+from stackmill.cli.main import main
 
 ROOT = Path(__file__).parents[1]
 LABELS = {"published", "closed_form", "independent", "common_practice", "regression"}
@@ -95,3 +98,22 @@ def test_links_in_the_top_pages_lead_somewhere(name):
     text = (ROOT / name).read_text(encoding="utf-8")
     for target in re.findall(r"\]\(([^)#:]+?)(?:#[^)]*)?\)", text):
         assert (ROOT / target).exists(), target
+
+
+def keys_of(schema):
+    """Every key a schema knows, at any depth."""
+    if isinstance(schema, dict):
+        yield from schema.get("properties", {})
+        for part in schema.values():
+            yield from keys_of(part)
+    elif isinstance(schema, list):
+        for part in schema:
+            yield from keys_of(part)
+
+
+@pytest.mark.parametrize("kind", ["stack", "mill", "recipe", "job", "materials"])
+def test_the_file_reference_knows_every_key(kind, capsys):
+    assert main(["schema", kind]) == 0
+    page = (ROOT / "docs/files.md").read_text(encoding="utf-8")
+    words = set(re.findall(r"[a-z_]+", " ".join(re.findall(r"`([^`]*)`", page))))
+    assert set(keys_of(json.loads(capsys.readouterr().out))) - words == set()

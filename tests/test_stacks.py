@@ -80,8 +80,8 @@ def test_arsenic_is_warned_of(capsys):
 @pytest.mark.regression
 def test_the_sensors_membrane_is_kept():
     table = stop_table(load_job(ROOT / "stacks/sensor/job.yaml"))
-    assert table.window.best_chance > 0.95
-    assert table.window.lost_keep in (-1, 0)
+    assert table.window.best_chance > 0.9
+    assert table.window.lost_keep == 0  # the platinum itself, not the membrane, ends it
 
 
 @pytest.mark.regression

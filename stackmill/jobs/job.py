@@ -74,10 +74,17 @@ class Job:
 
     @cached_property
     def rated_materials(self) -> Mapping[str, Material]:
-        """The milled materials, then those that a milled one is known as a multiple of."""
-        told = (m.relative.material for m in self.milled_materials.values() if m.relative)
-        more = {name: self.library.get(name) for name in told if name not in self.milled_materials}
-        return {**self.milled_materials, **more}
+        """The milled materials, then those that a milled one is a multiple or a mixture of, and so on."""
+        rated = dict(self.milled_materials)
+        ask = list(rated.values())
+        while ask:
+            material = ask.pop()
+            told = [material.follows] if material.follows else [part.material.name for part in material.mixture]
+            for name in told:
+                if name not in rated:
+                    rated[name] = self.library.get(name)
+                    ask.append(rated[name])
+        return rated
 
     def feature_index(self, layer: str, feature: str) -> int:
         """The number in the column map's table of a feature that is in a layer. Raises KeyError without one."""

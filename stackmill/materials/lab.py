@@ -45,14 +45,16 @@ def relative(lab: LabMaterial, base: Material) -> Material:
     It keeps the base's law, density and angular shape; a rate measured on the base is carried over by
     rates/model.py, and its own sd comes on top of the base's.
     """
-    told = lab.rate
+    told = link = lab.rate
     assert told is not None
+    assert link is not None
     if base.relative is not None:
         told = RelativeRate(
             told.factor * base.relative.factor, base.relative.material, math.hypot(told.ln_sd, base.relative.ln_sd)
         )
     changes = {"title": f"mills as {lab.rate}", **_changes(lab), "name": lab.name, "like": base.name}
     changes |= {"aliases": lab.aliases, "relative": told, "estimate": base.estimate}
+    changes |= {"follows": base.name, "follows_ln_sd": link.ln_sd}
     if base.tie is not None:
         changes["tie"] = replace(base.tie, basis=f"{lab.rate}; {base.name}: {base.tie.basis}", rows=())
     return replace(base, **changes)

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import difflib
 import re
+import warnings
 from collections.abc import Mapping, Sequence
 from pathlib import Path
 from typing import TypeVar
@@ -12,7 +13,7 @@ from pydantic import BaseModel
 
 from stackmill.documents.material import AtomsFile, CautionsFile, LabMaterial, LibraryEntry, SourcesFile
 from stackmill.documents.reading import read_document
-from stackmill.errors import InputError, Place
+from stackmill.errors import InputError, Place, StackmillWarning
 from stackmill.materials.lab import estimated, mixed, overlay, relative
 from stackmill.materials.material import Atom, Caution, Material
 from stackmill.materials.reading import material_from_entry
@@ -124,12 +125,24 @@ class Library:
         elif lab.rate is not None:
             material = relative(lab, self.get(lab.rate.material))
         else:
-            material = overlay(lab, self.get(lab.like or lab.name))
+            base = self.get(lab.like or lab.name)
+            if lab.like and base.measured_rates and not lab.measured_rate:
+                _warn_of_unused(lab.name, base.name)
+            material = overlay(lab, base)
         name = lab.name if lab.references else self._known.get(lab.name, lab.name)
         self._read[name] = material
         self._known[name] = name
         self._known.update(dict.fromkeys(lab.aliases, name))
         return material
+
+
+def _warn_of_unused(name: str, measured: str) -> None:
+    warnings.warn(
+        f"{measured} was measured, but {quoted(name)} is only like it and keeps the library's rate"
+        f" (write rate: 1 x {measured} ± 10 % to use what was measured)",
+        StackmillWarning,
+        stacklevel=4,
+    )
 
 
 def _head(path: Path) -> tuple[str, tuple[str, ...]]:

@@ -155,7 +155,8 @@ class Material:
     composition: atoms of each element, any scale. mean_mass_u: mean atomic mass [u]. law: a name in
     laws.sputtering.LAWS; constants: by the law's names; empty means that they are to be averaged from `atoms`
     with formation_ev_per_atom, which makes the material an estimate. origin: library file or lab file.
-    relative: the material mills at this multiple of the rate that all else here describes; mixture: its rate
+    relative: the material mills at this multiple of the rate that all else here describes; follows: the material
+    it was told as a multiple of, which may be one itself, and follows_ln_sd what that alone is worth; mixture: its rate
     is made of its parts' (law, constants and tie say nothing then), with mixing_ln_sd for what mixing is worth.
     """
 
@@ -185,6 +186,8 @@ class Material:
     origin: str = "library"
     like: str = ""
     relative: RelativeRate | None = None
+    follows: str = ""
+    follows_ln_sd: float = 0.0
     mixture: tuple[Part, ...] = ()
     mixing_ln_sd: float = 0.0
 

@@ -83,6 +83,9 @@ def basis(material: Material) -> str:
     if material.measured_rates:
         where = ", ".join(f"{m.energy_ev:.4g} eV and {m.incidence_deg:.4g} deg" for m in material.measured_rates)
         return f"measured on this mill at {where}"
+    if material.mixture:
+        parts = " + ".join(f"{100 * part.share:.3g} % {part.material.name}" for part in material.mixture)
+        return f"mixture of {parts} by volume, {100 * material.mixing_ln_sd:.0f} % for mixing"
     if material.estimate:
         return "estimate, good to a factor 1.5; mill a coupon"
     return f"library: {material.tie.basis}" if material.tie else "library"

@@ -42,7 +42,8 @@ class Window:
 
     exposed_s, lost_s: ends of the window at `confidence`, None where there is none (lost_s is None too where
     nothing is ever lost, or the eye ends the leg before). stop_s: the earliest stop with the greatest chance, as
-    far as the draws can tell, None without a window; best_stop_s: that stop in any case; chance: of stop_s;
+    far as the draws can tell, None without a window; best_stop_s, best_stop_chance: that
+    stop in any case, and its chance; chance: of stop_s;
     best_chance: the greatest there is. first_look_s: the last moment at which the chance of loss is under 5 %,
     None where there is none, or it never ends; first_look_leg: the leg it lies in; lost_before: the chance of
     loss by the start of `leg`. exposed_by, lost_by: the columns (region, column) that most often decide, None
@@ -57,6 +58,7 @@ class Window:
     lost_s: float | None
     stop_s: float | None
     best_stop_s: float
+    best_stop_chance: float
     chance: float | None
     best_chance: float
     first_look_s: float | None
@@ -122,6 +124,7 @@ def find_window(ensemble: Ensemble, confidence: float) -> Window:
         lost_s=None if ends is None or ends[1] is None else clock + ends[1],
         stop_s=None if ends is None else clock + max(stop, ends[0]),
         best_stop_s=clock + stop,
+        best_stop_chance=chance,
         chance=None if ends is None else chance,
         best_chance=best[leg],
         first_look_s=look[1],

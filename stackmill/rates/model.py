@@ -20,6 +20,7 @@ from stackmill.frozen import frozen
 from stackmill.materials.calibration import RateBelief, RateEvidence, condition
 from stackmill.materials.material import LabRate, Material
 from stackmill.rates import yields
+from stackmill.units import Measure
 
 Array = NDArray[np.float64]
 
@@ -72,8 +73,8 @@ class RateModel:
     """All beam steps' curves (None for steps without a beam), with the belief about their parameters.
 
     The belief's parameters are `current density` (ln), `dial zero error` (deg), `doubly charged share` (off its
-    value), then for each material `NAME: rate`, `NAME: energy`, `NAME: angle` (ln), then `current density in STEP`
-    (ln) for each step that states a current with an error of its own. current: which parameter each step's
+    value), then for each material `NAME: rate`, `NAME: energy`, `NAME: angle` (ln), then `current density of VALUE`
+    (ln) for each current that a step states with an error of its own. current: which parameter each step's
     current is off by; charged: the mill's share of doubly charged ions.
     """
 
@@ -133,12 +134,17 @@ def rate_model(mill: Mill, steps: Sequence[object], materials: Mapping[str, Mate
         if isinstance(step, Beam) and setting(step) not in known:
             known[setting(step)] = _beam_rates(mill, step, materials)
     beams = tuple(known[setting(step)] if isinstance(step, Beam) else None for step in steps)
-    own = [step for step in steps if isinstance(step, Beam) and step.current_density and step.current_density.sd]
+    stated = (step.current_density for step in steps if isinstance(step, Beam))
+    own = list(dict.fromkeys(current for current in stated if current and current.sd))
     prior = _prior(mill, materials, own)
     after = len(prior.names) - len(own)
-    current = tuple(after + own.index(step) if step in own else 0 for step in steps)
+    own_at = {current: after + k for k, current in enumerate(own)}
+    current = tuple(
+        own_at.get(step.current_density, 0) if isinstance(step, Beam) and step.current_density else 0 for step in steps
+    )
+    at_value = {current.value: k for current, k in own_at.items()}
     evidence = tuple(
-        _evidence(mill, material, names, measured, len(prior.names))
+        _evidence(mill, material, names, measured, len(prior.names), at_value)
         for material in materials.values()
         for measured in material.measured_rates
     )
@@ -151,14 +157,14 @@ def setting(step: Beam) -> tuple[object, ...]:
 
 
 def parameter_names(materials: Sequence[str], own_current: Sequence[str] = ()) -> tuple[str, ...]:
-    """The names of the parameters, in their order; own_current: steps with a current of their own."""
+    """The names of the parameters, in their order; own_current: currents that steps state with a ±."""
     each = (f"{name}: {what}" for name in materials for what in _PER_MATERIAL)
     return (
         "current density",
         "dial zero error",
         "doubly charged share",
         *each,
-        *(f"current density in {step}" for step in own_current),
+        *(f"current density of {current}" for current in own_current),
     )
 
 
@@ -175,33 +181,55 @@ def _terms(material: Material, energy_ev: float, incidence_deg: float, gas: str)
     return 1.0, energy_term(material, energy_ev, gas), angle
 
 
-def _prior(mill: Mill, materials: Mapping[str, Material], own_current: Sequence[Beam]) -> RateBelief:
+def _prior(mill: Mill, materials: Mapping[str, Material], own_current: Sequence[Measure]) -> RateBelief:
     sd = [mill.current_density.rel_sd, mill.stage.zero_error.sd, mill.doubly_charged.sd]
     for material in materials.values():
         # The energy term carries its own size, so that its unknown has an sd of one.
         sd += [_rate_sd(material, mill.gas), 1.0, material.angular_sd]
-    sd += [step.current_density.rel_sd for step in own_current if step.current_density]
-    names = parameter_names(tuple(materials), [step.name for step in own_current])
-    variance = np.square(sd)
-    follows = np.eye(len(sd))
-    for film, reference in _followers(materials):
-        # What is not known of the reference is not known of the film either; only the rest is the film's own.
-        variance[film] = np.maximum(variance[film] - variance[reference], 0.0)
-        follows[film, reference] = 1.0
-    return RateBelief(names, np.zeros(len(sd)), follows @ np.diag(variance) @ follows.T)
+    sd += [current.rel_sd for current in own_current]
+    names = parameter_names(tuple(materials), [f"{current.value:g} mA/cm2" for current in own_current])
+    spread, own_sd = _follow(materials, np.array(sd), mill.gas)
+    return RateBelief(names, np.zeros(len(sd)), spread @ np.diag(np.square(own_sd)) @ spread.T)
 
 
-def _followers(materials: Mapping[str, Material]) -> list[tuple[int, int]]:
-    """The parameters of materials known as a multiple of another's rate, each with the one it follows."""
+def _follow(materials: Mapping[str, Material], sd: Array, gas: str) -> tuple[Array, Array]:
+    """How the parameters hang together (P, P), and what each has to itself (P,).
+
+    What is not known of a material is not known of its multiples and mixtures either: a multiple's unknowns are
+    the other's, a mixture's its parts', by the share of the milling time each takes; only what the multiple, or
+    mixing, is worth is their own.
+    """
     names = list(materials)
-    pairs = []
-    for material in materials.values():
-        if material.relative is not None and material.relative.material in materials:
-            film, reference = (
-                _SHARED + len(_PER_MATERIAL) * names.index(name) for name in (material.name, material.relative.material)
-            )
-            pairs += [(film + k, reference + k) for k in range(len(_PER_MATERIAL))]
-    return pairs
+    spread, own_sd = np.eye(len(sd)), sd.copy()
+
+    def rows(name: str) -> slice:
+        k = _SHARED + len(_PER_MATERIAL) * names.index(name)
+        return slice(k, k + len(_PER_MATERIAL))
+
+    done: set[str] = set()
+
+    def hang(name: str) -> None:
+        material = materials[name]
+        parts = [(material.follows, 1.0)] if material.follows else _parts(material, gas)
+        if name in done or not parts or any(part not in materials for part, _ in parts):
+            return
+        done.add(name)
+        for part, share in parts:
+            hang(part)
+            spread[rows(name)] += share * spread[rows(part)]
+        own_sd[rows(name)] = (material.follows_ln_sd if material.follows else material.mixing_ln_sd), 0.0, 0.0
+
+    for name in names:
+        hang(name)
+    return spread, own_sd
+
+
+def _parts(material: Material, gas: str) -> list[tuple[str, float]]:
+    """The parts of a mixture, with the share of the milling time each takes."""
+    if not material.mixture:
+        return []
+    times = yields.milling_time_shares(material, energy_ev=_ANY_EV, gas=gas)
+    return [(part.material.name, float(time)) for part, time in zip(material.mixture, times, strict=True)]
 
 
 def _rate_sd(material: Material, gas: str) -> float:
@@ -253,7 +281,14 @@ def _law_rate(
     )
 
 
-def _evidence(mill: Mill, material: Material, names: Sequence[str], measured: LabRate, parameters: int) -> RateEvidence:
+def _evidence(
+    mill: Mill,
+    material: Material,
+    names: Sequence[str],
+    measured: LabRate,
+    parameters: int,
+    currents: Mapping[float, int],
+) -> RateEvidence:
     """A lab's own rate, as one row: it fixes b + c at its stated current.
 
     The current's error (and the dial's) counts again on another day, so only a rate of the same day may tell
@@ -271,7 +306,8 @@ def _evidence(mill: Mill, material: Material, names: Sequence[str], measured: La
     k = _SHARED + len(_PER_MATERIAL) * names.index(material.name)
     design[k : k + len(_PER_MATERIAL)] = _terms(material, measured.energy_ev, measured.incidence_deg, mill.gas)
     if measured.same_day:
-        design[:_SHARED] = 1.0, ln_rate[2] - ln_rate[1], (0.5 * double[0] - single[0]) / rates[0]
+        design[1:_SHARED] = ln_rate[2] - ln_rate[1], (0.5 * double[0] - single[0]) / rates[0]
+        design[currents.get(current, 0)] = 1.0  # it tells of the very current it was milled with
     rate = measured.rate
     what = f"{material.name}: measured {rate.value * 60:.3g} nm/min ± {100 * rate.rel_sd:.2g} %"
     noise = rate.rel_sd if measured.same_day else float(np.hypot(rate.rel_sd, measured.current_density.rel_sd))

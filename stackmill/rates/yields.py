@@ -202,6 +202,11 @@ def _removal(material: Material, nodes: _Nodes, flux: _Flux) -> Array:
     return np.asarray(total / material.atom_density_1e22)
 
 
+def milling_time_shares(material: Material, *, energy_ev: float, gas: str = REFERENCE_GAS) -> Array:
+    """The share of the milling time that goes into each part of a mixture (n,), straight down."""
+    return _time_shares(material, np.asarray(energy_ev, dtype=np.float64), gas)
+
+
 def _multiple(material: Material) -> float:
     return material.relative.factor if material.relative else 1.0
 

@@ -67,6 +67,7 @@ def machine_windows(table: StopTable) -> list[dict[str, Any]]:
             "left_standing_share": window.left_standing,
             "provisional": table.provisional,
             "best_stop_s": window.best_stop_s,
+            "best_stop_chance": window.best_stop_chance,
             "exposed_by": column_name(table, *window.exposed_by) if window.exposed_by else None,
             "lost_before_leg": window.lost_before,
             "counted_from_s": window.leg_start_s,

@@ -59,8 +59,16 @@ def _advice(name: str) -> str:
         return f"measure the {name} on a section, or look on the way down (a step with `seen`)"
     if name.startswith("eye in "):
         return "make the look sharper, or look again later"
-    if name == "current density":
-        return "measure the current, or mill a coupon the same day"
-    if name == "dial zero error":
-        return "check the stage's zero"
-    return f"mill a coupon of {name.split(':', maxsplit=1)[0]} at this setting"
+    if name.startswith("current density at "):
+        return "map the beam, and give the mill a profile"
+    if name.startswith("current density"):
+        return "measure the current, or mill a coupon with it the same day"
+    if ": rate of " in name:
+        step, _, material = name.partition(": rate of ")
+        return f"etch a test piece of {material} in {step!r}"
+    known = {
+        "dial zero error": "check the stage's zero",
+        "doubly charged share": "measure the share of doubly charged ions, or mill a coupon the same day",
+        "measured scale": "calibrate the microscope's scale",
+    }
+    return known.get(name) or f"mill a coupon of {name.split(':', maxsplit=1)[0]} at this setting"

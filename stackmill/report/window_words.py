@@ -30,7 +30,7 @@ def _no_window(table: StopTable, window: Window) -> list[str]:
     if window.best_chance > 0.0:
         stop = _at(table, window, window.best_stop_s)
         verdict = f"NO SAFE WINDOW at {percent(window.confidence)}: the best stop, {stop}, has a chance of"
-        verdict += f" {chance_text(window.best_chance)}."
+        verdict += f" {chance_text(window.best_stop_chance)}."
     return [
         verdict,
         f"  In conflict: {column_name(table, *window.exposed_by)} is exposed last,"
@@ -76,8 +76,13 @@ def _look(table: StopTable, window: Window) -> list[str]:
     """When to look: in this leg if that is in time, before it if not."""
     lines = []
     if window.lost_before >= FIRST_LOOK_RISK:
-        before = f"before {leg_name(table, window.leg)!r} is stopped" if window.leg else "from the start"
-        lines.append(f"  LOST ALREADY {before} with a chance of {chance_text(window.lost_before)}: look earlier.")
+        chance = chance_text(window.lost_before)
+        if window.leg:
+            lines.append(
+                f"  LOST BEFORE {leg_name(table, window.leg)!r} is stopped with a chance of {chance}: look earlier."
+            )
+        else:
+            lines.append(f"  LOST FROM THE START with a chance of {chance}: what is to be kept is thinner than that.")
     if window.first_look_s is None:
         return lines
     moment = _at(table, window, window.first_look_s, window.first_look_leg)

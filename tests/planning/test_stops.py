@@ -11,7 +11,9 @@ from scipy.optimize import brentq
 from stackmill.errors import InputError
 from stackmill.jobs import load_job
 from stackmill.planning.stops import stop_table
+from stackmill.planning.windows import chance_curve, success_spans
 from stackmill.rates.yields import angular_shape
+from stackmill.report.trail import _advice
 from stackmill.report.window_words import window_in_words
 from stackmill.timing.plan import _standing
 
@@ -232,3 +234,31 @@ def test_depth_and_height_of_a_row():
     row = next(r for r in table.rows if r.region == "array" and r.layer == "under")
     assert row.height_nm == pytest.approx(300.0)
     assert row.depth_nm == pytest.approx(700.0)
+
+
+@pytest.mark.parametrize(
+    ("name", "advice"),
+    [
+        ("thickness of metal 1", "measure the thickness of metal 1"),
+        ("height of metal 1 top", "measure the height of metal 1 top"),
+        ("eye in touch", "make the look sharper"),
+        ("current density", "measure the current"),
+        ("current density of 0.5 mA/cm2", "measure the current"),
+        ("current density at array", "map the beam"),
+        ("dial zero error", "check the stage's zero"),
+        ("doubly charged share", "measure the share"),
+        ("measured scale", "calibrate the microscope"),
+        ("wet: rate of SiO2", "etch a test piece of SiO2 in 'wet'"),
+        ("SiO2: rate", "mill a coupon of SiO2"),
+    ],
+)
+def test_what_would_narrow_it_is_said_for_every_kind_of_input(name, advice):
+    assert _advice(name).startswith(advice)
+
+
+@pytest.mark.regression
+def test_the_chance_told_is_that_of_the_stop_told():
+    table = stop_table(load_job("stacks/four-metal/library.yaml"))
+    curve = chance_curve(*success_spans(table.ensemble.outcome, table.window.leg), table.ensemble.weights)
+    assert table.window.best_stop_chance == pytest.approx(curve.at(table.window.best_stop_s - table.window.leg_start_s))
+    assert f"has a chance of {table.window.best_stop_chance:.2f}" in "\n".join(window_in_words(table, table.window))

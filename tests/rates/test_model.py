@@ -99,6 +99,47 @@ recipe: {steps: [{name: mill, energy: 1 keV, incidence: 45 deg, motion: rotating
     assert model.ln_rate_sd(0)[0] == pytest.approx(np.hypot(0.05, 0.03), rel=0.02)
 
 
+COUPON = "measured_rate: {rate: 41 nm/min ± 4 %, energy: 1 keV, incidence: 45 deg, current_density: 0.5 mA/cm2}"
+
+
+def forecast_rate(films, mill="{gas: argon, current_density: 0.5 mA/cm2, stage: {zero_error: ± 0 deg}}", step=""):
+    """Best rate [nm/min] and its sd of the material `top` of a one-film job."""
+    told = load_job(
+        "stack: {layers: [{name: film, material: top, thickness: 100 nm}, "
+        f"{{name: substrate, material: Si, thickness: 300 um}}]}}\nmill: {mill}\nmaterials:\n  materials:\n"
+        + "".join(f"    - {{{film}}}\n" for film in films)
+        + f"recipe: {{steps: [{{energy: 1 keV, incidence: 45 deg, motion: rotating, for: 1 min{step}}}]}}\n"
+    )
+    model = rate_model(told.mill, told.recipe.steps, told.rated_materials)
+    return 60 * float(model.best_nm_per_s(0)[0]), float(model.ln_rate_sd(0)[0])
+
+
+@pytest.mark.closed_form
+def test_a_multiple_of_a_multiple_learns_from_the_one_it_names():
+    films = ["name: middle, rate: 0.8 x SiO2 ± 30 %, " + COUPON, "name: top, rate: 0.5 x middle ± 10 %"]
+    rate, sd = forecast_rate(films)
+    assert rate == pytest.approx(20.5, rel=0.02)
+    assert sd == pytest.approx(np.hypot(0.04, 0.1), rel=0.02)
+
+
+@pytest.mark.closed_form
+def test_a_mixture_learns_from_its_measured_parts():
+    films = [f"name: SiO2, {COUPON}", f"name: SiN PECVD, {COUPON}", "name: top, mixture: {SiO2: 50 %, SiN PECVD: 50 %}"]
+    rate, sd = forecast_rate(films)
+    assert rate == pytest.approx(41.0, rel=0.06)  # to first order about the library's rates
+    assert sd == pytest.approx(np.sqrt(0.2**2 + 0.04**2 / 2), rel=0.05)
+
+
+@pytest.mark.closed_form
+def test_a_rate_of_the_day_tells_of_the_current_it_was_milled_with():
+    films = [f"name: top, like: SiO2, {COUPON[:-1]}, same_day: yes}}"]
+    mill = "{gas: argon, current_density: 0.5 mA/cm2 ± 10 %, stage: {zero_error: ± 0 deg}}"
+    assert forecast_rate(films, mill)[1] == pytest.approx(0.04, rel=0.01)
+    assert forecast_rate(films, mill, ", current_density: 0.5 mA/cm2 ± 10 %")[1] == pytest.approx(0.04, rel=0.01)
+    other = forecast_rate(films, mill, ", current_density: 0.7 mA/cm2 ± 10 %")[1]
+    assert other == pytest.approx(np.sqrt(0.04**2 + 2 * 0.1**2), rel=0.03)
+
+
 def dense(shape, incidences, shares, azimuths, slope):
     """Vertical speed of one slope over flat ground's, by plain sums."""
     b = np.arctan(slope)
