@@ -15,8 +15,10 @@ from stackmill.frozen import frozen
 from stackmill.jobs import Job
 from stackmill.timing.fall import NEVER, Fall, area_quantile, fall
 from stackmill.timing.plan import ANY_SHARE, LOST_SHARE, Ground, Spot, fall_steps, ground
+from stackmill.timing.tree import SegmentTree
 
 Array = NDArray[np.float64]
+Index = NDArray[np.intp]
 
 DRAWS = 4096
 SEED = 2026
@@ -27,14 +29,15 @@ CHUNK = 2048  # draws that fall together: few enough for a processor's cache, an
 class Outcome:
     """What the draws reach, and when, on the clock (s); inf where never.
 
-    layer_s[r] (C, layers, D): the layers' tops; exposed_s, lost_s (D,): the goal's two moments; upper_s (W, D)
-    and upper_area (W,): the goal's upper level in each wanted column, named (region, column) in `wanted`;
-    lost_by (D,): which of `lost_at` (keep number or -1 for the goal, region, column) is spoilt first;
-    leg_start_s (legs, D): the start, then the end of each step that is stopped by eye; end_s (D,): the
-    recipe's planned end.
+    level_s[r] (N, D): the moments of a region's distinct levels; level[r] (C, layers): which of them each layer's top
+    is in each column. exposed_s, lost_s (D,): the goal's two moments; upper_s (W, D) and upper_area (W,): the
+    goal's upper level in each wanted column, named (region, column) in `wanted`; lost_by (D,): which of `lost_at`
+    (keep number or -1 for the goal, region, column) is spoilt first; leg_start_s (legs, D): the start, then the
+    end of each step that is stopped by eye; end_s (D,): the recipe's planned end.
     """
 
-    layer_s: tuple[Array, ...]
+    level_s: tuple[Array, ...]
+    level: tuple[Index, ...]
     exposed_s: Array
     lost_s: Array
     lost_by: NDArray[np.intp]
@@ -44,6 +47,19 @@ class Outcome:
     wanted: tuple[tuple[int, int], ...]
     leg_start_s: Array
     end_s: Array
+
+    def reached_s(self, region: int, column: int, layer: int) -> Array:
+        """When a layer's top is reached in a column (D,), on the clock; inf where never."""
+        moments: Array = self.level_s[region][self.level[region][column, layer]]
+        return moments
+
+
+@frozen
+class _Levels:
+    """The distinct levels of a region: level (C, layers), and one column and boundary that stands for each."""
+
+    level: Index
+    spots: tuple[tuple[int, int], ...]
 
 
 @frozen
@@ -74,11 +90,15 @@ def run(job: Job, *, draws: int = DRAWS, seed: int = SEED, jobs: int = 1) -> Ens
     )
     best_fall = fall(best_ground.columns, steps, keep_left=True)
     durations = _planned(job, best_fall)
+    levels = [
+        _distinct_levels(boundaries, tree)
+        for boundaries, tree in zip(best_ground.layer_above, best_fall.trees, strict=True)
+    ]
     z = latin_hypercube(inputs.names, draws, seed)
     chunks = [z[:, k : k + CHUNK] for k in range(0, draws, CHUNK)]
 
     def reach(chunk: Array) -> Outcome:
-        return _chunk_outcome(inputs.sample(chunk), durations)
+        return _chunk_outcome(inputs.sample(chunk), durations, levels)
 
     if jobs > 1 and len(chunks) > 1:
         from concurrent.futures import ThreadPoolExecutor
@@ -87,12 +107,27 @@ def run(job: Job, *, draws: int = DRAWS, seed: int = SEED, jobs: int = 1) -> Ens
             parts = list(pool.map(reach, chunks))
     else:
         parts = [reach(chunk) for chunk in chunks]
-    outcome = _outcome(job, best_ground, best_fall)
+    outcome = _outcome(job, best_ground, best_fall, levels)
     weights = np.full(draws, 1.0 / draws)
     return Ensemble(inputs, best_ground, best_fall, outcome, z, _join(parts), weights, seed)
 
 
-def _chunk_outcome(sample: Sample, durations_s: Mapping[int, float]) -> Outcome:
+def _distinct_levels(boundaries: Index, tree: SegmentTree) -> _Levels:
+    """Columns that are alike down to a level meet it at the same moment in every draw: it is one level."""
+    known: dict[int, int] = {}
+    spots: list[tuple[int, int]] = []
+    level = np.zeros_like(boundaries)
+    for c, row in enumerate(boundaries.tolist()):
+        for k, above in enumerate(row):
+            number = tree.paths[c][above - 1] if above else -1
+            if number not in known:
+                known[number] = len(spots)
+                spots.append((c, above))
+            level[c, k] = known[number]
+    return _Levels(level, tuple(spots))
+
+
+def _chunk_outcome(sample: Sample, durations_s: Mapping[int, float], levels: Sequence[_Levels]) -> Outcome:
     job = sample.inputs.job
     where = ground(job, sample.thickness_deltas_nm())
     steps = fall_steps(
@@ -103,7 +138,7 @@ def _chunk_outcome(sample: Sample, durations_s: Mapping[int, float]) -> Outcome:
         late_s=sample.late_s(),
         region_share=sample.region_share(),
     )
-    return _outcome(job, where, fall(where.columns, steps))
+    return _outcome(job, where, fall(where.columns, steps), levels)
 
 
 def _planned(job: Job, best: Fall) -> dict[int, float]:
@@ -120,14 +155,13 @@ def _planned(job: Job, best: Fall) -> dict[int, float]:
     return lengths
 
 
-def _outcome(job: Job, where: Ground, run_down: Fall) -> Outcome:
+def _outcome(job: Job, where: Ground, run_down: Fall, levels: Sequence[_Levels]) -> Outcome:
     def reach(spot: Spot) -> Array:
         return run_down.reach(spot.region, spot.column, spot.above)
 
     draws = where.columns[0][0].draws
-    layer_s = tuple(
-        np.stack([[run_down.reach(r, c, int(above)) for above in row] for c, row in enumerate(boundaries)])
-        for r, boundaries in enumerate(where.layer_above)
+    level_s = tuple(
+        np.stack([run_down.reach(r, c, above) for c, above in region.spots]) for r, region in enumerate(levels)
     )
     spans = run_down.spans[: len(job.recipe.steps)]
     legs = [span.end_s for span, step in zip(spans, job.recipe.steps, strict=True) if getattr(step, "seen", None)]
@@ -140,7 +174,8 @@ def _outcome(job: Job, where: Ground, run_down: Fall) -> Outcome:
         spoilt.append((k, keep.spots, times))
     lost_s, lost_by, lost_at = _first_lost(spoilt, draws)
     return Outcome(
-        layer_s=layer_s,
+        level_s=level_s,
+        level=tuple(region.level for region in levels),
         exposed_s=exposed,
         lost_s=lost_s,
         lost_by=lost_by,
@@ -179,7 +214,8 @@ def _join(parts: Sequence[Outcome]) -> Outcome:
 
     first = parts[0]
     return Outcome(
-        layer_s=tuple(np.concatenate([part.layer_s[r] for part in parts], axis=-1) for r in range(len(first.layer_s))),
+        level_s=tuple(np.concatenate([part.level_s[r] for part in parts], axis=-1) for r in range(len(first.level_s))),
+        level=first.level,
         exposed_s=along("exposed_s"),
         lost_s=along("lost_s"),
         lost_by=along("lost_by"),

@@ -19,8 +19,6 @@ from stackmill.timing.plan import last_milling
 
 Array = NDArray[np.float64]
 
-_TELLING = 16  # draws that agree to the last digit in so many agree in all
-
 
 @frozen
 class Reach:
@@ -120,8 +118,8 @@ def _rows(ensemble: Ensemble, flat: list[Array], confidence: float) -> list[Reac
     job = ensemble.inputs.job
     rows = []
     for r, region in enumerate(job.column_map.regions):
-        best = ensemble.best_outcome.layer_s[r][..., 0]
-        leg, early, late = _bounds(ensemble, ensemble.outcome.layer_s[r], best, confidence)
+        level = ensemble.best_outcome.level[r]
+        best, leg, early, late = (values[level] for values in _bounds(ensemble, r, confidence))
         highest = float(region.top_nm.max())
         for c in range(len(region.area)):
             count, gone = int(region.segments[c]), _steps_gone(ensemble, r, c)
@@ -151,27 +149,19 @@ def _rows(ensemble: Ensemble, flat: list[Array], confidence: float) -> list[Reac
     return rows
 
 
-def _bounds(ensemble: Ensemble, times: Array, best: Array, confidence: float) -> tuple[NDArray[np.intp], Array, Array]:
-    """For levels met at best (C, layers) and in draws (C, layers, D): their leg, early and late times.
+def _bounds(ensemble: Ensemble, r: int, confidence: float) -> tuple[Array, NDArray[np.intp], Array, Array]:
+    """For the distinct levels of a region (N,): their best times, leg, early and late times.
 
     The leg is the one in which a level is met at best values; early and late are counted from its start.
     """
-    shares = [(1 - confidence) / 2, (1 + confidence) / 2]
+    best = ensemble.best_outcome.level_s[r][:, 0]
     best_start = ensemble.best_outcome.leg_start_s[:, 0]
-    leg = np.sum(best[..., None] > best_start[1:], axis=-1)
-    # Columns that are alike down to a level meet it alike in every draw: each such level is ranked once.
-    alike: dict[tuple[int, bytes], list[tuple[int, int]]] = {}
-    for c, k in np.argwhere((times > 0.0).any(axis=-1)):
-        alike.setdefault((int(leg[c, k]), times[c, k, :_TELLING].tobytes()), []).append((int(c), int(k)))
-    early, late = np.zeros_like(best), np.zeros_like(best)
-    for (begun, _), levels in alike.items():
-        since = times[levels[0]]
-        if begun:
-            since = since + (best_start[begun] - ensemble.outcome.leg_start_s[begun])
-        bounds = quantiles(since, ensemble.weights, shares)
-        for level in levels:
-            early[level], late[level] = bounds
-    return leg, early, late
+    leg = np.sum(best[:, None] > best_start[1:], axis=-1)
+    since = ensemble.outcome.level_s[r].copy()
+    for k in range(1, len(best_start)):
+        since[leg == k] += best_start[k] - ensemble.outcome.leg_start_s[k]
+    early, late = quantiles(since, ensemble.weights, [(1 - confidence) / 2, (1 + confidence) / 2])
+    return best, leg, early, late
 
 
 def _steps_gone(ensemble: Ensemble, r: int, c: int) -> NDArray[np.intp]:

@@ -46,8 +46,8 @@ def test_sd_equals_linear_propagation_where_the_time_is_nearly_linear(linear):
     top, middle, bottom = ufloat(500, 20), ufloat(200, 12), ufloat(400, 20)
     judge = 60 * ((top + bottom) / oxide + middle / tungsten)
     ensemble = run(linear, seed=5)
-    times = ensemble.outcome.layer_s[0][0, 3]
-    assert float(ensemble.best_outcome.layer_s[0][0, 3, 0]) == pytest.approx(judge.nominal_value, rel=1e-3)
+    times = ensemble.outcome.reached_s(0, 0, 3)
+    assert float(ensemble.best_outcome.reached_s(0, 0, 3)[0]) == pytest.approx(judge.nominal_value, rel=1e-3)
     assert times.std() == pytest.approx(judge.std_dev, rel=0.02)
 
 
@@ -78,8 +78,8 @@ def test_drawn_rates_have_the_sd_that_the_belief_says(linear):
 @pytest.mark.regression
 def test_the_same_answer_for_any_number_of_threads_and_another_for_another_seed(linear):
     one, two, other = run(linear, jobs=1), run(linear, jobs=3), run(linear, seed=1)
-    np.testing.assert_array_equal(one.outcome.layer_s[0], two.outcome.layer_s[0])
-    assert (one.outcome.layer_s[0] != other.outcome.layer_s[0]).any()
+    np.testing.assert_array_equal(one.outcome.level_s[0], two.outcome.level_s[0])
+    assert (one.outcome.level_s[0] != other.outcome.level_s[0]).any()
 
 
 @pytest.mark.closed_form
@@ -142,7 +142,7 @@ def test_times_after_a_look_are_early_and_late_by_what_comes_after_it():
     table = stop_table(load_job(LOOK + "goal: {layer: bottom, at: top}\n"))
     row = next(r for r in table.rows if r.layer == "bottom")
     outcome = table.ensemble.outcome
-    since = np.sort(outcome.layer_s[0][0, 2] - outcome.leg_start_s[1])
+    since = np.sort(outcome.reached_s(0, 0, 2) - outcome.leg_start_s[1])
     best_look = float(table.ensemble.best_outcome.leg_start_s[1][0])
     ranks = [int(np.ceil(share * 4096)) - 1 for share in (0.05, 0.95)]
     assert [row.time_early_s, row.time_late_s] == pytest.approx([best_look + since[k] for k in ranks])
@@ -187,8 +187,8 @@ def test_a_region_off_the_beams_centre_mills_slower_by_the_profile_and_an_uneven
     regions = "  regions: [{name: here, at: {x: 0 mm, y: 0 mm}}, {name: there, at: {x: 10 mm, y: 0 mm}}]\nmill: {gas"
     text = LINEAR.replace("mill: {gas", regions)
     profile = run(load_job(text.replace("0.5 mA/cm2, stage", "0.5 mA/cm2, profile: {falls: 20 %, at: 10 mm}, stage")))
-    here, there = (float(profile.best_outcome.layer_s[r][0, 3, 0]) for r in (0, 1))
+    here, there = (float(profile.best_outcome.reached_s(r, 0, 3)[0]) for r in (0, 1))
     assert there == pytest.approx(here / 0.8)
     uneven = run(load_job(text.replace("0.5 mA/cm2, stage", "0.5 mA/cm2, uniformity: ± 9 %, stage")))
-    ratio = np.log(uneven.outcome.layer_s[0][0, 1] / uneven.outcome.layer_s[1][0, 1])
+    ratio = np.log(uneven.outcome.reached_s(0, 0, 1) / uneven.outcome.reached_s(1, 0, 1))
     assert ratio.std() == pytest.approx(np.sqrt(2) * 0.09 / np.sqrt(3), rel=0.03)

@@ -93,7 +93,7 @@ def test_early_and_late_are_the_quantiles_of_the_draws():
     table = forecast(JOB.replace("LEVEL", "top"))
     row = next(r for r in table.rows if r.region == "field" and r.layer == "under")
     r = 1
-    times = np.sort(table.ensemble.outcome.layer_s[r][0, 2])
+    times = np.sort(table.ensemble.outcome.reached_s(r, 0, 2))
     assert row.time_early_s == times[int(np.ceil(0.2 * 4096)) - 1]
     assert row.time_late_s == times[int(np.ceil(0.8 * 4096)) - 1]
 

@@ -26,7 +26,8 @@ def outcome(exposed, lost, legs=None, upper=None, area=None):
     draws = len(exposed)
     upper = exposed[None] if upper is None else np.asarray(upper, float)
     return Outcome(
-        layer_s=(),
+        level_s=(),
+        level=(),
         exposed_s=exposed,
         lost_s=np.asarray(lost, float),
         lost_by=np.zeros(draws, int),
