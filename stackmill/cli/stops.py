@@ -84,7 +84,7 @@ def stops(
         if why:
             from stackmill.report.trail import why_stops
 
-            text += "\n\n" + paper(output, ascii_only).plain(why_stops(table))
+            text += "\n\n" + paper(output, ascii_only).plain(why_stops(table, warned))
     write(text, output, force=force)
     if table.window is not None and table.window.exposed_s is None:
         raise typer.Exit(1)

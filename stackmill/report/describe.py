@@ -10,10 +10,11 @@ from stackmill.columns.columns import RegionColumns
 from stackmill.documents.stack import NO_FILL, Feature, Layer
 from stackmill.jobs import Job
 from stackmill.report.render import Grid, Paper, wrapped
-from stackmill.report.words import length, step_in_words
+from stackmill.report.words import length, percent, step_in_words
 from stackmill.units import Measure
 
 _SECTION_ROWS = 18
+_READABLE = 40  # characters under which a sequence of materials is no longer read at a glance
 _SECTION_WIDTH = 48
 _BELOW_SUBSTRATE_TOP = 0.06  # of the height drawn
 _INKS = {"metal": "#%@&+=*$", "dielectric": ".:-,'`", "semiconductor": "~^", "organic": "o0"}
@@ -24,7 +25,7 @@ def describe(job: Job, paper: Paper) -> str:
     """The whole description, as wide as the paper."""
     parts = [
         wrapped(job.title, paper.width),
-        _layers(job),
+        _layers(job, paper.width),
         _regions(job, paper.width),
         _seams(job),
         _recipe(job, paper),
@@ -34,17 +35,19 @@ def describe(job: Job, paper: Paper) -> str:
     return paper.plain("\n\n".join(part for part in parts if part))
 
 
-def _layers(job: Job) -> str:
+def _layers(job: Job, width: int) -> str:
     rows = []
     for layer in job.stack.layers:
         fill = "nothing" if layer.material == NO_FILL else layer.material
-        rows.append([layer.name, fill, _measure(layer.thickness), _coverage(layer), ""])
-        rows += [["", f"  {feature.material}", _films(feature), "", feature.name] for feature in layer.features]
-    return Grid(["layer", "material", "thickness", "coverage", "feature"], rows).text()
+        rows.append([layer.name, fill, _measure(layer.thickness), _coverage(layer)])
+        rows += [["", f"  {feature.material}", feature.name, _films(feature)] for feature in layer.features]
+    return Grid(["layer", "material", "thickness", "coverage, films"], rows).text(width=width)
 
 
 def _coverage(layer: Layer) -> str:
-    return layer.coverage if layer.sidewall == 1.0 else f"{layer.coverage}, sidewall {100 * layer.sidewall:.3g} %"
+    if layer.coverage == "planarised":
+        return ""
+    return layer.coverage if layer.sidewall == 1.0 else f"{layer.coverage}, sidewall {percent(layer.sidewall)}"
 
 
 def _films(feature: Feature) -> str:
@@ -62,13 +65,17 @@ def _measure(thickness: Measure) -> str:
 
 
 def _regions(job: Job, width: int) -> str:
+    """Every column by its sequence; with the materials it goes through where there is room to read them."""
     rows = []
     for region in job.column_map.regions:
         for c in range(len(region.area)):
             name = region.name if c == 0 else ""
             share = f"{100 * region.area[c]:.3g} %"
             rows.append([name, region.label(c), share, length(float(region.top_nm[c])), _sequence(job, region, c)])
+    used = sum(2 + max(map(len, column)) for column in list(zip(*rows, strict=True))[:-1])
     headers = ["region", "column", "area", "height", "materials from the top"]
+    if width - used < _READABLE:
+        headers, rows = headers[:-1], [row[:-1] for row in rows]
     return Grid(headers, rows, frozenset({2, 3})).text(width=width)
 
 

@@ -75,8 +75,10 @@ class Grid:
     def _folded(self, width: int) -> list[list[str]]:
         import textwrap
 
-        columns = list(zip(self.headers, *self.rows, strict=True))[:-1]
-        used = sum(2 + max(len(line) for cell in column for line in cell.split("\n")) for column in columns)
+        used = 0
+        for column, header in zip(list(zip(*self.rows, strict=True))[:-1], self.headers, strict=False):
+            cells = max(len(line) for cell in column for line in cell.split("\n"))
+            used += 2 + max(cells, *(len(line) + 2 for line in header.split("\n")))  # tabulate pads headers by two
         room = max(width - used, len(self.headers[-1]), 16)
         return [[*row[:-1], "\n".join(textwrap.wrap(row[-1], room)) or ""] for row in self.rows]
 

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+
 from stackmill.documents.recipe import Beam
 from stackmill.jobs import Job
 from stackmill.materials.material import LabRate
@@ -27,7 +29,7 @@ def why_rates(job: Job) -> str:
     return "\n".join(lines)
 
 
-def why_stops(table: StopTable) -> str:
+def why_stops(table: StopTable, warnings: Sequence[str] = ()) -> str:
     """The trail of a stop table: the draws, the rates, and the inputs that widen the answer most."""
     job = table.ensemble.inputs.job
     mill = job.mill
@@ -42,6 +44,8 @@ def why_stops(table: StopTable) -> str:
         "",
         why_rates(job),
     ]
+    if warnings:
+        lines += ["", "Warnings", *(f"- {text}" for text in warnings)]
     if table.shares:
         lines += ["", "What widens the moment of exposure most (share of its variance, read off the draws)"]
         lines += [f"- {100 * s.share:4.0f} %  {s.name}" for s in table.shares[:_SHARES_SHOWN]]

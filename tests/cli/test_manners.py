@@ -262,3 +262,12 @@ def test_json_is_ascii_on_paper_that_knows_no_other(tmp_path):
 
 def test_a_negative_seed_is_a_usage_error(capsys):
     assert main(["stops", LOOK, "--seed", "-1"]) == 2
+
+
+@pytest.mark.parametrize("width", ["80", "120"])
+@pytest.mark.parametrize("job", [LOOK, "stacks/two-metal/job.yaml", "stacks/copper/job.yaml"])
+@pytest.mark.parametrize("verb", ["check", "rates"])
+def test_no_description_is_wider_than_the_paper(verb, width, job, capsys, monkeypatch):
+    monkeypatch.setenv("COLUMNS", width)
+    assert main([verb, job]) == 0
+    assert max(map(len, capsys.readouterr().out.splitlines())) <= int(width)
