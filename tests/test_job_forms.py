@@ -8,7 +8,7 @@ import numpy as np
 import pytest
 
 from stackmill.errors import InputErrors
-from stackmill.jobs import bare_job, load_job
+from stackmill.jobs import bare_job, load_job, taken_as_exact
 
 STACK = """\
 cell: {x: 1 um, y: 1 um}
@@ -116,3 +116,31 @@ def test_a_job_by_tops_and_a_scale():
         assert np.allclose(one.floor_nm, other.floor_nm)
     again = job(stack=tops.replace("material: Si,", "material: silicon,"))
     assert [layer.thickness.value for layer in again.stack.layers[:3]] == [100.0, 350.0, 250.0]
+
+
+def test_what_has_no_error_is_named():
+    assert taken_as_exact(job()) == (
+        "thickness of lid",
+        "thickness of upper",
+        "thickness of lower",
+        "current density of the mill",
+    )
+    sure = STACK.replace("100 nm", "100 nm ± 5 %").replace("350 nm", '"350 nm, across die ± 2 %"')
+    assert taken_as_exact(job(stack=sure, mill="gas: argon\ncurrent_density: 0.5 mA/cm2 ± 6 %\n")) == (
+        "thickness of lower",
+    )
+    assert taken_as_exact(job(stack="measured: {scale: ± 2 %}\n" + STACK)) == ("current density of the mill",)
+
+
+def test_a_step_s_own_current_and_process_rates_are_named_where_exact():
+    blocks = {"stack": STACK, "mill": MILL}
+    text = "".join(f"{key}:\n" + "".join(f"  {line}\n" for line in block.splitlines()) for key, block in blocks.items())
+    beam = "energy: 1 keV, incidence: 0 deg, motion: still, for: 1 min"
+    steps = (
+        "recipe:\n  steps:\n"
+        "    - {name: etch, rates: {SiN PECVD: 90 nm/min, W: 1 nm/min ± 10 %, other: 0 nm/min}, for: 1 min}\n"
+        f"    - {{name: weak, {beam}, current_density: 0.2 mA/cm2}}\n"
+        f"    - {{name: known, {beam}, current_density: 0.3 mA/cm2 ± 5 %}}\n"
+    )
+    named = [name for name in taken_as_exact(load_job(text + steps)) if not name.startswith("thickness")]
+    assert named == ["current density in weak", "rate of SiN PECVD in etch"]

@@ -88,7 +88,8 @@ def read_motion(value: Any) -> Motion:
     if found["at"] is not None and kind == "rotating":
         raise refuse("rotating has no azimuth", "write rotating, or still at 30 deg")
     half = read_half_angle(found["half"]) if found["half"] is not None else 0.0
-    return Motion(kind, half, read_azimuth(found["at"]) if found["at"] is not None else 0.0)  # type: ignore[arg-type]
+    azimuth = read_azimuth(found["at"]) if found["at"] is not None else 0.0
+    return Motion(kind, half, azimuth)  # type: ignore[arg-type]  # kind is one of the three: refused above
 
 
 def _reference(value: Any) -> Any:

@@ -7,7 +7,8 @@ from collections.abc import Sequence
 from typing import Any
 
 from stackmill.documents.recipe import Beam, Process
-from stackmill.jobs import Job
+from stackmill.documents.wording import listed
+from stackmill.jobs import Job, taken_as_exact
 from stackmill.planning.stops import Reach, StopTable
 from stackmill.planning.windows import weighted_quantile
 from stackmill.report.render import Grid, Paper, csv_text, json_text, wrapped
@@ -85,6 +86,7 @@ def as_json(table: StopTable, warnings: Sequence[str], paper: Paper) -> str:
         "draws": len(table.ensemble.weights),
         "warnings": list(warnings),
         "windows": machine_windows(table),
+        "taken_as_exact": list(taken_as_exact(job)),
         "variance_shares": [{"input": s.name, "share": s.share} for s in table.shares],
     }
     return json_text(machine_rows(table), envelope, paper)
@@ -214,6 +216,12 @@ def _notes(table: StopTable, *, every: bool) -> list[str]:
     if beam and any(isinstance(step, Process) for step in job.recipe.steps):
         notes.append(
             "Strips and processes with rates take no beam-on time: what they reach is reached at their moment."
+        )
+    exact = taken_as_exact(job)
+    if exact:
+        notes.append(
+            f"NO ± GIVEN for {listed([f'the {name}' for name in exact], last='and')}: taken as exact, so the times look"
+            " surer than they are and the chances may be off. Write what is known of each, such as ± 8 %."
         )
     notes += _look_notes(table)
     notes += cautions(job)

@@ -271,3 +271,12 @@ def test_no_description_is_wider_than_the_paper(verb, width, job, capsys, monkey
     monkeypatch.setenv("COLUMNS", width)
     assert main([verb, job]) == 0
     assert max(map(len, capsys.readouterr().out.splitlines())) <= int(width)
+
+
+def test_stops_says_what_it_takes_as_exact(capsys):
+    assert main(["stops", LOOK, "--set", "mill.current_density=0.5 mA/cm2"]) == 0
+    assert "NO ± GIVEN for the current density of the mill" in " ".join(capsys.readouterr().out.split())
+    assert main(["stops", LOOK, "--set", "mill.current_density=0.5 mA/cm2", "--format", "json"]) == 0
+    assert json.loads(capsys.readouterr().out)["taken_as_exact"] == ["current density of the mill"]
+    assert main(["stops", LOOK]) == 0
+    assert "NO ± GIVEN" not in capsys.readouterr().out
