@@ -115,17 +115,17 @@ def find_window(ensemble: Ensemble, confidence: float) -> Window:
     stop = best_stop(curve, np.sqrt(best[leg] * (1.0 - best[leg]) / draws))
     ends = window_ends(curve, stop, confidence, 2.0 * np.sqrt(confidence * (1.0 - confidence) / draws))
     clock = float(ensemble.best_outcome.leg_start_s[leg][0])
-    chance = curve.at(stop)
+    told = stop if ends is None else max(stop, ends[0])
     lost_by, lost_keep = _lost_by(outcome, weights)
     look = _first_look(ensemble)
     return Window(
         confidence=confidence,
         exposed_s=None if ends is None else clock + ends[0],
         lost_s=None if ends is None or ends[1] is None else clock + ends[1],
-        stop_s=None if ends is None else clock + max(stop, ends[0]),
+        stop_s=None if ends is None else clock + told,
         best_stop_s=clock + stop,
-        best_stop_chance=chance,
-        chance=None if ends is None else chance,
+        best_stop_chance=curve.at(stop),
+        chance=None if ends is None else curve.at(told),
         best_chance=best[leg],
         first_look_s=look[1],
         first_look_leg=look[0],

@@ -262,3 +262,26 @@ def test_the_chance_told_is_that_of_the_stop_told():
     curve = chance_curve(*success_spans(table.ensemble.outcome, table.window.leg), table.ensemble.weights)
     assert table.window.best_stop_chance == pytest.approx(curve.at(table.window.best_stop_s - table.window.leg_start_s))
     assert f"has a chance of {table.window.best_stop_chance:.2f}" in "\n".join(window_in_words(table, table.window))
+
+
+@pytest.mark.regression
+@pytest.mark.parametrize("demo", ["copper", "sensor", "two-metal"])
+def test_the_chance_of_a_stop_in_the_window_is_read_at_that_stop(demo):
+    table = stop_table(load_job(f"stacks/{demo}/job.yaml"))
+    window, ensemble = table.window, table.ensemble
+    begin, end = success_spans(ensemble.outcome, window.leg)
+    stop = window.stop_s - window.leg_start_s + 1e-9  # the first moment of a stretch belongs to it
+    assert window.chance == pytest.approx(ensemble.weights[(begin <= stop) & (stop < end)].sum(), abs=1e-12)
+    assert window.chance < window.best_chance  # or the test could not tell the two apart
+
+
+@pytest.mark.closed_form
+def test_what_is_lost_before_the_look_counts_by_draw():
+    seen = "seen: {layer: metal, in: array, area: 100 %, within: ± 60 s}"
+    steps = f"steps: [{{name: bulk, {STEP}, {seen}}}, {{name: touch, {STEP}, for: 1 min}}]}}"
+    text = re.sub(r"steps: \[.*\]}", steps, JOB).replace("LEVEL", "top")
+    table = forecast(text.replace("layer: under, at_least: 100 nm", "layer: metal, at_least: 350 nm"))
+    outcome = table.ensemble.outcome
+    assert table.window.leg == 1
+    assert 0.05 < table.window.lost_before < 0.5
+    assert table.window.lost_before == pytest.approx(np.mean(outcome.lost_s <= outcome.leg_start_s[1]), abs=1e-12)

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from types import SimpleNamespace
+
 import numpy as np
 import pytest
 from hypothesis import given, settings
@@ -11,6 +13,7 @@ from stackmill.ensemble.run import Outcome
 from stackmill.planning.windows import (
     best_stop,
     chance_curve,
+    find_window,
     left_standing,
     quantiles,
     success_spans,
@@ -105,3 +108,14 @@ def test_quantiles_by_counting(times, share):
     want = min(t for t in times if np.sum(times <= t) >= share * len(times) * (1 - 1e-9))
     assert weighted_quantile(times, weights, share) == want
     assert quantiles(times[None], weights, [share])[0][0] == want
+
+
+@pytest.mark.regression
+def test_a_stop_moved_into_the_window_has_the_chance_of_where_it_is_told():
+    # exposed: 90 of 100 draws at 1 s, one at 2 s, the rest never. 0.90 cannot be told from 0.91 by so few draws, so
+    # the best stop is at 1 s; but only from 2 s on is the chance the one asked for.
+    found = outcome([1.0] * 90 + [2.0] + [np.inf] * 9, [9.0] * 100)
+    ensemble = SimpleNamespace(outcome=found, best_outcome=outcome([1.0], [9.0]), weights=np.full(100, 0.01))
+    window = find_window(ensemble, 0.905)
+    assert (window.best_stop_s, window.best_stop_chance) == (1.0, pytest.approx(0.90))
+    assert (window.exposed_s, window.stop_s, window.chance) == (2.0, 2.0, pytest.approx(0.91))
