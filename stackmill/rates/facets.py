@@ -8,19 +8,30 @@ cos g = cos b cos th + sin b sin th cos p. It recedes along its normal at J Y(g)
 from __future__ import annotations
 
 from collections.abc import Mapping
+from typing import Protocol
 
 import numpy as np
 from numpy.typing import NDArray
 
 from stackmill.documents.recipe import Beam
+from stackmill.frozen import frozen
 from stackmill.rates.yields import AngularShape
 
 Array = NDArray[np.float64]
 
 _AZIMUTHS = 48
+_COSINES = 32768
 _ROCKING_NODES = 9
 _SLOPES = 160
 _STEEPEST_DEG = 89.8
+
+
+class Shape(Protocol):
+    """Anything that knows Y(incidence)/Y(0)."""
+
+    def ratio(self, incidence_rad: Array) -> Array:
+        """Y(incidence)/Y(0) at incidences (rad) of any shape."""
+        ...
 
 
 def slope_grid() -> Array:
@@ -51,6 +62,31 @@ def _incidences(step: Beam) -> tuple[Array, Array]:
         return np.radians([step.incidence]), np.ones(1)
     nodes, weights = np.polynomial.legendre.leggauss(_ROCKING_NODES)
     return np.radians(step.incidence + swing * nodes), 0.5 * weights
+
+
+@frozen
+class FacetSpeed:
+    """Y(g) cos g of one material over Y(0), as a table: many slopes and azimuths are asked for it.
+
+    value (n + 1,): at n + 1 incidences g on the facet from 0 to 90 degrees, evenly.
+    """
+
+    value: Array
+
+    @classmethod
+    def of(cls, shape: Shape) -> FacetSpeed:
+        """The table of a shape of the yield."""
+        angle = np.linspace(0.0, 0.5 * np.pi, _COSINES + 1)
+        value = np.asarray(shape.ratio(angle)) * np.cos(angle)
+        value[-1] = 0.0
+        return cls(value)
+
+    def vertical(self, cosine: Array, steepening: Array) -> Array:
+        """How fast facets come down: at cos g (any shape; none below 0), 1/cos b times as much straight down."""
+        at = np.arccos(np.clip(cosine, 0.0, 1.0)) * (_COSINES / (0.5 * np.pi))
+        below = np.minimum(at.astype(np.intp), _COSINES - 1)
+        part = at - below
+        return np.asarray(((1.0 - part) * self.value[below] + part * self.value[below + 1]) * steepening)
 
 
 def _vertical(shape: AngularShape, incidence: Array, azimuth: Array, slope: Array) -> Array:

@@ -1,0 +1,1 @@
+"""Across: how the surface moves where neighbours fall at different speeds, and what is left standing."""
