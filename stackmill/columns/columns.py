@@ -106,6 +106,19 @@ class RegionColumns:
         """The column at points of the plan (any shape, broadcast together), wrapped into the cell."""
         return self.where.column(np.asarray(x_nm, dtype=np.float64), np.asarray(y_nm, dtype=np.float64))
 
+    def above_mean_nm(self, x_nm: Array, y_nm: Array, column: Index) -> Array:
+        """How much higher (N, S + 1) the tops of a point's segments lie than its column says, at points (N,).
+
+        Not 0 only on conformal slopes, whose columns stand for a class of heights. The last is the lowest floor.
+        """
+        off = np.zeros((len(x_nm), self.material.shape[1] + 1))
+        for layers, above in self.where.above_mean_nm(x_nm, y_nm):
+            for layer, rows in zip(layers, above, strict=True):
+                inside = self.layer[column] == layer
+                points = np.flatnonzero(inside.any(axis=1))
+                off[points, np.argmax(inside[points], axis=1)] = rows[points]
+        return off
+
     def grid(self, nx: int, ny: int) -> Index:
         """The column (ny, nx) at the centres of nx by ny equal rectangles that tile the cell."""
         width, height = self.where.cell

@@ -94,6 +94,19 @@ class Slopes:
         """The state at points of the cell (any shape)."""
         return _states(self.sources, self.inputs, self.bounds, x, y)
 
+    def above_mean_nm(self, x: Array, y: Array) -> Array:
+        """How much higher (layers, N) each layer's top is at points (N,) than on average over its class, in nm.
+
+        The classes stand for their slopes in all sums; a surface that moves needs the slopes themselves.
+        """
+        state = self.state(x, y)
+        above = np.zeros((len(self.layers), len(x)))
+        sloped = np.flatnonzero(state % STATES > 0)
+        for k in range(len(self.layers) if sloped.size else 0):
+            exact = _surface_shares(self, k, x[sloped], y[sloped])
+            above[k, sloped] = self.inputs.nm(exact - self.heights[state[sloped], k])
+        return above
+
     @property
     def states(self) -> int:
         """How many states there can be."""

@@ -71,6 +71,12 @@ class RegionPlan:
         """Whether some columns meet on curves that are neither straight nor round."""
         return any(axis.competing for axis in self.keys.axes)
 
+    def above_mean_nm(self, x: Array, y: Array) -> list[tuple[tuple[int, ...], Array]]:
+        """For each set of conformal layers: their numbers, and Slopes.above_mean_nm at points (N,) of the plan."""
+        x, y = x % self.cell[0], y % self.cell[1]
+        slopes = [axis for axis in self.keys.axes if isinstance(axis, Slopes)]
+        return [(axis.layers, axis.above_mean_nm(x, y)) for axis in slopes]
+
     def column(self, x: Array, y: Array) -> Index:
         """The column at points of the plan (any shapes that go together), wrapped into the cell."""
         x, y = np.broadcast_arrays(x % self.cell[0], y % self.cell[1])

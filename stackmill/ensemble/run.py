@@ -13,7 +13,7 @@ from stackmill.ensemble.draws import latin_hypercube
 from stackmill.ensemble.inputs import Inputs, Sample
 from stackmill.frozen import frozen
 from stackmill.jobs import Job
-from stackmill.timing.fall import NEVER, Fall, area_quantile, fall
+from stackmill.timing.fall import NEVER, Fall, Step, area_quantile, fall
 from stackmill.timing.plan import ANY_SHARE, LOST_SHARE, Ground, Spot, fall_steps, ground
 from stackmill.timing.tree import SegmentTree
 
@@ -63,11 +63,21 @@ class _Levels:
 
 
 @frozen
+class Descent:
+    """D draws let down by columns: their ground, the recipe as steps to fall by, and the fall."""
+
+    ground: Ground
+    steps: tuple[Step, ...]
+    fall: Fall
+
+
+@frozen
 class Ensemble:
     """The best-value fall and all draws of a job.
 
-    best: the fall at best values (D = 1) over `best_ground`; z (N, D): the standard normal draws behind
-    `outcome`, rows as `inputs.names`; seed: what they were made from; weights (D,): shares adding up to 1.
+    best: the fall at best values (D = 1) over `best_ground`, by `best_steps`; durations_s: how long each `to` step
+    is planned; z (N, D): the standard normal draws behind `outcome`, rows as `inputs.names`; seed: what they were
+    made from; weights (D,): shares adding up to 1.
     """
 
     inputs: Inputs
@@ -78,6 +88,17 @@ class Ensemble:
     outcome: Outcome
     weights: Array
     seed: int
+    best_steps: tuple[Step, ...]
+    durations_s: Mapping[int, float]
+
+    @property
+    def best_descent(self) -> Descent:
+        """The descent at best values."""
+        return Descent(self.best_ground, self.best_steps, self.best)
+
+    def descent(self, z: Array) -> Descent:
+        """Some draws (N, D) let down once more, with everything that happens to them."""
+        return _descent(self.inputs.sample(z), self.durations_s)
 
 
 def run(job: Job, *, draws: int = DRAWS, seed: int = SEED, jobs: int = 1) -> Ensemble:
@@ -109,7 +130,7 @@ def run(job: Job, *, draws: int = DRAWS, seed: int = SEED, jobs: int = 1) -> Ens
         parts = [reach(chunk) for chunk in chunks]
     outcome = _outcome(job, best_ground, best_fall, levels)
     weights = np.full(draws, 1.0 / draws)
-    return Ensemble(inputs, best_ground, best_fall, outcome, z, _join(parts), weights, seed)
+    return Ensemble(inputs, best_ground, best_fall, outcome, z, _join(parts), weights, seed, tuple(steps), durations)
 
 
 def _distinct_levels(boundaries: Index, tree: SegmentTree) -> _Levels:
@@ -127,7 +148,7 @@ def _distinct_levels(boundaries: Index, tree: SegmentTree) -> _Levels:
     return _Levels(level, tuple(spots))
 
 
-def _chunk_outcome(sample: Sample, durations_s: Mapping[int, float], levels: Sequence[_Levels]) -> Outcome:
+def _descent(sample: Sample, durations_s: Mapping[int, float]) -> Descent:
     job = sample.inputs.job
     where = ground(job, sample.thickness_deltas_nm())
     steps = fall_steps(
@@ -138,7 +159,12 @@ def _chunk_outcome(sample: Sample, durations_s: Mapping[int, float], levels: Seq
         late_s=sample.late_s(),
         region_share=sample.region_share(),
     )
-    return _outcome(job, where, fall(where.columns, steps), levels)
+    return Descent(where, tuple(steps), fall(where.columns, steps))
+
+
+def _chunk_outcome(sample: Sample, durations_s: Mapping[int, float], levels: Sequence[_Levels]) -> Outcome:
+    down = _descent(sample, durations_s)
+    return _outcome(sample.inputs.job, down.ground, down.fall, levels)
 
 
 def _planned(job: Job, best: Fall) -> dict[int, float]:

@@ -7,6 +7,7 @@ surface is moved. `mill` is the only public name.
 from __future__ import annotations
 
 import math
+from pathlib import Path
 from typing import Any
 
 import numpy as np
@@ -20,7 +21,23 @@ from stackmill.relief.terrain import Surface, Terrain
 Array = NDArray[np.float64]
 
 _HAIR_NM = 1e-9
-_compiled: Any = njit(cache=True, nogil=True, error_model="numpy")
+
+
+def _compiled(function: Any) -> Any:
+    """Compile on first use, and keep the result on disk where there is a place for it."""
+    try:
+        return njit(cache=True, nogil=True, error_model="numpy")(function)
+    except RuntimeError:  # numba finds no folder that may be written
+        return njit(nogil=True, error_model="numpy")(function)
+
+
+def is_compiled(*, section: bool) -> bool:
+    """Whether a kernel is at hand already, in memory or on disk: compiling it takes seconds."""
+    kernel = _mill_section if section else _mill_cell
+    if kernel.signatures:
+        return True
+    folder = Path(getattr(kernel._cache, "cache_path", None) or "/nowhere")
+    return any(folder.glob(f"kernel.{kernel.py_func.__name__}-*.nbi"))
 
 
 def mill(

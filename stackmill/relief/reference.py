@@ -74,9 +74,7 @@ def mill(
         surface.steps += 1
 
 
-def _refine(
-    terrain: Terrain, start: Surface, first: Surface, table: SlopeTable, hidden: Sight, span: float
-) -> None:
+def _refine(terrain: Terrain, start: Surface, first: Surface, table: SlopeTable, hidden: Sight, span: float) -> None:
     """The later two stages of a step; a point that passes into another material keeps the first's answer."""
     crossed = first.segment != start.segment
 
@@ -145,9 +143,7 @@ def material_at(terrain: Terrain, surface: Surface) -> Index:
     return np.where(below, -1, terrain.material[terrain.column, held])
 
 
-def _fall(
-    terrain: Terrain, surface: Surface, table: SlopeTable, sight: Sight, span: float, counts: bool
-) -> None:
+def _fall(terrain: Terrain, surface: Surface, table: SlopeTable, sight: Sight, span: float, counts: bool) -> None:
     """Let each point fall for a time through its own column, at the speed its slopes give each material."""
     height, segment = surface.height_nm.ravel(), surface.segment.ravel()
     column = terrain.column.ravel()
@@ -209,9 +205,12 @@ def cell_flux(table: SlopeTable, material: Index, back: list[Array], ahead: list
     flux = _over_range(table, material, low, high, valley=valley[0])
     saddle = np.flatnonzero(valley[0] != valley[1])
     if len(saddle):
-        flux[saddle] = _at_saddle(table, material[saddle], [v[saddle] for v in valley], *(
-            [x[saddle] for x in xs] for xs in (back, ahead, least, most)
-        ))
+        flux[saddle] = _at_saddle(
+            table,
+            material[saddle],
+            [v[saddle] for v in valley],
+            *([x[saddle] for x in xs] for xs in (back, ahead, least, most)),
+        )
     return flux
 
 

@@ -11,7 +11,8 @@ give its directions and how many of them a horizon hides (`Light.hidden_bins`); 
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Sequence
+from dataclasses import replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -29,6 +30,9 @@ _AVERAGED = 64  # azimuths of the average over a rotation, half a turn
 _NOISE = 1e-8  # steps of the table smaller than this part of flat ground's speed are level
 
 ROTATING, SWINGING = 0, 1
+
+_Q = np.linspace(-1.0, 1.0, 2 * INTERVALS + 1)
+_SLOPES = _Q / np.maximum(1.0 - np.abs(_Q), 1e-300)
 
 
 @frozen
@@ -122,6 +126,16 @@ class SlopeTable:
         rows = self.speed
         return np.asarray(((1.0 - part) * rows[material, below] + part * rows[material, below + 1]) * size)
 
+    def scaled(self, factor: Array) -> SlopeTable:
+        """The same with each material's speeds (M,) times a factor."""
+        speed = self.speed * factor[:, None]
+        return replace(
+            self,
+            speed=speed,
+            extreme=self.extreme * factor[:, None],
+            fastest_nm_per_s=_fastest(speed, _SLOPES),
+        )
+
     @property
     def wall_nm_per_s(self) -> Array:
         """How fast an upright wall walks sideways (M, 2): one whose foot is to the left, and to the right."""
@@ -133,10 +147,9 @@ def slope_table(light: Light, shapes: Sequence[Shape | None], flat_nm_per_s: Arr
 
     None for a shape: a material that the ground at hand has not; it gets a row of zeros.
     """
-    q = np.linspace(-1.0, 1.0, 2 * INTERVALS + 1)
     coarse = np.linspace(-1.0, 1.0, 2 * HIDDEN_INTERVALS + 1)
     count = len(shapes)
-    speed = np.zeros((count, len(q)))
+    speed = np.zeros((count, len(_Q)))
     hidden = np.zeros((2, count, BINS + 1, len(coarse)))
     facet = np.zeros((count, len(FacetSpeed.of(_NoShape()).value)))
     for m, shape in enumerate(shapes):
@@ -144,12 +157,11 @@ def slope_table(light: Light, shapes: Sequence[Shape | None], flat_nm_per_s: Arr
             continue
         own = FacetSpeed.of(shape)
         flat = float(_over_size_of(own, light, np.zeros(1))[0])
-        speed[m] = float(flat_nm_per_s[m]) / flat * _over_size(own, light, q)
+        speed[m] = float(flat_nm_per_s[m]) / flat * _over_size(own, light, _Q)
         hidden[:, m] = _hidden(own, light, coarse)
         facet[m] = own.value / flat
-    slopes = q / np.maximum(1.0 - np.abs(q), 1e-300)
-    extremum, extreme = _extrema(speed, slopes, even=light.kind == ROTATING)
-    return SlopeTable(light, speed, extremum, extreme, hidden, facet, _fastest(speed, slopes))
+    extremum, extreme = _extrema(speed, _SLOPES, even=light.kind == ROTATING)
+    return SlopeTable(light, speed, extremum, extreme, hidden, facet, _fastest(speed, _SLOPES))
 
 
 class _NoShape:
@@ -224,8 +236,3 @@ def _fastest(speed: Array, slopes: Array) -> float:
     """The greatest |dH/dp| of any material; finite on walls too."""
     inner = speed[:, 1:-1] * (1.0 + np.abs(slopes[1:-1]))
     return float(max(np.max(np.abs(np.diff(inner, axis=1) / np.diff(slopes[1:-1]))), np.max(speed[:, [0, -1]])))
-
-
-def shapes_by_material(names: Sequence[str], shapes: Mapping[str, Shape]) -> list[Shape | None]:
-    """Shapes in the order of names, None where there is none."""
-    return [shapes.get(name) for name in names]

@@ -6,7 +6,8 @@ runs along its second axis. Both wrap: the cell repeats.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Iterator
+from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import NDArray
@@ -23,7 +24,8 @@ class Terrain:
 
     step_nm: distances (y, x) between points; column (ny, nx): what lies there, an index into the rest;
     top_nm (C,): where each column starts; material, floor_nm (C, S): its segments from the top down, material -1
-    and floor -inf below the last; count (C,): how many there are.
+    and floor -inf below the last; count (C,): how many there are; of_region (C,): the region's column each is; owner (C, S): the segment of
+    that column each one is a piece of.
     """
 
     step_nm: tuple[float, float]
@@ -32,6 +34,8 @@ class Terrain:
     material: Index
     floor_nm: Array
     count: Index
+    of_region: Index = field(default_factory=lambda: np.zeros(0, dtype=np.intp))
+    owner: Index = field(default_factory=lambda: np.zeros((0, 0), dtype=np.intp))
 
     @property
     def is_section(self) -> bool:
@@ -48,8 +52,8 @@ class Terrain:
 class Surface:
     """A surface on its way down over a terrain.
 
-    height_nm, segment (ny, nx): how high it is and which segment of its column it is in; passed_s (C-free: ny, nx,
-    S): when each segment's floor was met, inf until then; clock_s; steps: how many time steps there have been.
+    height_nm, segment (ny, nx): how high it is, and in which segment of its column; passed_s (ny, nx, S): when
+    each segment's floor was met, inf until then; clock_s: beam-on time; steps: time steps taken so far.
     """
 
     height_nm: Array
@@ -60,9 +64,7 @@ class Surface:
 
     def copy(self) -> Surface:
         """An independent copy."""
-        return Surface(
-            self.height_nm.copy(), self.segment.copy(), self.passed_s.copy(), self.clock_s, self.steps
-        )
+        return Surface(self.height_nm.copy(), self.segment.copy(), self.passed_s.copy(), self.clock_s, self.steps)
 
 
 def untouched(terrain: Terrain) -> Surface:
@@ -75,16 +77,65 @@ def untouched(terrain: Terrain) -> Surface:
     )
 
 
-def skip_empty(terrain: Terrain, surface: Surface) -> None:
-    """Move on past segments of no thickness, and past those a strip has taken."""
-    points = np.arange(surface.segment.size)
-    column, segment = terrain.column.ravel(), surface.segment.ravel()
-    height, passed = surface.height_nm.ravel(), surface.passed_s.reshape(segment.size, -1)
-    while True:
-        inside = segment < terrain.count[column]
-        floor = terrain.floor_nm[column, np.minimum(segment, terrain.floor_nm.shape[1] - 1)]
-        through = points[inside & (height <= floor)]
-        if not len(through):
-            return
-        passed[through, segment[through]] = surface.clock_s
-        segment[through] += 1
+def etch(terrain: Terrain, surface: Surface, rate_nm_per_s: Array, duration_s: float, *, counts: bool) -> None:
+    """Lower a surface straight down for a time at rates (M,) that know no slope, in place."""
+    for point in _points(terrain, surface):
+        left = duration_s
+        while point.inside:
+            rate = float(rate_nm_per_s[point.material])
+            need = point.left_nm / rate if rate > 0.0 else (0.0 if point.left_nm <= 0.0 else np.inf)
+            if need > left:
+                point.height -= rate * left
+                break
+            left -= need
+            point.pass_floor(surface.clock_s + (duration_s - left if counts else 0.0))
+        point.put_back(surface)
+    surface.clock_s += duration_s if counts else 0.0
+
+
+def strip(terrain: Terrain, surface: Surface, materials: frozenset[int]) -> None:
+    """Take the leading segments of some materials off every point, in place and in no time."""
+    for point in _points(terrain, surface):
+        while point.inside and (point.material in materials or point.left_nm <= 0.0):
+            point.pass_floor(surface.clock_s)
+        point.put_back(surface)
+
+
+@dataclass(slots=True)
+class _Point:
+    """One point of a surface on its way down its column."""
+
+    number: int
+    terrain: Terrain
+    column: int
+    height: float
+    segment: int
+    passed_s: Array
+
+    @property
+    def inside(self) -> bool:
+        return self.segment < int(self.terrain.count[self.column])
+
+    @property
+    def material(self) -> int:
+        return int(self.terrain.material[self.column, self.segment])
+
+    @property
+    def left_nm(self) -> float:
+        return self.height - float(self.terrain.floor_nm[self.column, self.segment])
+
+    def pass_floor(self, clock_s: float) -> None:
+        self.height = min(self.height, float(self.terrain.floor_nm[self.column, self.segment]))
+        self.passed_s[self.segment] = clock_s
+        self.segment += 1
+
+    def put_back(self, surface: Surface) -> None:
+        surface.height_nm.flat[self.number] = self.height
+        surface.segment.flat[self.number] = self.segment
+
+
+def _points(terrain: Terrain, surface: Surface) -> Iterator[_Point]:
+    passed = surface.passed_s.reshape(surface.height_nm.size, -1)
+    column, height, segment = terrain.column.ravel(), surface.height_nm.ravel(), surface.segment.ravel()
+    for i in range(len(passed)):
+        yield _Point(i, terrain, int(column[i]), float(height[i]), int(segment[i]), passed[i])

@@ -36,6 +36,10 @@ class Column:
         """How many draws fall at once."""
         return len(self.thickness_nm[0])
 
+    def of_draw(self, draw: int) -> Column:
+        """One draw's column (D = 1)."""
+        return Column(self.material, [row[draw : draw + 1] for row in self.thickness_nm], self.area)
+
 
 @dataclass(slots=True)
 class _Segment:

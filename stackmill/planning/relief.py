@@ -1,0 +1,311 @@
+"""The relief of one region at the moments asked for: run on its surface, and every feature measured."""
+
+from __future__ import annotations
+
+import warnings
+from collections.abc import Callable, Sequence
+
+import numpy as np
+from numpy.typing import NDArray
+
+from stackmill.documents.recipe import Beam
+from stackmill.ensemble.run import DRAWS, SEED, Ensemble
+from stackmill.ensemble.run import run as run_ensemble
+from stackmill.errors import InputError, StackmillWarning, UsageError
+from stackmill.frozen import frozen
+from stackmill.jobs import Job
+from stackmill.planning.surfaces import Surfaces
+from stackmill.planning.windows import find_window
+from stackmill.relief.evolve import Frame, Reaching, Run, evolve
+from stackmill.relief.gridding import CELLS_ACROSS, Cut, Grid, cell_grid, edges_along, section_grid
+from stackmill.relief.measure import Standing, footprints, measured, relief_nm
+
+Array = NDArray[np.float64]
+Index = NDArray[np.intp]
+
+GRAZING_DEG = 75.0  # beyond, the shadow is not to be trusted
+_LOOK_BEYOND = 1.5  # a section runs on to this multiple of the last moment, to see what vanishes
+_DRAWS_FOR_STOP = DRAWS
+
+
+@frozen
+class FeatureRelief:
+    """One feature at one moment: what it does, with the grid's own error of its height (None without one)."""
+
+    time_s: float
+    standing: Standing
+    height_error_nm: float | None
+
+
+@frozen
+class Moment:
+    """The region at one moment: relief_nm, highest minus lowest; clear_share: of the goal's area there, or None."""
+
+    time_s: float
+    relief_nm: float
+    clear_share: float | None
+
+
+@frozen
+class Relief:
+    """The answer of `relief`: one region's surface at every moment asked for, and all its features.
+
+    cut: the section's line, None for the whole cell; why_cut: why this one was chosen, if the user did not choose.
+    """
+
+    ensemble: Ensemble
+    region: int
+    cut: Cut | None
+    why_cut: str
+    grid: Grid
+    run: Run
+    moments: tuple[Moment, ...]
+    rows: tuple[FeatureRelief, ...]
+
+    @property
+    def job(self) -> Job:
+        """The job behind it."""
+        return self.ensemble.inputs.job
+
+
+@frozen
+class When:
+    """The moments asked for: at_s, on the clock; reach: the layer whose reaching is one; stop: the proposed stop."""
+
+    at_s: tuple[float, ...] = ()
+    reach: str | None = None
+    stop: bool = False
+
+
+def relief_table(
+    job: Job,
+    *,
+    when: When | None = None,
+    section: Cut | None = None,
+    cell: bool = False,
+    region: str | None = None,
+    points: int | None = None,
+    second_order: bool = False,
+    seed: int = SEED,
+    watch: Callable[[float, float], None] | None = None,
+) -> Relief:
+    """Run one region's surface through the recipe at best values, and measure it.
+
+    when: by default the proposed stop, or without a goal the recipe's end; section, cell: by default a section
+    through the columns that decide; region: by default the goal's first, or the first with features; points: of
+    the grid; watch: told the clock and the last moment now and then.
+    """
+    if section is not None and cell:
+        raise UsageError("a section and the cell cannot both be run", cure="leave out --section or --cell")
+    needs_stop = when is None or when.stop
+    ensemble = run_ensemble(job, draws=DRAWS if needs_stop and job.goal else 1, seed=seed)
+    r = _region(job, region)
+    _refuse_densities(job, r)
+    at_s = _moments(ensemble, when)
+    cut, why = (None, "") if cell else (section, "") if section else deciding_cut(ensemble, r)
+    _check_cut(job, cut)
+    surfaces = Surfaces(ensemble, r, cut)
+    reach = when.reach if when else None
+    grid = _grid(job, r, cut, points)
+    last = max(at_s, default=float(ensemble.best_outcome.end_s[0]))
+    until = _until(ensemble, r, reach) if reach else None
+    run = _run(surfaces, grid, at_s, until, last, second_order, cell=cell, watch=watch)
+    coarse = _run(surfaces, _coarser(job, r, cut, grid), at_s, until, last, second_order, cell=True, watch=None)
+    if until is not None and run.reached_s is None and run.finished:
+        raise InputError(f"{reach!r} is not reached in {job.column_map.regions[r].name!r} while the recipe lasts")
+    _warn(job)
+    return Relief(
+        ensemble,
+        r,
+        cut,
+        why,
+        grid,
+        run,
+        tuple(_moment(ensemble, r, run, f) for f in run.frames),
+        _rows(job, r, run, coarse),
+    )
+
+
+def _region(job: Job, name: str | None) -> int:
+    names = [region.name for region in job.column_map.regions]
+    if name is not None:
+        if name not in names:
+            raise UsageError(f"there is no region {name!r}", cure=f"give one of {', '.join(names)}")
+        return names.index(name)
+    if job.goal and job.goal.in_:
+        return names.index(job.goal.in_[0])
+    featured = (r for r, region in enumerate(job.column_map.regions) if len(region.area) > 1)
+    return next(featured, 0)
+
+
+def _refuse_densities(job: Job, r: int) -> None:
+    if job.column_map.regions[r].placeless.any():
+        name = job.column_map.regions[r].name
+        raise InputError(
+            f"{name!r} has a feature known by its pattern density alone: nobody knows where it stands",
+            cure="draw it as lines or vias, or ask for another region",
+        )
+
+
+def _moments(ensemble: Ensemble, when: When | None) -> list[float]:
+    job = ensemble.inputs.job
+    at = list(when.at_s) if when else []
+    if when is not None and when.stop and job.goal is None:
+        raise UsageError("without a goal there is no stop to look at", cure="give --at, --at-reach or --goal")
+    if when is None or when.stop:
+        if job.goal is None:
+            at.append(float(ensemble.best_outcome.end_s[0]))
+        else:
+            window = find_window(ensemble, job.confidence)
+            at.append(window.best_stop_s if window.stop_s is None else window.stop_s)
+    return at
+
+
+def _check_cut(job: Job, cut: Cut | None) -> None:
+    if cut is None:
+        return
+    size = job.column_map.cell[0 if cut.fixed == "x" else 1]
+    if not 0.0 <= cut.at_nm <= size:
+        raise UsageError(
+            f"the section {cut} lies outside the cell", cure=f"{cut.fixed} goes from 0 to {size / 1000.0:.4g} um"
+        )
+
+
+def deciding_cut(ensemble: Ensemble, r: int) -> tuple[Cut, str]:
+    """The line through the columns that decide the window here, or else through the one with the most neighbours."""
+    job = ensemble.inputs.job
+    region = job.column_map.regions[r]
+    deciding: list[int] = []
+    if job.goal is not None and len(ensemble.weights) > 1:
+        window = find_window(ensemble, job.confidence)
+        deciding = [c for where in (window.exposed_by, window.lost_by) if where and where[0] == r for c in where[1:]]
+    centres = [region.centre_nm[c].tolist() for c in (deciding or range(len(region.area)))]
+    lines = [cut for x, y in centres for cut in (Cut("x", x), Cut("y", y))]
+    if not deciding:
+        best = max(lines, key=lambda cut: (len(columns_along(job, r, cut)), -lines.index(cut)))
+        return best, "it meets the most columns"
+    best = max(
+        lines,
+        key=lambda cut: (
+            len(columns_along(job, r, cut) & set(deciding)),
+            len(edges_along(region, job.column_map.cell, cut)),
+            -lines.index(cut),
+        ),
+    )
+    met = columns_along(job, r, best) & set(deciding)
+    names = " and ".join(region.label(c) for c in sorted(met))
+    return best, f"through {names}, which decide{'s' if len(met) == 1 else ''}"
+
+
+def columns_along(job: Job, r: int, cut: Cut) -> set[int]:
+    """The columns of a region that a line across the cell meets."""
+    grid = section_grid(job.column_map.regions[r], job.column_map.cell, cut, 4096)
+    return set(job.column_map.regions[r].plan(grid.x_nm, grid.y_nm).ravel().tolist())
+
+
+def _grid(job: Job, r: int, cut: Cut | None, points: int | None) -> Grid:
+    region, cell = job.column_map.regions[r], job.column_map.cell
+    return cell_grid(region, cell, points) if cut is None else section_grid(region, cell, cut, points)
+
+
+def _coarser(job: Job, r: int, cut: Cut | None, grid: Grid) -> Grid:
+    return _grid(job, r, cut, max(4, grid.x_nm.shape[1] // 2))
+
+
+def _until(ensemble: Ensemble, r: int, layer: str) -> tuple[str, float]:
+    job = ensemble.inputs.job
+    if layer not in job.column_map.layers:
+        raise UsageError(f"there is no layer {layer!r}", cure=f"give one of {', '.join(job.column_map.layers)}")
+    return layer, job.goal.clear if job.goal else 0.95
+
+
+def _run(
+    surfaces: Surfaces,
+    grid: Grid,
+    at_s: Sequence[float],
+    until: tuple[str, float] | None,
+    last: float,
+    second_order: bool,
+    *,
+    cell: bool,
+    watch: Callable[[float, float], None] | None,
+) -> Run:
+    down = surfaces.ensemble.best_descent
+    terrain = surfaces.terrain(grid, down)
+    reaching = None
+    if until is not None:
+        layer = surfaces.job.column_map.layers.index(until[0])
+        above = down.ground.layer_above[surfaces.region][:, layer]
+        reaching = Reaching(above[terrain.of_region], until[1])
+        last = max(last, 2.0 * float(surfaces.ensemble.best_outcome.end_s[0]))
+    end = last if cell or until else _LOOK_BEYOND * last
+    return evolve(
+        terrain,
+        surfaces.stages(terrain, down),
+        region=surfaces.region,
+        at_s=at_s,
+        until=reaching,
+        end_s=end,
+        second_order=second_order,
+        watch=(lambda clock: watch(clock, end)) if watch else None,
+    )
+
+
+def _moment(ensemble: Ensemble, r: int, run: Run, frame: Frame) -> Moment:
+    return Moment(frame.time_s, relief_nm(frame), clear_share(ensemble, r, run, frame.time_s))
+
+
+def clear_share(ensemble: Ensemble, r: int, run: Run, time_s: float) -> float | None:
+    """The share of the goal's points of this surface that are down to its upper level; None where it has none."""
+    above = np.full(len(ensemble.inputs.job.column_map.regions[r].area), -1)
+    for spot in ensemble.best_ground.goal_upper:
+        if spot.region == r:
+            above[spot.column] = int(np.asarray(spot.above).flat[0])
+    at = above[run.terrain.of_region][run.terrain.column]
+    wanted = at >= 0
+    if not wanted.any():
+        return None
+    passed = np.take_along_axis(run.passed_s, np.maximum(at - 1, 0)[..., None], axis=-1)[..., 0]
+    down = np.where(at > 0, passed, 0.0) <= time_s * (1.0 + 1e-12)
+    return float(down[wanted].mean())
+
+
+def _rows(job: Job, r: int, run: Run, coarse: Run) -> tuple[FeatureRelief, ...]:
+    region, features = job.column_map.regions[r], job.column_map.features
+    own, rough = footprints(region, run.terrain, features), footprints(region, coarse.terrain, features)
+    rows = []
+    for k, frame in enumerate(run.frames):
+        other = {}
+        if k < len(coarse.frames):
+            other = {s.feature: s.height_nm for s in measured(region, coarse, coarse.frames[k], rough)}
+        for one in measured(region, run, frame, own):
+            error = abs(one.height_nm - other[one.feature]) if one.feature in other else None
+            rows.append(FeatureRelief(frame.time_s, one, error))
+    return tuple(rows)
+
+
+def too_coarse(relief: Relief) -> list[tuple[str, int, int]]:
+    """Features under CELLS_ACROSS points wide: name, points across, and the grid (points along x) that would do."""
+    found = {}
+    n = relief.grid.x_nm.shape[1]
+    for row in relief.rows:
+        s = row.standing
+        if s.cells_across < CELLS_ACROSS:
+            layer, name = relief.job.column_map.features[s.feature]
+            found[s.feature] = (
+                f"{relief.job.column_map.layers[layer]} / {name}",
+                s.cells_across,
+                int(np.ceil(n * CELLS_ACROSS / max(s.cells_across, 1))),
+            )
+    return list(found.values())
+
+
+def _warn(job: Job) -> None:
+    for step in job.recipe.steps:
+        if isinstance(step, Beam) and step.incidence + step.motion.half_angle > GRAZING_DEG:
+            warnings.warn(
+                f"step {step.name!r} mills beyond {GRAZING_DEG:.0f} deg from the normal: the shadows of so low a beam"
+                " are not to be trusted",
+                StackmillWarning,
+                stacklevel=2,
+            )
