@@ -26,14 +26,29 @@ CHUNK = 2048  # draws that fall together: few enough for a processor's cache, an
 
 
 @frozen
+class Spoil:
+    """A place whose passing spoils something: keep (its number, -1 for the goal), region, column, area."""
+
+    keep: int
+    region: int
+    column: int
+    area: float
+
+    @property
+    def place(self) -> tuple[int, int]:
+        """Its region and column."""
+        return self.region, self.column
+
+
+@frozen
 class Outcome:
     """What the draws reach, and when, on the clock (s); inf where never.
 
     level_s[r] (N, D): the moments of a region's distinct levels; level[r] (C, layers): which of them each layer's top
     is in each column. exposed_s, lost_s (D,): the goal's two moments; upper_s (W, D) and upper_area (W,): the
-    goal's upper level in each wanted column, named (region, column) in `wanted`; lost_by (D,): which of `lost_at`
-    (keep number or -1 for the goal, region, column) is spoilt first; leg_start_s (legs, D): the start, then the
-    end of each step that is stopped by eye; end_s (D,): the recipe's planned end.
+    goal's upper level in each wanted column, named (region, column) in `wanted`; spoilt (P): the places whose
+    passing spoils something, spoilt_s (P, D): when; lost_by (D,): which of them is first; leg_start_s (legs, D): the
+    start, then the end of each step that is stopped by eye; end_s (D,): the recipe's planned end.
     """
 
     level_s: tuple[Array, ...]
@@ -41,7 +56,8 @@ class Outcome:
     exposed_s: Array
     lost_s: Array
     lost_by: NDArray[np.intp]
-    lost_at: tuple[tuple[int, int, int], ...]
+    spoilt: tuple[Spoil, ...]
+    spoilt_s: Array
     upper_s: Array
     upper_area: Array
     wanted: tuple[tuple[int, int], ...]
@@ -194,18 +210,21 @@ def _outcome(job: Job, where: Ground, run_down: Fall, levels: Sequence[_Levels])
     upper = np.stack([reach(spot) for spot in where.goal_upper]) if where.goal_upper else np.zeros((0, draws))
     area = np.array([spot.area for spot in where.goal_upper])
     exposed = area_quantile(upper, area, job.goal.clear) if job.goal else np.full(draws, np.inf)
-    spoilt = [(-1, where.goal_lower, [reach(spot) for spot in where.goal_lower])] if job.goal else []
+    spoilt = [Spoil(-1, spot.region, spot.column, spot.area) for spot in where.goal_lower]
+    spoilt_s = [reach(spot) for spot in where.goal_lower]
     for k, keep in enumerate(where.keeps):
-        times = [np.where(thin, 0.0, reach(spot)) for spot, thin in zip(keep.spots, keep.too_thin, strict=True)]
-        spoilt.append((k, keep.spots, times))
-    lost_s, lost_by, lost_at = _first_lost(spoilt, draws)
+        spoilt += [Spoil(k, spot.region, spot.column, spot.area) for spot in keep.spots]
+        spoilt_s += [np.where(thin, 0.0, reach(spot)) for spot, thin in zip(keep.spots, keep.too_thin, strict=True)]
+    times = np.stack(spoilt_s) if spoilt_s else np.zeros((0, draws))
+    lost_s, lost_by = first_lost(spoilt, times)
     return Outcome(
         level_s=level_s,
         level=tuple(region.level for region in levels),
         exposed_s=exposed,
         lost_s=lost_s,
         lost_by=lost_by,
-        lost_at=lost_at,
+        spoilt=tuple(spoilt),
+        spoilt_s=times,
         upper_s=upper,
         upper_area=area,
         wanted=tuple((spot.region, spot.column) for spot in where.goal_upper),
@@ -214,24 +233,18 @@ def _outcome(job: Job, where: Ground, run_down: Fall, levels: Sequence[_Levels])
     )
 
 
-_Spoilt = tuple[int, Sequence[Spot], Sequence[Array]]
-
-
-def _first_lost(
-    spoilt: Sequence[_Spoilt], draws: int
-) -> tuple[Array, NDArray[np.intp], tuple[tuple[int, int, int], ...]]:
-    """When the goal or the first keep is lost (D,), and by which spot (D,) of all that could."""
+def first_lost(spoilt: Sequence[Spoil], times: Array) -> tuple[Array, NDArray[np.intp]]:
+    """When the goal or the first keep is lost (D,), and by which (D,) of some places passed at times (P, D)."""
+    draws = times.shape[1]
     lost_s, lost_by = np.full(draws, np.inf), np.zeros(draws, dtype=np.intp)
-    lost_at: list[tuple[int, int, int]] = []
-    for keep, spots, times in spoilt:
-        stacked = np.stack(times)
-        share = LOST_SHARE if keep < 0 else ANY_SHARE
-        moment = area_quantile(stacked, np.array([spot.area for spot in spots]), share)
+    area = np.array([one.area for one in spoilt])
+    for keep in dict.fromkeys(one.keep for one in spoilt):
+        own = np.array([k for k, one in enumerate(spoilt) if one.keep == keep])
+        moment = area_quantile(times[own], area[own], LOST_SHARE if keep < 0 else ANY_SHARE)
         earlier = moment < lost_s
-        lost_by = np.where(earlier, len(lost_at) + np.argmax(stacked == moment, axis=0), lost_by)
+        lost_by = np.where(earlier, own[np.argmax(times[own] == moment, axis=0)], lost_by)
         lost_s = np.where(earlier, moment, lost_s)
-        lost_at += [(keep, spot.region, spot.column) for spot in spots]
-    return lost_s, lost_by, tuple(lost_at)
+    return lost_s, lost_by
 
 
 def _join(parts: Sequence[Outcome]) -> Outcome:
@@ -245,7 +258,8 @@ def _join(parts: Sequence[Outcome]) -> Outcome:
         exposed_s=along("exposed_s"),
         lost_s=along("lost_s"),
         lost_by=along("lost_by"),
-        lost_at=first.lost_at,
+        spoilt=first.spoilt,
+        spoilt_s=along("spoilt_s"),
         upper_s=along("upper_s"),
         upper_area=first.upper_area,
         wanted=first.wanted,

@@ -17,7 +17,7 @@ from stackmill.jobs import Job
 from stackmill.planning.surfaces import Surfaces
 from stackmill.planning.windows import find_window
 from stackmill.relief.evolve import Frame, Reaching, Run, evolve
-from stackmill.relief.gridding import CELLS_ACROSS, Cut, Grid, cell_grid, edges_along, section_grid
+from stackmill.relief.gridding import CELLS_ACROSS, Cut, Grid, cell_grid, columns_along, edges_along, section_grid
 from stackmill.relief.measure import Standing, footprints, measured, relief_nm
 
 Array = NDArray[np.float64]
@@ -108,7 +108,7 @@ def relief_table(
     reach = when.reach if when else None
     grid = _grid(job, r, cut, points)
     last = max(at_s, default=float(ensemble.best_outcome.end_s[0]))
-    until = _until(ensemble, r, reach) if reach else None
+    until = _until(ensemble, reach) if reach else None
     run = _run(surfaces, grid, at_s, until, last, second_order, cell=cell, watch=watch)
     coarse = _run(surfaces, _coarser(job, r, cut, grid), at_s, until, last, second_order, cell=True, watch=None)
     if until is not None and run.reached_s is None and run.finished:
@@ -174,7 +174,7 @@ def _check_cut(job: Job, cut: Cut | None) -> None:
 def deciding_cut(ensemble: Ensemble, r: int) -> tuple[Cut, str]:
     """The line through the columns that decide the window here, or else through the one with the most neighbours."""
     job = ensemble.inputs.job
-    region = job.column_map.regions[r]
+    region, size = job.column_map.regions[r], job.column_map.cell
     deciding: list[int] = []
     if job.goal is not None and len(ensemble.weights) > 1:
         window = find_window(ensemble, job.confidence)
@@ -182,25 +182,19 @@ def deciding_cut(ensemble: Ensemble, r: int) -> tuple[Cut, str]:
     centres = [region.centre_nm[c].tolist() for c in (deciding or range(len(region.area)))]
     lines = [cut for x, y in centres for cut in (Cut("x", x), Cut("y", y))]
     if not deciding:
-        best = max(lines, key=lambda cut: (len(columns_along(job, r, cut)), -lines.index(cut)))
+        best = max(lines, key=lambda cut: (len(columns_along(region, size, cut)), -lines.index(cut)))
         return best, "it meets the most columns"
     best = max(
         lines,
         key=lambda cut: (
-            len(columns_along(job, r, cut) & set(deciding)),
-            len(edges_along(region, job.column_map.cell, cut)),
+            len(columns_along(region, size, cut) & set(deciding)),
+            len(edges_along(region, size, cut)),
             -lines.index(cut),
         ),
     )
-    met = columns_along(job, r, best) & set(deciding)
+    met = columns_along(region, size, best) & set(deciding)
     names = " and ".join(region.label(c) for c in sorted(met))
     return best, f"through {names}, which decide{'s' if len(met) == 1 else ''}"
-
-
-def columns_along(job: Job, r: int, cut: Cut) -> set[int]:
-    """The columns of a region that a line across the cell meets."""
-    grid = section_grid(job.column_map.regions[r], job.column_map.cell, cut, 4096)
-    return set(job.column_map.regions[r].plan(grid.x_nm, grid.y_nm).ravel().tolist())
 
 
 def _grid(job: Job, r: int, cut: Cut | None, points: int | None) -> Grid:
@@ -212,7 +206,7 @@ def _coarser(job: Job, r: int, cut: Cut | None, grid: Grid) -> Grid:
     return _grid(job, r, cut, max(4, grid.x_nm.shape[1] // 2))
 
 
-def _until(ensemble: Ensemble, r: int, layer: str) -> tuple[str, float]:
+def _until(ensemble: Ensemble, layer: str) -> tuple[str, float]:
     job = ensemble.inputs.job
     if layer not in job.column_map.layers:
         raise UsageError(f"there is no layer {layer!r}", cure=f"give one of {', '.join(job.column_map.layers)}")
@@ -231,7 +225,7 @@ def _run(
     watch: Callable[[float, float], None] | None,
 ) -> Run:
     down = surfaces.ensemble.best_descent
-    terrain = surfaces.terrain(grid, down)
+    terrain = surfaces.terrain(surfaces.layout(grid), down)
     reaching = None
     if until is not None:
         layer = surfaces.job.column_map.layers.index(until[0])

@@ -2,6 +2,10 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
+from dataclasses import replace
+from typing import TYPE_CHECKING
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -16,6 +20,9 @@ from stackmill.rates.model import setting
 from stackmill.rates.yields import angular_shape
 from stackmill.timing.flatness import SlopeSpeeds, flat_until
 from stackmill.timing.plan import last_milling
+
+if TYPE_CHECKING:
+    from stackmill.planning.correction import Correction
 
 Array = NDArray[np.float64]
 
@@ -49,7 +56,11 @@ class Reach:
 
 @frozen
 class StopTable:
-    """The answer of `stops`: rows, the goal's window (None without a goal), and what would narrow it most."""
+    """The answer of `stops`: rows, the goal's window (None without a goal), and what would narrow it most.
+
+    provisional: a deciding column's own fall is not to be trusted until it decides, and no surface says more;
+    correction: what surfaces made of it, None where none was needed or asked for; flat_window: by columns alone.
+    """
 
     ensemble: Ensemble
     rows: tuple[Reach, ...]
@@ -57,20 +68,70 @@ class StopTable:
     provisional: bool
     shares: tuple[Share, ...]
     confidence: float
+    correction: Correction | None = None
+    flat_window: Window | None = None
 
 
-def stop_table(job: Job, *, draws: int = DRAWS, seed: int = SEED, jobs: int = 1) -> StopTable:
-    """Forecast a job by columns alone: every column falls as if flat and lit (`flat_ok` says if it is)."""
+def stop_table(
+    job: Job,
+    *,
+    draws: int = DRAWS,
+    seed: int = SEED,
+    jobs: int = 1,
+    flat: bool = False,
+    cell: bool = False,
+    watch: Callable[[float], None] | None = None,
+) -> StopTable:
+    """Forecast a job: every column falls as if flat and lit (`flat_ok` says if it is), then surfaces put it right.
+
+    flat: by columns alone, whatever decides; cell: run whole cells instead of sections; watch: told now and then
+    what share of a surface's runs is done.
+    """
     ensemble = run(job, draws=draws, seed=seed, jobs=jobs)
-    flat = _flat_until(ensemble)
-    window = find_window(ensemble, job.confidence) if job.goal else None
+    until = _flat_until(ensemble)
+    window = flat_window = find_window(ensemble, job.confidence) if job.goal else None
+    correction = None
+    if window is not None and not flat and _doubtful(ensemble, window, until):
+        from stackmill.planning.correction import correct
+
+        correction = correct(ensemble, job.confidence, lambda e, w: _doubtful(e, w, until), cell=cell, watch=watch)
+        ensemble, window = correction.ensemble, correction.window
+    rows = tuple(_rows(ensemble, until, job.confidence))
+    if correction:
+        rows = tuple(_by_surface(row, ensemble, correction, job) for row in rows)
+    provisional = (
+        bool(correction.unsaid) if correction else window is not None and bool(_doubtful(ensemble, window, until))
+    )
     return StopTable(
         ensemble=ensemble,
-        rows=tuple(_rows(ensemble, flat, job.confidence)),
+        rows=rows,
         window=window,
-        provisional=window is not None and _provisional(ensemble, window, flat),
+        provisional=provisional,
         shares=variance_shares(ensemble, window) if window else (),
         confidence=job.confidence,
+        correction=correction,
+        flat_window=flat_window,
+    )
+
+
+def _by_surface(row: Reach, ensemble: Ensemble, correction: Correction, job: Job) -> Reach:
+    """A row with the surface's times, where its column's own are not to be trusted and a surface says more."""
+    if row.flat_ok:
+        return row
+    r = [region.name for region in job.column_map.regions].index(row.region)
+    at = (row.column_number, job.column_map.layers.index(row.layer))
+    carried = next((s.layer[at] for s in correction.surfaces if s.region == r and at in s.layer), None)
+    if carried is None:
+        return row
+    start, best_start = ensemble.outcome.leg_start_s[row.leg], float(ensemble.best_outcome.leg_start_s[row.leg][0])
+    q = job.confidence
+    early, late = quantiles(carried.draws_s[0] - start + best_start, ensemble.weights, [(1 - q) / 2, (1 + q) / 2])
+    return replace(
+        row,
+        time_s=float(carried.best_s[0]),
+        time_early_s=_finite(float(early)),
+        time_late_s=_finite(float(late)),
+        basis="surface",
     )
 
 
@@ -182,14 +243,11 @@ def _finite(value: float) -> float | None:
     return value if np.isfinite(value) else None
 
 
-def _provisional(ensemble: Ensemble, window: Window, flat: list[Array]) -> bool:
-    """Whether a column that decides the window stops being flat and lit before it does."""
+def _doubtful(ensemble: Ensemble, window: Window, until: list[Array]) -> list[tuple[int, int]]:
+    """The columns that decide the window but stop being flat and lit before they do."""
     best = ensemble.best_outcome
-    if window.exposed_by is not None:
-        r, c = window.exposed_by
-        if best.exposed_s[0] > flat[r][c]:
-            return True
-    if window.lost_by is None:
-        return False
-    r, c = window.lost_by
-    return bool(best.lost_s[0] > flat[r][c])
+    found = []
+    for where, moment in ((window.exposed_by, best.exposed_s[0]), (window.lost_by, best.lost_s[0])):
+        if where is not None and moment > until[where[0]][where[1]] and where not in found:
+            found.append(where)
+    return found

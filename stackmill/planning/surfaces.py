@@ -14,7 +14,7 @@ from stackmill.jobs import Job
 from stackmill.rates.model import setting
 from stackmill.rates.yields import angular_shape
 from stackmill.relief.evolve import Stage
-from stackmill.relief.gridding import Cut, Grid, terrain_of
+from stackmill.relief.gridding import Cut, Grid, Layout, layout, terrain_of
 from stackmill.relief.slope_speed import ROTATING, SWINGING, Light, SlopeTable, slope_table
 from stackmill.relief.terrain import Terrain
 from stackmill.timing.fall import Lowering
@@ -42,12 +42,16 @@ class Surfaces:
         """The job behind it."""
         return self.ensemble.inputs.job
 
-    def terrain(self, grid: Grid, down: Descent, draw: int = 0) -> Terrain:
+    def layout(self, grid: Grid) -> Layout:
+        """What lies where on a grid of this region."""
+        return layout(self.job.column_map.regions[self.region], grid)
+
+    def terrain(self, laid: Layout, down: Descent, draw: int = 0) -> Terrain:
         """The ground of one draw under the points of a grid."""
         region = self.job.column_map.regions[self.region]
         where = down.ground
         columns = [column.of_draw(draw) for column in where.columns[self.region]]
-        return terrain_of(region, columns, where.boundary[self.region], grid)
+        return terrain_of(region, columns, where.boundary[self.region], laid)
 
     def stages(self, terrain: Terrain, down: Descent, draw: int = 0) -> list[Stage]:
         """The steps of one draw, as this region meets them, with what the beam does to slopes."""

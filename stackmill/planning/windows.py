@@ -219,8 +219,8 @@ def _lost_by(outcome: Outcome, weights: Array) -> tuple[tuple[int, int] | None, 
     lost = np.isfinite(outcome.lost_s)
     if not lost.any():
         return None, -1
-    keep, region, column = outcome.lost_at[_most(outcome.lost_by[lost], weights[lost])]
-    return (region, column), keep
+    first = outcome.spoilt[_most(outcome.lost_by[lost], weights[lost])]
+    return first.place, first.keep
 
 
 def _most(choices: NDArray[np.intp], weights: Array) -> int:

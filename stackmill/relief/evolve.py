@@ -141,7 +141,8 @@ def evolve(
 
     region: which region this is, for steps that cover regions; at_s: the moments of frames, on the clock; until:
     one more frame when a level is reached; end_s: where to stop in any case, otherwise at the last moment asked
-    for; undercuts: whether to watch for walls that undercut; watch: told the clock now and then. A frame shows the surface after all that takes no beam-on time then.
+    for; undercuts: whether to watch for walls that undercut; watch: told the clock now and then. A frame shows
+    the surface after all that takes no beam-on time then.
     """
     running = _Running(
         terrain,

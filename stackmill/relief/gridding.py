@@ -54,7 +54,7 @@ def section_grid(region: RegionColumns, cell: tuple[float, float], cut: Cut, poi
     length = cell[0] if cut.along == "x" else cell[1]
     edges = edges_along(region, cell, cut)
     n = points or _fitting(edges, length, _wanted(edges, length, _SECTION_ACROSS, _SECTION_POINTS))
-    s = (np.arange(n) + 0.5) * (length / n)
+    s = np.asarray((np.arange(n) + 0.5) * (length / n), dtype=np.float64)
     fixed = np.full(n, cut.at_nm)
     x, y = (s, fixed) if cut.along == "x" else (fixed, s)
     return Grid(x[None], y[None], (length / n, length / n))
@@ -70,7 +70,8 @@ def cell_grid(region: RegionColumns, cell: tuple[float, float], points: int | No
     ny = ny if points else _fitting(along_y, cell[1], ny, 1.1)
     x = (np.arange(nx) + 0.5) * (cell[0] / nx)
     y = (np.arange(ny) + 0.5) * (cell[1] / ny)
-    return Grid(*np.meshgrid(x, y), (cell[1] / ny, cell[0] / nx))
+    x_nm, y_nm = np.meshgrid(x, y)
+    return Grid(x_nm, y_nm, (cell[1] / ny, cell[0] / nx))
 
 
 def edges_along(region: RegionColumns, cell: tuple[float, float], cut: Cut) -> Array:
@@ -81,15 +82,23 @@ def edges_along(region: RegionColumns, cell: tuple[float, float], cut: Cut) -> A
         fixed = np.full_like(s, cut.at_nm)
         return region.plan(s, fixed) if cut.along == "x" else region.plan(fixed, s)
 
-    s = (np.arange(_SCANNED + 1) + 0.377) * (length / _SCANNED)  # off round numbers, where edges like to be
+    s = np.asarray(
+        (np.arange(_SCANNED + 1) + 0.377) * (length / _SCANNED), dtype=np.float64
+    )  # off round numbers, where edges like to be
     found = column(s)
     at = np.flatnonzero(found[1:] != found[:-1])
     low, high = s[at], s[at + 1]
     for _ in range(_HALVINGS):
-        middle = 0.5 * (low + high)
+        middle = np.asarray(0.5 * (low + high))
         before = column(middle) == found[at]
         low, high = np.where(before, middle, low), np.where(before, high, middle)
     return np.unique(np.round(high % length, 4))
+
+
+def columns_along(region: RegionColumns, cell: tuple[float, float], cut: Cut) -> set[int]:
+    """The columns that a line across the cell meets."""
+    grid = section_grid(region, cell, cut, _SCANNED)
+    return set(region.plan(grid.x_nm, grid.y_nm).ravel().tolist())
 
 
 def _wanted(edges: Array, length: float, across: int, limits: tuple[int, int]) -> int:
@@ -110,37 +119,55 @@ def _fitting(edges: Array, length: float, least: int, most: float = 1.25) -> int
     return int(counts[np.argmin(off)])
 
 
-def terrain_of(region: RegionColumns, columns: Sequence[Column], boundary: Sequence[Index], grid: Grid) -> Terrain:
-    """What lies under the points of a grid.
+@frozen
+class Layout:
+    """Which of the C distinct columns lies under each point of a grid, in any draw.
 
-    columns: the region's, cut at the levels asked for, in one draw; boundary: where the boundaries of the column
-    map's segments lie among those cuts (timing.plan.Ground). On conformal slopes every point gets its own heights.
+    which (ny, nx): its number; of_region (C,): the region's column it is; off_nm (C, S + 1): how much higher its
+    boundaries lie than that column's: on conformal slopes every point has its own heights.
     """
-    shape = grid.x_nm.shape
+
+    step_nm: tuple[float, float]
+    which: Index
+    of_region: Index
+    off_nm: Array
+
+
+def layout(region: RegionColumns, grid: Grid) -> Layout:
+    """What lies where on a grid."""
     x, y = grid.x_nm.ravel(), grid.y_nm.ravel()
     of_region = region.plan(x, y)
     off = np.round(region.above_mean_nm(x, y, of_region) / _ALIKE_NM).astype(np.int64)
     rows, which = np.unique(np.column_stack([of_region, off]), axis=0, return_inverse=True)
-    most = max(len(columns[c].material) for c in np.unique(of_region))
+    return Layout(grid.step_nm, which.reshape(grid.x_nm.shape), rows[:, 0].astype(np.intp), rows[:, 1:] * _ALIKE_NM)
+
+
+def terrain_of(region: RegionColumns, columns: Sequence[Column], boundary: Sequence[Index], laid: Layout) -> Terrain:
+    """What lies under the points of a grid in one draw.
+
+    columns: the region's, cut at the levels asked for (D = 1); boundary: where the boundaries of the column map's
+    segments lie among those cuts (timing.plan.Ground).
+    """
+    rows, of_region = laid.off_nm, laid.of_region
+    most = max(len(columns[c].material) for c in of_region.tolist())
     material = np.full((len(rows), most), -1, dtype=np.intp)
     floor = np.full((len(rows), most), -np.inf)
     owner = np.full((len(rows), most), -1, dtype=np.intp)
     top, count = np.zeros(len(rows)), np.zeros(len(rows), dtype=np.intp)
-    for k, row in enumerate(rows):
-        c = int(row[0])
-        levels = _levels(region, columns[c], boundary[c], c, row[1:] * _ALIKE_NM)
+    for k, (c, off) in enumerate(zip(of_region.tolist(), rows, strict=True)):
+        levels = _levels(region, columns[c], boundary[c], c, off)
         count[k] = len(levels) - 1
         material[k, : count[k]] = columns[c].material
         top[k], floor[k, : count[k]] = levels[0], levels[1:]
         owner[k, : count[k]] = np.searchsorted(boundary[c], np.arange(count[k]), side="right") - 1
     return Terrain(
-        step_nm=grid.step_nm,
-        column=which.reshape(shape).astype(np.intp),
+        step_nm=laid.step_nm,
+        column=laid.which,
         top_nm=top,
         material=material,
         floor_nm=floor,
         count=count,
-        of_region=rows[:, 0].astype(np.intp),
+        of_region=of_region,
         owner=owner,
     )
 

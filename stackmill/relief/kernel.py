@@ -70,7 +70,7 @@ def mill(
     if ny == 1:
         _mill_section(*state, *ground, terrain.step_nm[1], *tables, table.hidden, *light, *pace)
     else:
-        _mill_cell(*state, *ground, ny, nx, *terrain.step_nm, *tables, table.facet, *light, *pace, surface.steps)
+        _mill_cell(*state, *ground, ny, nx, *terrain.step_nm, *tables, table.facet, *light[2:], *pace, surface.steps)
     for _ in range(steps):
         surface.clock_s += duration_s / steps if counts else 0.0
     surface.steps += steps
@@ -351,7 +351,7 @@ def _cell_flux(speed, extremum, extreme, m, back_y, ahead_y, back_x, ahead_x):
 
 
 @_compiled
-def _direct_speed(facet, m, slope_y, slope_x, size, toward_y, toward_x, sine, cosine):
+def _direct_speed(facet, m, slope_y, slope_x, toward_y, toward_x, sine, cosine):
     steepening = math.sqrt(1.0 + slope_y * slope_y + slope_x * slope_x)
     along = slope_x * toward_x + slope_y * toward_y
     c = min(max((cosine - sine * along) / steepening, 0.0), 1.0)
@@ -364,7 +364,7 @@ def _direct_speed(facet, m, slope_y, slope_x, size, toward_y, toward_x, sine, co
 @_compiled
 def _march(ground, rows, points, toward, shift, drop, before, bit, dark, edge, above):
     """Carry the shadow's edge away from the light, row by row; set a bit where a point lies under it."""
-    whole = int(math.floor(shift))
+    whole = math.floor(shift)
     part = shift - whole
     pad = 2 + abs(whole)
     for i in range(points):
@@ -408,11 +408,11 @@ def _shadows(height, turned, ny, nx, step_y, step_x, reach, count, bearing, dark
         bit = np.uint8(1 << a)
         if abs(x) * step_y >= abs(y) * step_x:
             drop = step_x / abs(x) / reach
-            before = min(nx, int(math.ceil((highest - lowest) / drop)) + 1)
+            before = min(nx, math.ceil((highest - lowest) / drop) + 1)
             _march(turned, nx, ny, x, y / abs(x) * step_x / step_y, drop, before, bit, dark_turned, edge, above)
         else:
             drop = step_y / abs(y) / reach
-            before = min(ny, int(math.ceil((highest - lowest) / drop)) + 1)
+            before = min(ny, math.ceil((highest - lowest) / drop) + 1)
             _march(height, ny, nx, y, x / abs(y) * step_y / step_x, drop, before, bit, dark, edge, above)
     for j in range(ny):
         for i in range(nx):
@@ -444,7 +444,7 @@ def _fall_cell(
                 for a in range(AZIMUTHS):
                     if dark[i] & np.uint8(1 << a):
                         gone += speed[m, INTERVALS] * _direct_speed(
-                            facet, m, slope_y, slope_x, size, bearing[a, 1], bearing[a, 0], sine, cosine
+                            facet, m, slope_y, slope_x, bearing[a, 1], bearing[a, 0], sine, cosine
                         )
                 if whole > 0.0:
                     flux *= 1.0 - min(gone / (AZIMUTHS * whole), 1.0)
@@ -463,7 +463,7 @@ def _fall_cell(
 @_compiled
 def _mill_cell(
     height, segment, passed, column, material, floor, count, ny, nx, step_y, step_x, speed, extremum, extreme,
-    facet, kind, low, high, reach, span, steps, clock, counts, second_order, step_count,
+    facet, high, reach, span, steps, clock, counts, second_order, step_count,
 ):  # fmt: skip
     n = ny * nx
     back, ahead = np.empty((2, n)), np.empty((2, n))

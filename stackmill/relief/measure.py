@@ -70,13 +70,13 @@ def footprints(region: RegionColumns, terrain: Terrain, features: Sequence[tuple
 
 def _across(points: Mask) -> int:
     """How many points a feature's narrowest stretch has along either axis; all of them if it never ends."""
-    shortest = max(points.shape)
+    shortest = int(max(points.shape))
     for rows in (points, points.T):
         if len(rows[0]) == 1:
             continue
         for row in rows:
             if row.any() and not row.all():
-                shortest = min(shortest, min(len(run) for run in _runs(row)))
+                shortest = min([shortest, *(len(run) for run in _runs(row))])
     return shortest
 
 

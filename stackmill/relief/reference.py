@@ -18,7 +18,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from stackmill.frozen import frozen
-from stackmill.relief.slope_speed import BINS, HIDDEN_INTERVALS, ROTATING, SlopeTable
+from stackmill.relief.slope_speed import BINS, HIDDEN_INTERVALS, SlopeTable
 from stackmill.relief.terrain import Surface, Terrain
 
 Array = NDArray[np.float64]

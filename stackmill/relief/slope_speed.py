@@ -139,7 +139,7 @@ class SlopeTable:
     @property
     def wall_nm_per_s(self) -> Array:
         """How fast an upright wall walks sideways (M, 2): one whose foot is to the left, and to the right."""
-        return self.speed[:, [-1, 0]]
+        return np.asarray(self.speed[:, [-1, 0]])
 
 
 def slope_table(light: Light, shapes: Sequence[Shape | None], flat_nm_per_s: Array) -> SlopeTable:
@@ -179,7 +179,7 @@ def _over_size(own: FacetSpeed, light: Light, q: Array) -> Array:
 
 def _over_size_of(own: FacetSpeed, light: Light, q: Array) -> Array:
     incidence, azimuth = light.directions()
-    return _speed_over_size(own, q, incidence[:, None], azimuth[:, None]).mean(axis=0)
+    return np.asarray(_speed_over_size(own, q, incidence[:, None], azimuth[:, None]).mean(axis=0))
 
 
 def _speed_over_size(own: FacetSpeed, q: Array, incidence: Array, azimuth: Array) -> Array:
@@ -201,7 +201,7 @@ def _hidden(own: FacetSpeed, light: Light, q: Array) -> Array:
             share[:, None] * _speed_over_size(own, q, incidence[:, None], azimuth[:, None]), axis=0
         )
     whole = found[0, -1] + found[1, -1]
-    return found / np.maximum(whole, 1e-300)
+    return np.asarray(found / np.maximum(whole, 1e-300))
 
 
 def _extrema(speed: Array, slopes: Array, *, even: bool) -> tuple[Array, Array]:

@@ -22,10 +22,10 @@ Index = NDArray[np.intp]
 class Terrain:
     """What lies under each point of a grid.
 
-    step_nm: distances (y, x) between points; column (ny, nx): what lies there, an index into the rest;
-    top_nm (C,): where each column starts; material, floor_nm (C, S): its segments from the top down, material -1
-    and floor -inf below the last; count (C,): how many there are; of_region (C,): the region's column each is; owner (C, S): the segment of
-    that column each one is a piece of.
+    step_nm: distances (y, x) between points; column (ny, nx): what lies there, an index into the rest; top_nm (C,):
+    where each column starts; material, floor_nm (C, S): its segments from the top down, material -1 and floor -inf
+    below the last; count (C,): how many there are; of_region (C,): the region's column each is; owner (C, S): the
+    segment of that column each one is a piece of.
     """
 
     step_nm: tuple[float, float]
@@ -40,7 +40,7 @@ class Terrain:
     @property
     def is_section(self) -> bool:
         """Whether this is a section: one point deep."""
-        return self.column.shape[0] == 1
+        return bool(self.column.shape[0] == 1)
 
     @property
     def materials(self) -> frozenset[int]:

@@ -9,7 +9,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from stackmill.ensemble.run import Outcome
+from stackmill.ensemble.run import Outcome, Spoil
 from stackmill.planning.windows import (
     best_stop,
     chance_curve,
@@ -34,7 +34,8 @@ def outcome(exposed, lost, legs=None, upper=None, area=None):
         exposed_s=exposed,
         lost_s=np.asarray(lost, float),
         lost_by=np.zeros(draws, int),
-        lost_at=((-1, 0, 0),),
+        spoilt=(Spoil(-1, 0, 0, 1.0),),
+        spoilt_s=np.asarray(lost, float)[None],
         upper_s=upper,
         upper_area=np.ones(len(upper)) if area is None else np.asarray(area, float),
         wanted=tuple((0, k) for k in range(len(upper))),
