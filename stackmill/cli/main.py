@@ -11,7 +11,7 @@ os.environ.setdefault("PYDANTIC_DISABLE_PLUGINS", "__all__")
 
 import typer
 
-from stackmill.cli import check, materials, rates, schema, stops
+from stackmill.cli import check, materials, rates, relief, schema, stops
 from stackmill.errors import InputErrors, StackmillError
 
 app = typer.Typer(
@@ -27,6 +27,7 @@ app = typer.Typer(
 app.command()(check.check)
 app.command()(materials.materials)
 app.command()(rates.rates)
+app.command()(relief.relief)
 app.command()(schema.schema)
 app.command()(stops.stops)
 

@@ -67,3 +67,8 @@ Motion = Annotated[
     str | None,
     typer.Option("--motion", help="rotating, still, or 'rocking ± 20 deg' (a lone stack only).", metavar="MOTION"),
 ]
+Flat = Annotated[
+    bool, typer.Option("--flat", help="By columns alone: run no surface where a deciding column is not flat and lit.")
+]
+Cell = Annotated[bool, typer.Option("--cell", help="Run the surface of the whole cell, not of a section.")]
+Plot = Annotated[str | None, typer.Option("--plot", help="Draw it into this file, .png or .svg.", metavar="FILE")]

@@ -42,14 +42,24 @@ def write(text: str, output: str, *, force: bool) -> None:
     if output == "-":
         _print(text)
         return
+    write_bytes((text + "\n").encode(), output, force=force)
+
+
+def refuse_taken(output: str, *, force: bool) -> None:
+    """Refuse a file that is there already, before the work that would fill it. Raises FileAccessError."""
+    if not force and Path(output).exists():
+        raise FileAccessError("the file is there already", cure="give --force to overwrite it", place=Place(output))
+
+
+def write_bytes(content: bytes, output: str, *, force: bool) -> None:
+    """Write a file: beside, synced, renamed. Raises FileAccessError."""
     target = Path(output)
     try:
         target = target.resolve()  # a link stays a link
         if target.exists() and not target.is_file():
             raise FileAccessError("this is not a plain file", cure="name a file", place=Place(output))
-        if target.exists() and not force:
-            raise FileAccessError("the file is there already", cure="give --force to overwrite it", place=Place(output))
-        _replace(target, text)
+        refuse_taken(output, force=force)
+        _replace(target, content)
     except OSError as error:
         reason = (error.strerror or str(error)).lower()
         raise FileAccessError(f"cannot be written: {reason}", place=Place(output)) from error
@@ -68,15 +78,15 @@ def _print(text: str) -> None:
         raise FileAccessError(f"standard output cannot be written: {reason}") from error
 
 
-def _replace(target: Path, text: str) -> None:
+def _replace(target: Path, content: bytes) -> None:
     """Write beside the target, sync, and rename over it."""
     import tempfile
 
     mode = target.stat().st_mode & 0o777 if target.exists() else 0o666 & ~_umask()
     descriptor, beside = tempfile.mkstemp(dir=target.parent, prefix=f".{target.name}.")
     try:
-        with os.fdopen(descriptor, "w", encoding="utf-8") as out:
-            out.write(text + "\n")
+        with os.fdopen(descriptor, "wb") as out:
+            out.write(content)
             out.flush()
             os.fsync(out.fileno())
         Path(beside).chmod(mode)

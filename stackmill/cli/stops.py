@@ -6,12 +6,14 @@ import typer
 
 from stackmill.cli.options import (
     Ascii,
+    Cell,
     Confidence,
     CurrentDensity,
     Debug,
     Energy,
     Every,
     File,
+    Flat,
     Force,
     Format,
     FormatOption,
@@ -36,6 +38,8 @@ def stops(
     incidence: Incidence = None,
     current_density: CurrentDensity = None,
     motion: Motion = None,
+    flat: Flat = False,
+    cell: Cell = False,
     every: Every = False,
     why: Why = False,
     output: Output = "-",
@@ -51,18 +55,23 @@ def stops(
 ) -> None:
     """Forecast when each layer is reached in every column, and the window in which to stop.
 
+    Where a column that decides is not flat and lit until it does, a section through it is run as a surface.
     Leaves with exit code 1 where no stop has the chance asked for.
 
     Example: stackmill stops job.yaml --confidence "95 %"
     """
     from stackmill.cli.output import chosen_format, gathered_warnings, paper, refuse_unused, say_notes, write
+    from stackmill.cli.progress import progress
+    from stackmill.errors import UsageError
     from stackmill.jobs import load_job, overrides
     from stackmill.planning.stops import stop_table
     from stackmill.report import stops as report
 
     form = chosen_format(format_, output)
     refuse_unused(form, why=why, all=every)
-    with gathered_warnings(quiet=quiet, strict=strict) as warned:
+    if flat and cell:
+        raise UsageError("--flat runs no surface", cure="leave out --flat or --cell")
+    with gathered_warnings(quiet=quiet, strict=strict) as warned, progress(quiet=quiet) as watch:
         job = load_job(
             file,
             overrides=overrides(set_ or []),
@@ -73,7 +82,7 @@ def stops(
             motion=motion,
             confidence=confidence,
         )
-        table = stop_table(job, seed=seed, jobs=jobs)
+        table = stop_table(job, seed=seed, jobs=jobs, flat=flat, cell=cell, watch=watch)
     say_notes(job.notes, quiet=quiet)
     if form is Format.json:
         text = report.as_json(table, warned, paper(output, ascii_only))

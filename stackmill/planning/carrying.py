@@ -9,7 +9,7 @@ out, is the carrying's own error; it is added to the draws, so that the chances 
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Sequence
 from typing import Literal
 
 import numpy as np
@@ -17,15 +17,15 @@ from numpy.typing import NDArray
 
 from stackmill.ensemble.run import Descent, Ensemble
 from stackmill.frozen import frozen
-from stackmill.planning.surfaces import Surfaces
+from stackmill.planning.surfaces import RUNS, Surfaces
 from stackmill.relief.evolve import evolve
 from stackmill.relief.gridding import Cut, Grid, Layout, cell_grid, section_grid
+from stackmill.relief.watch import Watch
 
 Array = NDArray[np.float64]
 Index = NDArray[np.intp]
 Mask = NDArray[np.bool_]
 
-RUNS = 64
 SHARES = np.array([0.01, 0.05, 0.15, 0.3, 0.5, 0.7, 0.85, 0.95, 0.99])  # of a column's points, first down first
 PARTS = np.diff(np.concatenate([[0.0], 0.5 * (SHARES[1:] + SHARES[:-1]), [1.0]]))  # of its area, one each
 _DRAW_POINTS, _DRAW_CELL_POINTS = 200, 64
@@ -88,19 +88,17 @@ class _Level:
         return above if isinstance(above, int) else int(np.asarray(above).flat[draw])
 
 
-def surface_times(
-    ensemble: Ensemble, region: int, cut: Cut | None, *, watch: Callable[[float], None] | None = None
-) -> SurfaceTimes:
+def surface_times(ensemble: Ensemble, region: int, cut: Cut | None, *, watch: Watch | None = None) -> SurfaceTimes:
     """Run a region's surface at best values and in RUNS draws, and carry its moments to all draws.
 
-    watch: told the share done. Raises InputError where the beam does not lie in the section.
+    watch: told how much is done. Raises InputError where the beam does not lie in the section.
     """
     surfaces = Surfaces(ensemble, region, cut)
     fine, coarse = _layouts(surfaces)
     columns = _represented(ensemble, region, fine)
     levels = _levels(ensemble, region, columns)
     end = _LONGER * max([level.flat_best_s for level in levels if np.isfinite(level.flat_best_s)], default=0.0)
-    best = [_moments(surfaces, laid, levels, ensemble.best_descent, 0, end) for laid in (fine, coarse)]
+    best = [_moments(surfaces, laid, levels, ensemble.best_descent, 0, end, watch) for laid in (fine, coarse)]
     chosen = np.arange(min(RUNS, len(ensemble.weights))) * (len(ensemble.weights) // min(RUNS, len(ensemble.weights)))
     down = ensemble.descent(ensemble.z[:, chosen])
     drawn = []
@@ -109,7 +107,7 @@ def surface_times(
         last = _LONGER * max([time for time in flat if np.isfinite(time)], default=0.0)
         drawn.append(_moments(surfaces, coarse, levels, down, d, last))
         if watch:
-            watch((d + 1) / len(chosen))
+            watch.done((d + 1) / len(chosen))
     carried = _carried(ensemble, region, levels, columns, best, drawn, chosen)
     return _sorted(region, cut, fine, columns, levels, carried)
 
@@ -182,11 +180,19 @@ def _levels(ensemble: Ensemble, region: int, columns: Sequence[int]) -> list[_Le
 
 
 def _moments(
-    surfaces: Surfaces, laid: Layout, levels: Sequence[_Level], down: Descent, draw: int, end_s: float
+    surfaces: Surfaces,
+    laid: Layout,
+    levels: Sequence[_Level],
+    down: Descent,
+    draw: int,
+    end_s: float,
+    watch: Watch | None = None,
 ) -> list[Array]:
     """Run one draw's surface and read every level's moments off it: (1,) of a centre, (len(SHARES),) of the rest."""
     terrain = surfaces.terrain(laid, down, draw)
-    run = evolve(terrain, surfaces.stages(terrain, down, draw), region=surfaces.region, end_s=end_s, undercuts=False)
+    run = evolve(
+        terrain, surfaces.stages(terrain, down, draw), region=surfaces.region, end_s=end_s, undercuts=False, watch=watch
+    )
     found = []
     for level in levels:
         points = _points(laid, level.column)

@@ -18,6 +18,7 @@ from stackmill.frozen import frozen
 from stackmill.planning.carrying import PARTS, Carried, SurfaceTimes, surface_times
 from stackmill.planning.windows import Window, find_window
 from stackmill.relief.gridding import Cut, columns_along
+from stackmill.relief.watch import Watch
 from stackmill.timing.fall import area_quantile
 
 Array = NDArray[np.float64]
@@ -33,13 +34,15 @@ class Correction:
     """What surfaces made of a forecast.
 
     ensemble, window: with the surfaces' moments; surfaces: those run; unsaid: deciding columns (region, column)
-    that no surface could speak for, and why not.
+    that no surface could speak for, and why not; error_s: what carrying to the draws adds (sd) to the moments that
+    decide, the greater of the two.
     """
 
     ensemble: Ensemble
     window: Window
     surfaces: tuple[SurfaceTimes, ...]
     unsaid: tuple[tuple[tuple[int, int], str], ...]
+    error_s: float
 
 
 def correct(
@@ -48,7 +51,7 @@ def correct(
     doubtful: Doubtful,
     *,
     cell: bool = False,
-    watch: Callable[[float], None] | None = None,
+    watch: Watch | None = None,
 ) -> Correction:
     """Run surfaces through whatever decides until nothing doubtful is left, or none can be run any more."""
     flat, surfaces = ensemble, list[SurfaceTimes]()
@@ -73,7 +76,23 @@ def correct(
         )
         window = find_window(ensemble, confidence)
     still = set(doubtful(ensemble, window))
-    return Correction(ensemble, window, tuple(surfaces), tuple((w, why) for w, why in unsaid.items() if w in still))
+    return Correction(
+        ensemble,
+        window,
+        tuple(surfaces),
+        tuple((w, why) for w, why in unsaid.items() if w in still),
+        _error_s(flat, window, surfaces),
+    )
+
+
+def _error_s(flat: Ensemble, window: Window, surfaces: Sequence[SurfaceTimes]) -> float:
+    errors = [0.0]
+    for surface in surfaces:
+        errors += [one.error_s for row, one in surface.upper.items() if flat.outcome.wanted[row] == window.exposed_by]
+        errors += [
+            one.error_s for row, one in surface.spoilt.items() if flat.outcome.spoilt[row].place == window.lost_by
+        ]
+    return max(errors)
 
 
 def _why_not(ensemble: Ensemble, where: tuple[int, int]) -> str:

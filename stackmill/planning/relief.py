@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import warnings
-from collections.abc import Callable, Sequence
+from collections.abc import Sequence
 
 import numpy as np
 from numpy.typing import NDArray
@@ -19,6 +19,7 @@ from stackmill.planning.windows import find_window
 from stackmill.relief.evolve import Frame, Reaching, Run, evolve
 from stackmill.relief.gridding import CELLS_ACROSS, Cut, Grid, cell_grid, columns_along, edges_along, section_grid
 from stackmill.relief.measure import Standing, footprints, measured, relief_nm
+from stackmill.relief.watch import Watch
 
 Array = NDArray[np.float64]
 Index = NDArray[np.intp]
@@ -87,7 +88,7 @@ def relief_table(
     points: int | None = None,
     second_order: bool = False,
     seed: int = SEED,
-    watch: Callable[[float, float], None] | None = None,
+    watch: Watch | None = None,
 ) -> Relief:
     """Run one region's surface through the recipe at best values, and measure it.
 
@@ -222,7 +223,7 @@ def _run(
     second_order: bool,
     *,
     cell: bool,
-    watch: Callable[[float, float], None] | None,
+    watch: Watch | None,
 ) -> Run:
     down = surfaces.ensemble.best_descent
     terrain = surfaces.terrain(surfaces.layout(grid), down)
@@ -241,7 +242,7 @@ def _run(
         until=reaching,
         end_s=end,
         second_order=second_order,
-        watch=(lambda clock: watch(clock, end)) if watch else None,
+        watch=watch,
     )
 
 

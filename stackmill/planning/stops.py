@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from dataclasses import replace
 from typing import TYPE_CHECKING
 
@@ -23,6 +22,7 @@ from stackmill.timing.plan import last_milling
 
 if TYPE_CHECKING:
     from stackmill.planning.correction import Correction
+    from stackmill.relief.watch import Watch
 
 Array = NDArray[np.float64]
 
@@ -80,12 +80,12 @@ def stop_table(
     jobs: int = 1,
     flat: bool = False,
     cell: bool = False,
-    watch: Callable[[float], None] | None = None,
+    watch: Watch | None = None,
 ) -> StopTable:
     """Forecast a job: every column falls as if flat and lit (`flat_ok` says if it is), then surfaces put it right.
 
     flat: by columns alone, whatever decides; cell: run whole cells instead of sections; watch: told now and then
-    what share of a surface's runs is done.
+    how much of a surface's runs is done.
     """
     ensemble = run(job, draws=draws, seed=seed, jobs=jobs)
     until = _flat_until(ensemble)

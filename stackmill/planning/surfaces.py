@@ -21,6 +21,7 @@ from stackmill.timing.fall import Lowering
 
 Array = NDArray[np.float64]
 
+RUNS = 64  # draws whose surfaces are run, to carry a surface's times to all of them
 _ALONG_DEG = 0.5  # how far a beam's azimuth may lie off a section's line
 
 

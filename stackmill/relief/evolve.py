@@ -5,7 +5,7 @@ Time steps are as long as news may travel 0.9 of a grid step (0.5 at second orde
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass, field
 from typing import Protocol
 
@@ -16,6 +16,7 @@ from stackmill.frozen import frozen
 from stackmill.relief.slope_speed import SlopeTable
 from stackmill.relief.terrain import Surface, Terrain, etch, strip, untouched
 from stackmill.relief.undercut import Undercut, Undercutting
+from stackmill.relief.watch import Watch
 from stackmill.timing.fall import Cover, Lowering, Step, Strip
 
 Array = NDArray[np.float64]
@@ -102,7 +103,8 @@ class _Running:
     until: Reaching | None
     second_order: bool
     shadow: bool
-    watch: Callable[[float], None] | None
+    watch: Watch
+    end_s: float
     surface: Surface
     frames: list[Frame] = field(default_factory=list)
     reached_s: float | None = None
@@ -135,27 +137,29 @@ def evolve(
     shadow: bool = True,
     compiled: bool = True,
     undercuts: bool = True,
-    watch: Callable[[float], None] | None = None,
+    watch: Watch | None = None,
 ) -> Run:
     """Run stages over a surface, from the region's real top down.
 
     region: which region this is, for steps that cover regions; at_s: the moments of frames, on the clock; until:
     one more frame when a level is reached; end_s: where to stop in any case, otherwise at the last moment asked
-    for; undercuts: whether to watch for walls that undercut; watch: told the clock now and then. A frame shows
+    for; undercuts: whether to watch for walls that undercut; watch: told now and then how much is done. A frame shows
     the surface after all that takes no beam-on time then.
     """
+    moments = sorted({float(t) for t in at_s})
+    last = end_s if end_s is not None else (np.inf if until else max(moments, default=np.inf))
     running = _Running(
         terrain,
-        mover(compiled=compiled),
-        sorted({float(t) for t in at_s}),
+        mover(section=terrain.is_section, compiled=compiled, watch=watch or Watch()),
+        moments,
         until,
         second_order,
         shadow,
-        watch,
+        watch or Watch(),
+        last,
         untouched(terrain),
         undercutting=Undercutting() if undercuts else None,
     )
-    last = end_s if end_s is not None else (np.inf if until else max(running.at_s, default=np.inf))
     finished = True
     try:
         _run(running, stages, region, last)
@@ -174,11 +178,13 @@ def evolve(
     )
 
 
-def mover(*, compiled: bool) -> Mover:
+def mover(*, section: bool, compiled: bool, watch: Watch) -> Mover:
     """The compiled twin, or the readable reference."""
     if compiled:
         from stackmill.relief import kernel
 
+        if not kernel.is_compiled(section=section):
+            watch.compiling()
         return kernel.mill
     from stackmill.relief import reference
 
@@ -269,8 +275,7 @@ def _mill_to(running: _Running, table: SlopeTable, target: float) -> bool:
         )  # fmt: skip
         if running.undercutting:
             running.undercutting.look(terrain, s, table, span)
-        if running.watch:
-            running.watch(s.clock_s)
+        running.watch.done(min(s.clock_s / running.end_s, 1.0))
         if running.note_reached() and before is not None and running.reached_s is not None:
             _back_to(running, table, before, running.reached_s)
             return True

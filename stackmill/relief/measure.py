@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -38,7 +39,8 @@ class Standing:
     at 90 and 10 % of the height, along the section or the feature's narrower way, None where flush;
     side_slope_deg: mean of its sides between those, None where flush; top_layer: number of the layer its top (a
     recess' bottom) is in, -1 below all; state: buried, showing or gone; vanishes_s: when the last of it is milled
-    away, None if that lies beyond the run; cells_across: grid points over its narrowest width.
+    away, None if that lies beyond the run; cells_across: grid points over its narrowest width; overshadowed: it is
+    gone, and what stands on its ground belongs to a feature that still shows.
     """
 
     feature: int
@@ -52,6 +54,7 @@ class Standing:
     state: str
     vanishes_s: float | None
     cells_across: int
+    overshadowed: bool = False
 
 
 def footprints(region: RegionColumns, terrain: Terrain, features: Sequence[tuple[int, str]]) -> list[Footprint]:
@@ -93,7 +96,12 @@ def _runs(row: Mask) -> list[Index]:
 
 def measured(region: RegionColumns, run: Run, frame: Frame, prints: Sequence[Footprint]) -> list[Standing]:
     """All features on one frame."""
-    return [_standing(region, run, frame, one) for one in prints]
+    found = [_standing(region, run, frame, one) for one in prints]
+    showing = [own.points for own, one in zip(prints, found, strict=True) if one.state == "showing"]
+    return [
+        replace(one, overshadowed=one.state == "gone" and any((own.points & other).any() for other in showing))
+        for own, one in zip(prints, found, strict=True)
+    ]
 
 
 def _standing(region: RegionColumns, run: Run, frame: Frame, own: Footprint) -> Standing:

@@ -67,6 +67,10 @@ def machine_windows(table: StopTable) -> list[dict[str, Any]]:
             "lost_by": lost_by(table, window),
             "left_standing_share": window.left_standing,
             "provisional": table.provisional,
+            "basis": "surface" if table.correction and table.correction.surfaces else "flat",
+            "surface_error_s": table.correction.error_s if table.correction else None,
+            "flat_best_stop_s": table.flat_window.best_stop_s if table.flat_window else None,
+            "flat_best_stop_chance": table.flat_window.best_stop_chance if table.flat_window else None,
             "best_stop_s": window.best_stop_s,
             "best_stop_chance": window.best_stop_chance,
             "exposed_by": column_name(table, *window.exposed_by) if window.exposed_by else None,
@@ -86,10 +90,26 @@ def as_json(table: StopTable, warnings: Sequence[str], paper: Paper) -> str:
         "draws": len(table.ensemble.weights),
         "warnings": list(warnings),
         "windows": machine_windows(table),
+        "surfaces": _machine_surfaces(table),
         "taken_as_exact": list(taken_as_exact(job)),
         "variance_shares": [{"input": s.name, "share": s.share} for s in table.shares],
     }
     return json_text(machine_rows(table), envelope, paper)
+
+
+def _machine_surfaces(table: StopTable) -> list[dict[str, Any]]:
+    """The surfaces that were run, as dicts."""
+    regions = table.ensemble.inputs.job.column_map.regions
+    return [
+        {
+            "region": regions[surface.region].name,
+            "fixed": surface.cut.fixed if surface.cut else None,
+            "at_nm": surface.cut.at_nm if surface.cut else None,
+            "points": surface.points,
+            "columns": [regions[surface.region].label(c) for c in sorted(surface.columns)],
+        }
+        for surface in (table.correction.surfaces if table.correction else ())
+    ]
 
 
 def as_csv(table: StopTable, paper: Paper) -> str:
@@ -179,7 +199,7 @@ def _folded(label: str, width: int) -> list[str]:
 
 
 def _cell(row: Reach) -> str:
-    """One time with its bounds, `*` where the column alone is not to be trusted, blank where no layer is."""
+    """One time with its bounds; `^` by the surface, `*` by a column alone that is not to be trusted."""
     if not row.present:
         return "·"
     if row.time_s is None and row.time_early_s is None:
@@ -187,7 +207,7 @@ def _cell(row: Reach) -> str:
     if row.time_s == 0.0 and row.time_late_s == 0.0:
         return "0:00"
     early, late = moment(row.time_early_s), moment(row.time_late_s)
-    return f"{moment(row.time_s)} ({early}–{late}){'' if row.flat_ok else '*'}"
+    return f"{moment(row.time_s)} ({early}–{late}){'^' if row.basis == 'surface' else '' if row.flat_ok else '*'}"
 
 
 def _shown_layers(table: StopTable) -> list[str]:
@@ -208,7 +228,11 @@ def _notes(table: StopTable, *, every: bool) -> list[str]:
         f" {percent(0.5 * (1 - q))} of draws come before the early one and as many after the late one. A dot: the layer"
         " is not in this column."
     ]
-    if any(not row.flat_ok for row in table.rows):
+    if any(row.basis == "surface" for row in table.rows):
+        notes.append(
+            "^ from the surface, facets and shadows with it. Unmarked: by the column alone, which is flat and lit."
+        )
+    if any(not row.flat_ok and row.basis == "flat" for row in table.rows):
         notes.append(
             "* by the column alone: a facet or a shadow from a neighbour gets to the column's centre before,"
             " so the true time may differ."

@@ -2,11 +2,20 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
+from typing import TYPE_CHECKING
+
 from stackmill.documents.recipe import Beam, Process, Strip
 from stackmill.planning.stops import StopTable
+from stackmill.planning.surfaces import RUNS
 from stackmill.planning.windows import FIRST_LOOK_RISK, Window
 from stackmill.report.words import percent
 from stackmill.units import clock, format_time
+
+if TYPE_CHECKING:
+    from stackmill.planning.carrying import SurfaceTimes
+
+_SAME_S, _SAME_SHARE, _SAME_CHANCE = 10.0, 0.005, 0.02  # moves smaller than these change no plan at the mill
 
 
 def window_in_words(table: StopTable, window: Window) -> list[str]:
@@ -18,9 +27,61 @@ def window_in_words(table: StopTable, window: Window) -> list[str]:
         lines.append(f"  Left standing at the stop: {percent(window.left_standing)} of the goal's area.")
     if window.stop_s is not None:
         lines += _planned_end(table, window.stop_s, window.lost_s)
-    if table.provisional:
-        lines.append("  PROVISIONAL: a facet or a shadow gets to the centre of a deciding column before; see *.")
+    return lines + surface_in_words(table, window)
+
+
+def surface_in_words(table: StopTable, window: Window) -> list[str]:
+    """What surfaces made of the window: confirmed, corrected, or why it stays provisional."""
+    if table.correction is None:
+        if not table.provisional:
+            return []
+        return [
+            "  PROVISIONAL: a facet or a shadow gets to the centre of a deciding column before; see *. Leave out --flat"
+            " to have a surface put it right."
+        ]
+    lines = []
+    if table.correction.surfaces:
+        run = ", ".join(map(_one_surface(table), table.correction.surfaces))
+        lines.append(f"  {_moved(table, window)} BY THE SURFACE: {run}.")
+        lines.append(
+            f"  The surface's times at best values are carried to all draws by {RUNS} draws run on it, good to ±"
+            f" {format_time(table.correction.error_s)} (1 sd, held in the chances)."
+        )
+    lines += [
+        f"  PROVISIONAL: {column_name(table, *where)} decides, and by its own column only: {why}."
+        for where, why in table.correction.unsaid
+    ]
     return lines
+
+
+def _moved(table: StopTable, window: Window) -> str:
+    """Confirmed, or corrected from what."""
+    flat = table.flat_window
+    assert flat is not None
+    if (flat.exposed_s is None) != (window.exposed_s is None):
+        was = "no window" if flat.exposed_s is None else "a window"
+        return f"CORRECTED (by columns alone there was {was})"
+    moves = [abs(window.best_stop_s - flat.best_stop_s)]
+    moves += [abs(a - b) for a, b in ((window.exposed_s, flat.exposed_s), (window.lost_s, flat.lost_s)) if a and b]
+    small = max(moves) <= max(_SAME_S, _SAME_SHARE * window.best_stop_s)
+    if small and abs(window.best_stop_chance - flat.best_stop_chance) <= _SAME_CHANCE:
+        return "CONFIRMED"
+    return (
+        f"CORRECTED (by columns alone: {_at(table, flat, flat.best_stop_s)}, chance"
+        f" {chance_text(flat.best_stop_chance)})"
+    )
+
+
+def _one_surface(table: StopTable) -> Callable[[SurfaceTimes], str]:
+    regions = table.ensemble.inputs.job.column_map.regions
+
+    def words(surface: SurfaceTimes) -> str:
+        name = regions[surface.region].name
+        if surface.cut is None:
+            return f"the cell of {name}, {surface.points} points along x"
+        return f"section {surface.cut} of {name}, {surface.points} points"
+
+    return words
 
 
 def _no_window(table: StopTable, window: Window) -> list[str]:
