@@ -83,7 +83,8 @@ def ground(column: NDArray[np.intp], step: float | tuple[float, float], stacks: 
         material[c, : len(stack)] = [m for m, _ in stack]
         floor[c, : len(stack)] = top[c] - np.cumsum([thickness for _, thickness in stack])
     count = np.array([len(stack) for stack in stacks], dtype=np.intp)
-    return Terrain(steps, np.atleast_2d(column).astype(np.intp), top, material, floor, count)
+    plan = np.ascontiguousarray(np.atleast_2d(column), dtype=np.intp)
+    return Terrain(steps, plan, top, material, floor, count)
 
 
 def line_plan(points: int, inside: int, rows: int = 1) -> NDArray[np.intp]:

@@ -40,7 +40,7 @@ def test_what_is_known_of_the_rates_decides_what_can_be_promised():
 
 @pytest.mark.closed_form
 def test_the_plugs_that_stand_are_about_three_per_cent_of_the_goal():
-    table = stop_table(load_job(ROOT / "stacks/four-metal/look.yaml"))
+    table = stop_table(load_job(ROOT / "stacks/four-metal/look.yaml"), flat=True)
     region = table.ensemble.inputs.job.column_map.regions[0]
     goal = [c for r, c in table.ensemble.best_outcome.wanted if r == 0]
     plugs = [c for c in goal if "plug 1" in region.label(c)]

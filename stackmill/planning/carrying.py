@@ -1,10 +1,10 @@
 """What a surface says of a region's times, carried from best values to every draw.
 
 The surface is run once at best values, on a fine grid, and in 64 of the draws on a coarser one. In each the
-moments are read at which it gets to the levels asked for. How these move from draw to draw is fitted to how the
-columns' own times move: a pillar whose facets have met goes down with what surrounds it, so a level's moment may
-follow its own column's time, the first column's, or the last's. What the fit leaves over, point by point left
-out, is the carrying's own error; it is added to the draws, so that the chances hold it.
+moments are read at which it gets to the levels asked for. How these move from draw to draw is learnt from how the
+columns' own times: a pillar whose facets have met goes down with what surrounds it, so a level's moment may follow
+its own column's time, the first column's, or the last's, and go over from one to the other (kriging.py). What
+is got wrong on the draws left out is the carrying's own error; it is added to the draws, so that the chances hold it.
 """
 
 from __future__ import annotations
@@ -17,6 +17,7 @@ from numpy.typing import NDArray
 
 from stackmill.ensemble.run import Descent, Ensemble
 from stackmill.frozen import frozen
+from stackmill.planning.kriging import learn
 from stackmill.planning.surfaces import RUNS, Surfaces
 from stackmill.relief.evolve import evolve
 from stackmill.relief.gridding import Cut, Grid, Layout, cell_grid, section_grid
@@ -31,7 +32,9 @@ PARTS = np.diff(np.concatenate([[0.0], 0.5 * (SHARES[1:] + SHARES[:-1]), [1.0]])
 _DRAW_POINTS, _DRAW_CELL_POINTS = 200, 64
 _AS_WIDE = 0.9  # of a column's own half-width: what a section must cut of it to stand for it
 _LONGER = 1.25  # surfaces are followed to this multiple of the last time by columns
-_ENOUGH = 16  # draws that reach a level, for a fit
+_ENOUGH = 16  # draws that reach a level, to learn from
+_LEAST_SHARE = 0.05  # of the median: times shorter than this are not divided by
+_SAME = 1e-7
 
 
 @frozen
@@ -242,22 +245,28 @@ def _carried(
 
 
 def _fit(x_best: Array, x: Array, y_best: Array, y_coarse: Array, y: Array, chosen: Index) -> Carried | None:
-    """Moments (Q, D) of all draws from how those (Q, R) of the chosen ones follow the columns' times x (3, D)."""
-    from_best = x - x_best[:, None]
-    met = np.isfinite(y).all(axis=0) & np.isfinite(from_best[:, chosen]).all(axis=0)
+    """Moments (Q, D) of all draws from how those (Q, R) of the chosen ones follow the columns' times x (3, D).
+
+    All rates twice as fast halve every time, so what is learnt is the moment as a multiple of the column's own
+    time, from the first and the last column's times as such multiples.
+    """
+    own = np.maximum(x[0], _LEAST_SHARE * float(np.median(np.abs(x[0]))))
+    with np.errstate(invalid="ignore"):
+        others = (x[1:] / own).T
+        multiple = (y / own[chosen]).T
+    met = np.isfinite(multiple).all(axis=1) & np.isfinite(others[chosen]).all(axis=1)
     if met.sum() < _ENOUGH or not (np.isfinite(y_best).all() and np.isfinite(y_coarse).all()):
         return None
-    design = from_best[:, chosen[met]].T
-    moved = (y[:, met] - y_coarse[:, None]).T
-    back = np.linalg.pinv(design, rcond=1e-6)
-    slope = back @ moved
-    lever = np.einsum("rk,kr->r", design, back)
-    left = (moved - design @ slope) / np.maximum(1.0 - lever, 0.1)[:, None]
-    with np.errstate(invalid="ignore"):
-        carried = y_best[:, None] + (from_best.T @ slope).T
-    carried += left[np.arange(x.shape[1]) % len(left)].T
-    carried = np.where(np.isfinite(x).all(axis=0), carried, np.inf)
-    return Carried(y_best, carried, float(np.sqrt(np.mean(left**2))))
+    finer = (y_best - y_coarse) / max(float(x_best[0]), _LEAST_SHARE * float(np.median(own)))
+    if np.abs(multiple[met] - 1.0).max() < _SAME and np.abs(finer).max() < _SAME:
+        return Carried(y_best, np.repeat(x[:1], len(y_best), axis=0), 0.0)
+    learnt = learn(others[chosen[met]], multiple[met])
+    known = np.isfinite(others).all(axis=1)
+    draws = np.full((len(y_best), x.shape[1]), np.inf)
+    left_out = learnt.left_out[np.arange(int(known.sum())) % len(learnt.left_out)]
+    draws[:, known] = (own[known, None] * (learnt.at(others[known]) + left_out + finer)).T
+    error = learnt.left_out * own[chosen[met], None]
+    return Carried(y_best, draws, float(np.sqrt(np.mean(error**2))))
 
 
 def _sorted(

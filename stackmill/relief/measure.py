@@ -72,15 +72,16 @@ def footprints(region: RegionColumns, terrain: Terrain, features: Sequence[tuple
 
 
 def _across(points: Mask) -> int:
-    """How many points a feature's narrowest stretch has along either axis; all of them if it never ends."""
-    shortest = int(max(points.shape))
+    """How many points a feature has across: its longest stretch along the axis in which that is shorter.
+
+    Rows that it fills from end to end do not count: along them it runs on for ever.
+    """
+    across = int(max(points.shape))
     for rows in (points, points.T):
-        if len(rows[0]) == 1:
-            continue
-        for row in rows:
-            if row.any() and not row.all():
-                shortest = min([shortest, *(len(run) for run in _runs(row))])
-    return shortest
+        stretches = [len(run) for row in rows if row.any() and not row.all() for run in _runs(row)]
+        if len(rows[0]) > 1 and stretches:
+            across = min(across, max(stretches))
+    return across
 
 
 def _runs(row: Mask) -> list[Index]:

@@ -48,13 +48,29 @@ LIGHT = {
     "materials": ["W"],
     "rates": ["stacks/four-metal/look.yaml"],
     "schema": ["stack"],
+    "stops": ["stacks/four-metal/look.yaml", "--flat"],
+}
+MOVING = {
+    "relief": ["stacks/four-metal/look.yaml", "--grid", "40"],
     "stops": ["stacks/four-metal/look.yaml"],
 }
 
 
 @pytest.mark.parametrize("verb", VERBS)
 def test_no_verb_loads_a_heavy_library(verb):
-    assert not loaded(verb, *LIGHT[verb]) & HEAVY
+    if verb in LIGHT:
+        assert not loaded(verb, *LIGHT[verb]) & HEAVY
+    else:
+        assert verb in MOVING
+
+
+@pytest.mark.parametrize("verb", sorted(MOVING))
+def test_a_surface_loads_the_compiler_and_no_other_heavy_library(verb):
+    assert loaded(verb, *MOVING[verb]) & {"pandas", "pint", "matplotlib", "rich", "numba"} == {"numba"}
+
+
+def test_a_stop_table_that_needs_no_surface_loads_no_compiler():
+    assert not loaded("stops", "stacks/two-metal/job.yaml") & HEAVY
 
 
 def test_importing_the_package_loads_next_to_nothing():

@@ -35,8 +35,8 @@ confidence: 60 %
 """
 
 
-def forecast(text):
-    return stop_table(load_job(text))
+def forecast(text, **more):
+    return stop_table(load_job(text), **more)
 
 
 def brute(table):
@@ -142,7 +142,7 @@ goal: {layer: under, at: top, clear: 100 %}
 
 @pytest.mark.independent
 def test_a_slow_line_is_flat_until_its_kinks_meet_and_a_window_on_it_is_provisional():
-    narrow, wide = (forecast(NARROW.replace("WIDTH", width)) for width in ("200 nm", "1200 nm"))
+    narrow, wide = (forecast(NARROW.replace("WIDTH", width), flat=True) for width in ("200 nm", "1200 nm"))
     rows = {r.column: r for r in narrow.rows if r.layer == "under"}
     assert not rows["wall"].flat_ok
     assert narrow.provisional

@@ -1,0 +1,131 @@
+"""The stop table put right by surfaces, held against surfaces run in other draws than the ones it was made from."""
+
+from __future__ import annotations
+
+import numpy as np
+import pytest
+from scipy.optimize import brentq
+
+from stackmill.ensemble.run import run
+from stackmill.jobs import load_job
+from stackmill.planning.carrying import PARTS, SHARES, surface_times
+from stackmill.planning.stops import stop_table
+from stackmill.planning.surfaces import RUNS, Surfaces
+from stackmill.rates.yields import angular_shape
+from stackmill.relief.evolve import evolve
+from stackmill.relief.gridding import Cut, section_grid
+
+NARROW = """
+stack:
+  cell: {x: 2 um, y: 2 um}
+  layers:
+    - {name: level, material: SiO2 PECVD, thickness: 900 nm ± 5 %,
+       features: [{name: wall, material: W, line: {along: y, centre: 1 um, width: WIDTH}}]}
+    - {name: under, material: SiO2 PECVD, thickness: 500 nm ± 5 %}
+    - {name: substrate, material: Si, thickness: 300 um}
+mill: {gas: argon, current_density: 0.5 mA/cm2 ± 3 %}
+materials:
+  materials:
+    - name: SiO2 PECVD
+      measured_rate: {rate: 40 nm/min ± 4 %, energy: 1 keV, incidence: 0 deg, current_density: 0.5 mA/cm2}
+    - name: W
+      measured_rate: {rate: 32 nm/min ± 4 %, energy: 1 keV, incidence: 0 deg, current_density: 0.5 mA/cm2}
+recipe: {steps: [{name: mill, energy: 1 keV, incidence: INCIDENCE, motion: MOTION, for: 20 min}]}
+goal: {layer: under, at: top, clear: 100 %}
+"""
+
+
+def job(width="160 nm", incidence="0 deg", motion="rotating", **more):
+    text = NARROW.replace("WIDTH", width).replace("INCIDENCE", incidence).replace("MOTION", motion)
+    for old, new in more.items():
+        text = text.replace(old, new)
+    return load_job(text)
+
+
+@pytest.mark.closed_form
+def test_a_narrow_slow_line_goes_down_with_its_surroundings_once_its_facets_have_met():
+    one = job()
+    table, flat = stop_table(one), stop_table(one, flat=True)
+    assert flat.provisional
+    assert not table.provisional
+    assert table.correction is not None
+    rows = {(row.column, row.layer): row for row in table.rows}
+    wall = rows["wall", "under"]
+    # its roof slope p: H_W(p) = v_oxide; it stands half-width x p over the oxide and falls with it
+    by_column = next(row for row in flat.rows if (row.column, row.layer) == ("wall", "under"))
+    assert (by_column.basis, wall.basis) == ("flat", "surface")
+    tungsten, oxide = 900.0 / by_column.time_s, 900.0 / rows["field", "under"].time_s
+    shape = angular_shape(one.materials["W"], energy_ev=1000.0)
+    p = brentq(lambda q: float(shape.ratio(np.arctan(q))) - oxide / tungsten, 1e-4, 1.5)
+    assert wall.time_s == pytest.approx((900.0 + 80.0 * p) / oxide, rel=0.005)
+    assert wall.time_s < 0.9 * by_column.time_s
+    exposed, by_columns = (np.median(one.ensemble.outcome.exposed_s) for one in (table, flat))
+    assert exposed < 0.95 * by_columns
+
+
+@pytest.mark.independent
+@pytest.mark.parametrize("incidence", ["0 deg", "50 deg"])
+def test_carried_times_agree_with_surfaces_run_in_64_other_draws(incidence):
+    one = job(incidence=incidence)
+    ensemble = run(one)
+    cut = Cut("y", 1000.0)
+    times = surface_times(ensemble, 0, cut)
+    column = one.column_map.regions[0].labels.index("wall")
+    carried = times.layer[column, 1]
+    others = 7 + np.arange(RUNS) * (len(ensemble.weights) // RUNS)  # none of them is one the fit was made from
+    surfaces = Surfaces(ensemble, 0, cut)
+    laid = surfaces.layout(section_grid(one.column_map.regions[0], one.column_map.cell, cut, 400))
+    down = ensemble.descent(ensemble.z[:, others])
+    direct = []
+    for d in range(RUNS):
+        terrain = surfaces.terrain(laid, down, d)
+        passed = evolve(terrain, surfaces.stages(terrain, down, d), end_s=4000.0, undercuts=False).passed_s[0, :, 0]
+        direct.append(passed[terrain.of_region[terrain.column[0]] == column].max())
+    off = carried.draws_s[0][others] - np.array(direct)
+    assert np.sqrt(np.mean(off**2)) < 2.5 * carried.error_s + 2.0
+    assert abs(np.median(off)) < 0.005 * np.median(direct)
+    assert carried.error_s < 0.015 * np.median(direct)
+    for share in (0.1, 0.5, 0.9):  # the chance that it is down by a moment, of the same draws
+        moment = np.quantile(direct, share)
+        assert np.mean(carried.draws_s[0][others] <= moment) == pytest.approx(share, abs=0.07)
+
+
+@pytest.mark.closed_form
+def test_parts_of_a_column_add_up_and_a_wide_line_keeps_its_columns_times():
+    assert PARTS.sum() == pytest.approx(1.0)
+    assert len(PARTS) == len(SHARES)
+    table = stop_table(job(width="1200 nm"))
+    assert table.correction is None
+    assert {row.basis for row in table.rows} == {"flat"}
+
+
+@pytest.mark.closed_form
+def test_the_surface_agrees_with_the_columns_where_they_can_be_trusted():
+    one = job(width="1200 nm")
+    ensemble = run(one)
+    times = surface_times(ensemble, 0, Cut("y", 1000.0))
+    column = one.column_map.regions[0].labels.index("wall")
+    np.testing.assert_allclose(times.layer[column, 1].best_s, ensemble.best_outcome.reached_s(0, column, 1), rtol=1e-9)
+    np.testing.assert_allclose(times.layer[column, 1].draws_s[0], ensemble.outcome.reached_s(0, column, 1), rtol=1e-6)
+
+
+def test_a_beam_across_the_section_leaves_the_window_provisional_and_says_why():
+    table = stop_table(job(motion="still at 45 deg", incidence="30 deg"))
+    assert table.provisional
+    assert "does not lie in the section" in table.correction.unsaid[0][1]
+
+
+def test_a_pattern_density_leaves_the_window_provisional_and_says_why():
+    dense = {"features: [": "features: [{name: dust, material: Cu, pattern_density: 10 %}, "}
+    table = stop_table(job(**dense))
+    assert table.provisional
+    assert "has no place" in table.correction.unsaid[0][1]
+
+
+@pytest.mark.independent
+def test_the_cell_of_a_line_gives_the_times_of_its_section():
+    one = job()
+    ensemble = run(one, draws=64)
+    column = one.column_map.regions[0].labels.index("wall")
+    section, cell = (surface_times(ensemble, 0, cut).layer[column, 1].best_s[0] for cut in (Cut("y", 1000.0), None))
+    assert cell == pytest.approx(section, rel=0.01)
