@@ -43,7 +43,10 @@ AtStop = Annotated[
 ]
 Points = Annotated[int | None, typer.Option("--grid", min=8, max=4000, help="Points along the section, or along x.")]
 RegionOption = Annotated[
-    str | None, typer.Option("--region", help="Which region; otherwise the goal's.", metavar="REGION")
+    str | None,
+    typer.Option(
+        "--region", help="This region alone; --plot and --save take the goal's, or this one.", metavar="REGION"
+    ),
 ]
 Order = Annotated[int, typer.Option("--order", min=1, max=2, help="2: finer facets from the same grid, slower.")]
 Save = Annotated[
@@ -97,7 +100,7 @@ def relief(
     )
     from stackmill.cli.progress import progress
     from stackmill.jobs import load_job, overrides
-    from stackmill.planning.relief import relief_table
+    from stackmill.planning.relief import relief_tables
     from stackmill.report import relief as report
 
     form = chosen_format(format_, output)
@@ -116,17 +119,17 @@ def relief(
             motion=motion,
             confidence=confidence,
         )
-        found = relief_table(
+        found = relief_tables(
             job, when=when, section=cut, cell=cell, region=region, points=grid,
             second_order=order == 2, seed=seed, watch=watch,
         )  # fmt: skip
     say_notes(job.notes, quiet=quiet)
     if save is not None:
-        write_bytes(report.as_npz(found), save, force=force)
+        write_bytes(report.as_npz(found[0]), save, force=force)
     if plot is not None:
         from stackmill.report import plots
 
-        picture = plots.draw_cell(found) if cell else plots.draw_section(found)
+        picture = plots.draw_cell(found[0]) if cell else plots.draw_section(found[0])
         write_bytes(plots.render(picture, plots.suffix_of(plot)), plot, force=force)
     if form is Format.json:
         text = report.as_json(found, warned, paper(output, ascii_only))
@@ -135,5 +138,5 @@ def relief(
     else:
         text = report.as_text(found, paper(output, ascii_only), markdown=form is Format.markdown)
     write(text, output, force=force)
-    if not found.run.finished:
+    if not all(one.run.finished for one in found):
         raise typer.Exit(130)

@@ -26,7 +26,6 @@ Index = NDArray[np.intp]
 
 GRAZING_DEG = 75.0  # beyond, the shadow is not to be trusted
 _LOOK_BEYOND = 1.5  # a section runs on to this multiple of the last moment, to see what vanishes
-_DRAWS_FOR_STOP = DRAWS
 
 
 @frozen
@@ -78,6 +77,39 @@ class When:
     stop: bool = False
 
 
+def patterned(job: Job) -> tuple[int, ...]:
+    """The regions in which something drawn can stand up or sink: those of more than one column, the goal's first."""
+    regions = job.column_map.regions
+    goal = job.goal.in_ if job.goal else ()
+    found = [r for r, region in enumerate(regions) if len(region.area) > 1 and not region.placeless.any()]
+    return tuple(sorted(found, key=lambda r: (regions[r].name not in goal, r)))
+
+
+def relief_tables(
+    job: Job,
+    *,
+    when: When | None = None,
+    section: Cut | None = None,
+    cell: bool = False,
+    region: str | None = None,
+    points: int | None = None,
+    second_order: bool = False,
+    seed: int = SEED,
+    watch: Watch | None = None,
+) -> tuple[Relief, ...]:
+    """`relief_table` of every patterned region, the goal's first; of one region if that is named."""
+    wanted: list[str | None] = [region]
+    if region is None and patterned(job):
+        wanted = [job.column_map.regions[r].name for r in patterned(job)]
+    return tuple(
+        relief_table(
+            job, when=when, section=section, cell=cell, region=name, points=points,
+            second_order=second_order, seed=seed, watch=watch,
+        )
+        for name in wanted
+    )  # fmt: skip
+
+
 def relief_table(
     job: Job,
     *,
@@ -98,8 +130,7 @@ def relief_table(
     """
     if section is not None and cell:
         raise UsageError("a section and the cell cannot both be run", cure="leave out --section or --cell")
-    needs_stop = when is None or when.stop
-    ensemble = run_ensemble(job, draws=DRAWS if needs_stop and job.goal else 1, seed=seed)
+    ensemble = run_ensemble(job, draws=DRAWS if job.goal else 1, seed=seed)
     r = _region(job, region)
     _refuse_densities(job, r)
     at_s = _moments(ensemble, when)
@@ -133,10 +164,8 @@ def _region(job: Job, name: str | None) -> int:
         if name not in names:
             raise UsageError(f"there is no region {name!r}", cure=f"give one of {', '.join(names)}")
         return names.index(name)
-    if job.goal and job.goal.in_:
-        return names.index(job.goal.in_[0])
-    featured = (r for r, region in enumerate(job.column_map.regions) if len(region.area) > 1)
-    return next(featured, 0)
+    most = max(range(len(names)), key=lambda r: len(job.column_map.regions[r].area))
+    return next(iter(patterned(job)), most)
 
 
 def _refuse_densities(job: Job, r: int) -> None:

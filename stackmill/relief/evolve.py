@@ -277,7 +277,7 @@ def _mill_to(running: _Running, table: SlopeTable, target: float) -> bool:
             running.undercutting.look(terrain, s, table, span)
         running.watch.done(min(s.clock_s / running.end_s, 1.0))
         if running.note_reached() and before is not None and running.reached_s is not None:
-            _back_to(running, table, before, running.reached_s)
+            _back_to(running, table, before, span / steps)
             return True
         if not (s.segment < terrain.count[terrain.column]).any():
             s.clock_s = target if np.isfinite(target) else s.clock_s
@@ -285,15 +285,18 @@ def _mill_to(running: _Running, table: SlopeTable, target: float) -> bool:
     return False
 
 
-def _back_to(running: _Running, table: SlopeTable, before: Surface, moment: float) -> None:
-    """Go back a few time steps and mill to the very moment a level was reached."""
-    span = moment - before.clock_s
-    if span > 0.0:
-        steps = int(np.ceil(span / time_step_s(running.terrain, table, second_order=running.second_order)))
-        running.move(
-            running.terrain, before, table, duration_s=span, steps=steps,
-            second_order=running.second_order, shadow=running.shadow,
-        )  # fmt: skip
+def _back_to(running: _Running, table: SlopeTable, before: Surface, step_s: float) -> None:
+    """Go back a few time steps, and take the same ones again up to the very moment the level was reached."""
+    assert running.reached_s is not None
+    span = running.reached_s - before.clock_s
+    whole = int(span / step_s * (1.0 - 1e-12))
+    for duration, steps in ((whole * step_s, whole), (span - whole * step_s, 1)):
+        if duration > 0.0:
+            running.move(
+                running.terrain, before, table, duration_s=duration, steps=steps,
+                second_order=running.second_order, shadow=running.shadow,
+            )  # fmt: skip
+    before.clock_s = running.reached_s
     running.surface = before
     running.frame()
 

@@ -45,7 +45,7 @@ def machine_rows(relief: Relief) -> list[dict[str, Any]]:
         rows.append(
             {
                 "time_s": row.time_s,
-                "region": job.column_map.regions[relief.region].name,
+                "region": _region(relief),
                 "layer": job.column_map.layers[layer],
                 "feature": name,
                 "kind": s.kind,
@@ -63,33 +63,58 @@ def machine_rows(relief: Relief) -> list[dict[str, Any]]:
     return rows
 
 
-def as_json(relief: Relief, warnings: Sequence[str], paper: Paper) -> str:
-    """The whole answer for machines."""
-    grid = relief.run.terrain.column.shape
+def as_json(reliefs: Sequence[Relief], warnings: Sequence[str], paper: Paper) -> str:
+    """The whole answer for machines: `surfaces` and `moments` name the region they belong to."""
+    first = reliefs[0]
     envelope = {
-        "inputs_sha256": relief.job.inputs_sha256,
-        "seed": relief.ensemble.seed,
-        "warnings": [*warnings, *_undercuts(relief), *_coarse(relief)],
-        "section": None if relief.cut is None else {"fixed": relief.cut.fixed, "at_nm": relief.cut.at_nm},
-        "points": list(grid),
-        "step_nm": list(relief.grid.step_nm),
-        "finished": relief.run.finished,
+        "inputs_sha256": first.job.inputs_sha256,
+        "seed": first.ensemble.seed,
+        "warnings": [*warnings, *(line for one in reliefs for line in (*_undercuts(one), *_coarse(one)))],
+        "finished": all(one.run.finished for one in reliefs),
+        "surfaces": [
+            {
+                "region": _region(one),
+                "fixed": one.cut.fixed if one.cut else None,
+                "at_nm": one.cut.at_nm if one.cut else None,
+                "points": list(one.run.terrain.column.shape),
+                "step_nm": list(one.grid.step_nm),
+            }
+            for one in reliefs
+        ],
         "moments": [
-            {"time_s": m.time_s, "relief_nm": m.relief_nm, "clear_share": m.clear_share} for m in relief.moments
+            {"region": _region(one), "time_s": m.time_s, "relief_nm": m.relief_nm, "clear_share": m.clear_share}
+            for one in reliefs
+            for m in one.moments
         ],
     }
-    return json_text(machine_rows(relief), envelope, paper)
+    return json_text([row for one in reliefs for row in machine_rows(one)], envelope, paper)
 
 
-def as_csv(relief: Relief, paper: Paper) -> str:
+def as_csv(reliefs: Sequence[Relief], paper: Paper) -> str:
     """The rows as CSV."""
-    return csv_text(machine_rows(relief), ROW_NAMES, paper)
+    return csv_text([row for one in reliefs for row in machine_rows(one)], ROW_NAMES, paper)
 
 
-def as_text(relief: Relief, paper: Paper, *, markdown: bool = False) -> str:
-    """The answer for people, as wide as the paper."""
+def as_text(reliefs: Sequence[Relief], paper: Paper, *, markdown: bool = False) -> str:
+    """The answer for people, as wide as the paper: region after region, then what goes for all of them."""
+    job = reliefs[0].job
+    lines = [job.title, f"Mill: {job.mill.title}"]
+    lines += [f"{n}. {step_in_words(step, job.mill.stage)}" for n, step in enumerate(job.recipe.steps, 1)]
+    parts = ["\n".join(wrapped(line, paper.width, "   ") for line in lines)]
+    for relief in reliefs:
+        parts += _one_region(relief, paper, markdown=markdown)
     bullet = "- " if markdown else ""
-    parts = ["\n".join(wrapped(line, paper.width, "   ") for line in _heading(relief))]
+    notes = list(dict.fromkeys(note for relief in reliefs for note in _notes(relief)))
+    parts.append("\n".join(wrapped(bullet + line, paper.width, "  ") for line in [*notes, *cautions(job)]))
+    return paper.plain("\n\n".join(parts))
+
+
+def _region(relief: Relief) -> str:
+    return relief.job.column_map.regions[relief.region].name
+
+
+def _one_region(relief: Relief, paper: Paper, *, markdown: bool) -> list[str]:
+    parts = [wrapped(_surface(relief), paper.width, "   ")]
     for n, moment in enumerate(relief.moments):
         clear = ""
         if moment.clear_share is not None:
@@ -100,26 +125,21 @@ def as_text(relief: Relief, paper: Paper, *, markdown: bool = False) -> str:
             parts.append(grid.text("github" if markdown else "simple", 0))
     if not relief.run.finished:
         parts.append("INTERRUPTED: the moments after the last one shown were not reached.")
-    parts.append("\n".join(wrapped(bullet + line, paper.width, "  ") for line in _notes(relief)))
-    return paper.plain("\n\n".join(parts))
+    return parts
 
 
 def _where(relief: Relief) -> str:
     return "area" if relief.cut is None else "stretch of the section"
 
 
-def _heading(relief: Relief) -> list[str]:
-    job = relief.job
-    region = job.column_map.regions[relief.region].name
+def _surface(relief: Relief) -> str:
+    """Which surface was run."""
     ny, nx = relief.run.terrain.column.shape
     step = length(max(relief.grid.step_nm))
     if relief.cut is None:
-        surface = f"{region}, the whole cell: {nx} x {ny} points, {step} apart"
-    else:
-        why = f" ({relief.why_cut})" if relief.why_cut else ""
-        surface = f"{region}, section {relief.cut}{why}: {nx} points, {step} apart"
-    steps = [f"{n}. {step_in_words(step, job.mill.stage)}" for n, step in enumerate(job.recipe.steps, 1)]
-    return [job.title, f"Mill: {job.mill.title}", *steps, surface]
+        return f"{_region(relief)}, the whole cell: {nx} x {ny} points, {step} apart."
+    why = f" ({relief.why_cut})" if relief.why_cut else ""
+    return f"{_region(relief)}, section {relief.cut}{why}: {nx} points, {step} apart."
 
 
 def _grid(relief: Relief, moment: int) -> Grid:
@@ -169,11 +189,16 @@ def _notes(relief: Relief) -> list[str]:
     ]
     if buried:
         names = ", ".join(_feature(relief, f) for f in buried)
-        notes.append(f"Still buried at one of these moments, and not listed there: {names}.")
+        notes.append(f"{_region(relief)}: still buried at one of these moments, and not listed there: {names}.")
     if relief.cut is not None:
         notes.append("A section takes what it cuts as running on for ever: --cell takes vias as they are.")
-    notes += _undercuts(relief) + _coarse(relief)
-    return notes + cautions(relief.job)
+    flat = [one.name for one in relief.job.column_map.regions if len(one.area) == 1]
+    if flat:
+        notes.append(f"Alike everywhere, so that nothing stands up: {', '.join(flat)}.")
+    placeless = [one.name for one in relief.job.column_map.regions if one.placeless.any()]
+    if placeless:
+        notes.append(f"Left out, since a feature there is known by its pattern density alone: {', '.join(placeless)}.")
+    return notes + _undercuts(relief) + _coarse(relief)
 
 
 def _feature(relief: Relief, number: int) -> str:
@@ -190,7 +215,8 @@ def _undercut(relief: Relief, one: Undercut) -> str:
     x, y = float(relief.grid.x_nm[one.y, one.x]), float(relief.grid.y_nm[one.y, one.x])
     most = "up to " if relief.cut is None else ""
     return (
-        f"UNDERCUT not shown at x = {length(x)}, y = {length(y)}: the wall of {names[one.lower]} walks in under"
+        f"UNDERCUT in {_region(relief)}, not shown, at x = {length(x)}, y = {length(y)}: the wall of"
+        f" {names[one.lower]} walks in under"
         f" {names[one.upper]} by {most}{one.depth_nm:.0f} nm more than that one's own wall; a surface of heights cannot"
         " overhang."
     )
@@ -198,7 +224,8 @@ def _undercut(relief: Relief, one: Undercut) -> str:
 
 def _coarse(relief: Relief) -> list[str]:
     return [
-        f"TOO COARSE for {name}: {across} points across it; {CELLS_ACROSS} or more want --grid {needed}."
+        f"TOO COARSE in {_region(relief)} for {name}: {across} points across it;"
+        f" {CELLS_ACROSS} or more want --grid {needed}."
         for name, across, needed in too_coarse(relief)
     ]
 
@@ -227,7 +254,7 @@ def as_npz(relief: Relief) -> bytes:
         x_nm=relief.grid.x_nm,
         y_nm=relief.grid.y_nm,
         materials=np.array(relief.job.column_map.materials),
-        region=np.array(relief.job.column_map.regions[relief.region].name),
+        region=np.array(_region(relief)),
         section=np.array("" if relief.cut is None else str(relief.cut)),
     )
     return out.getvalue()

@@ -68,15 +68,25 @@ class SlopeSpeeds:
     def steepest(self) -> NDArray[np.intp]:
         """(M, M): for a material (row) beside a faster one, the first slope at which it keeps up, else the last.
 
-        0 beside one that is not faster.
+        0 beside one that is not faster. Under a tilted beam steep slopes fall the faster the steeper they are: a
+        slope on that branch grows into a wall once its own foot is slow ground, so it counts as one.
         """
         flat = self.flat_nm_per_s
         keeps_up = self.speed_nm_per_s[:, None, :] >= flat[None, :, None]
         if self.slowest_nm_per_s is not None:
             keeps_up = np.zeros_like(keeps_up)
         index = np.where(keeps_up.any(axis=-1), np.argmax(keeps_up, axis=-1), len(self.slope) - 1)
+        index = np.where(index > self._last_lowest[:, None], len(self.slope) - 1, index)
         slower = flat[:, None] < flat[None, :] * (1.0 - _SAME_SPEED)
         return np.where(slower, index, 0)
+
+    @property
+    def _last_lowest(self) -> NDArray[np.intp]:
+        """(M,): the slope beyond which the speed rises all the way to the wall; the last where it never does."""
+        rises = np.diff(self.speed_nm_per_s, axis=1) > 0.0
+        falls_last = np.argmax(~rises[:, ::-1], axis=1)  # how many rises there are at the end
+        all_rise = rises.all(axis=1)
+        return np.where(all_rise, 0, len(self.slope) - 1 - falls_last)
 
 
 class _Pairs:

@@ -83,7 +83,7 @@ def test_carried_times_agree_with_surfaces_run_in_64_other_draws(incidence):
         direct.append(passed[terrain.of_region[terrain.column[0]] == column].max())
     off = carried.draws_s[0][others] - np.array(direct)
     assert np.sqrt(np.mean(off**2)) < 2.5 * carried.error_s + 2.0
-    assert abs(np.median(off)) < 0.005 * np.median(direct)
+    assert abs(np.median(off)) < 0.01 * np.median(direct)
     assert carried.error_s < 0.015 * np.median(direct)
     for share in (0.1, 0.5, 0.9):  # the chance that it is down by a moment, of the same draws
         moment = np.quantile(direct, share)

@@ -35,7 +35,13 @@ def flat_times(table, stack):
 @pytest.mark.parametrize("second_order", [False, True])
 @pytest.mark.parametrize(
     ("plan", "light"),
-    [("section", "normal"), ("section", "60 rotating"), ("section", "45 still"), ("cell", "normal"), ("cell", "60 rotating")],
+    [
+        ("section", "normal"),
+        ("section", "60 rotating"),
+        ("section", "45 still"),
+        ("cell", "normal"),
+        ("cell", "60 rotating"),
+    ],
 )
 @pytest.mark.parametrize("steps", [1, 7, 400])
 def test_a_level_stack_falls_at_thickness_over_rate_whatever_the_time_step(backend, second_order, plan, light, steps):

@@ -103,9 +103,7 @@ def test_the_share_of_a_swinging_beam_that_a_wall_hides(low, high):
 def test_the_kernel_hides_as_many_bins(horizon):
     for light in (rotating(60.0), swinging(50.0, 50.0), swinging(20.0, 70.0), swinging(-30.0, 60.0)):
         for side, number in ((1, 0), (-1, 1)):
-            found = kernel._hidden_bins(
-                horizon, number, light.kind, light.low_rad, light.high_rad, light.steepest_tan
-            )
+            found = kernel._hidden_bins(horizon, number, light.kind, light.low_rad, light.high_rad, light.steepest_tan)
             assert found == pytest.approx(float(light.hidden_bins(np.array([horizon]), side)[0]), abs=1e-12)
 
 
@@ -226,3 +224,39 @@ def test_bearings_are_mirrored_and_turned_into_themselves_and_fill_the_circle():
     azimuth = np.concatenate([np.arctan2(*reference.bearings(step).T[::-1]) for step in range(200)])
     gaps = np.diff(np.sort(azimuth))
     assert gaps.max() <= 4.0 * 2.0 * np.pi / len(azimuth)
+
+
+@pytest.mark.closed_form
+@pytest.mark.parametrize("rows", [4, 9, 40])
+@pytest.mark.parametrize("step", range(6))
+def test_a_shadow_of_a_cell_that_repeats_does_not_end_with_the_cell(rows, step):
+    """A line along y, cut at any length: light from a slant comes from the copies of the cell too.
+
+    The shadow of the line is 3.7 long, the cells 0.2 to 2; held against one long enough that none is repeated. One
+    point in a hundred may differ: an edge of a shadow falls between points.
+    """
+    height = np.repeat(wall(points=40, at=25, high=1.0)[None], rows, axis=0)
+    long = np.repeat(height[:1], 400, axis=0)
+    for bearing in reference.bearings(step):
+        found = reference.in_shadow(height, (0.05, 0.05), bearing, 3.7)
+        expected = reference.in_shadow(long, (0.05, 0.05), bearing, 3.7)[200]
+        assert (found != expected[None]).mean() <= 0.01
+
+
+def beside(terrain, shaded):
+    """Heights (2, ny, nx) of a cell and of the middle one of three by three of its copies, after the same time."""
+    table = table_of(rotating(75.0))
+    time = 0.4 / flat_speed(table, OX)
+    copies = ground(np.tile(terrain.column, (3, 3)), terrain.step_nm, [[(OX, 50.0)], [(W, 50.0)]])
+    ny, nx = terrain.column.shape
+    one = milled("kernel", terrain, table, time, shadow=shaded).height_nm
+    many = milled("kernel", copies, table, time, shadow=shaded).height_nm
+    return np.stack([one, many[ny : 2 * ny, nx : 2 * nx]])
+
+
+@pytest.mark.closed_form
+@pytest.mark.parametrize("shaded", [False, True])
+def test_a_cell_and_nine_of_it_mill_alike(shaded):
+    """Exactly without shadow; with it to 1 % of the relief, as an edge of a shadow may fall between points."""
+    one, many = beside(ground(disc_plan(14, 4.0), 0.04, [[(OX, 50.0)], [(W, 50.0)]]), shaded)
+    assert np.abs(one - many).max() <= (0.01 if shaded else 1e-12) * np.ptp(one)

@@ -130,11 +130,7 @@ def of_library(pair, tilt):
     """A table of bar (0) and fill (1), in nm/s at 1 keV and 0.5 mA/cm2."""
     materials = [LIBRARY.get(name) for name in pair]
     flat = [
-        float(
-            rate_nm_per_s(
-                m, energy_ev=1000.0, incidence_rad=np.radians(tilt), current_density_ma_per_cm2=0.5
-            )
-        )
+        float(rate_nm_per_s(m, energy_ev=1000.0, incidence_rad=np.radians(tilt), current_density_ma_per_cm2=0.5))
         for m in materials
     ]
     return slope_table(rotating(tilt), [angular_shape(m, energy_ev=1000.0) for m in materials], np.array(flat))

@@ -45,9 +45,7 @@ def smooth(backend, points, second_order, height):
     surface = untouched(terrain)
     surface.height_nm[:] = height
     steps = step_count(terrain, isotropic(), TIME, second_order=second_order)
-    BACKENDS[backend](
-        terrain, surface, isotropic(), duration_s=TIME, steps=steps, second_order=second_order
-    )
+    BACKENDS[backend](terrain, surface, isotropic(), duration_s=TIME, steps=steps, second_order=second_order)
     return surface.height_nm
 
 

@@ -127,7 +127,7 @@ def test_no_point_of_a_wall_ever_rises(backend, second_order, tilt):
     for _ in range(steps):
         before = surface.height_nm.copy()
         BACKENDS[backend](terrain, surface, table, duration_s=1.0 / steps, steps=1, second_order=second_order)
-        assert (surface.height_nm <= before).all()
+        assert (surface.height_nm <= before + 1e-12).all()
 
 
 @pytest.mark.closed_form
@@ -149,7 +149,7 @@ def isotropic_errors(second_order):
     for n in grids:
         terrain = masked(n, step=1.0)
         surface = milled("kernel", terrain, table, time, second_order=second_order)
-        inward, over, outward, under = both_sides(terrain, surface.height_nm)
+        inward, over, _, under = both_sides(terrain, surface.height_nm)
         gone = -1.0 - np.sqrt(np.maximum(time**2 - inward**2, 0.0))
         exact = np.where(inward > time, -time, gone)
         wrong = np.abs(over - exact).sum() + np.abs(under + 1.0 + time).sum()

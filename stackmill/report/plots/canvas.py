@@ -7,7 +7,7 @@ from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from functools import cache
 from pathlib import Path
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 from stackmill.errors import FileAccessError, UsageError
 from stackmill.frozen import frozen
@@ -59,7 +59,7 @@ def panel(figure: Figure, left: float, top: float, width: float, height: float) 
 
 
 def write(
-    figure: Figure, x: float, y: float, text: str, size: float, *, bold: bool = False, ha: str = "left", **more: object
+    figure: Figure, x: float, y: float, text: str, size: float, *, bold: bool = False, ha: str = "left", **more: Any
 ) -> None:
     """Text at a place (px, from the picture's upper left corner)."""
     across, up = figure.get_size_inches() * DPI
@@ -73,7 +73,7 @@ def text_px(text: str, size: float, bold: bool = False) -> tuple[float, float]:
     from matplotlib.backends.backend_agg import RendererAgg
     from matplotlib.font_manager import FontProperties
 
-    renderer = RendererAgg(8, 8, DPI)
+    renderer: Any = RendererAgg(8, 8, DPI)  # type: ignore[no-untyped-call]
     font = FontProperties(family="DejaVu Sans", size=size, weight="bold" if bold else "normal")
     lines = text.split("\n")
     wide = max(renderer.get_text_width_height_descent(line, font, ismath=False)[0] for line in lines)

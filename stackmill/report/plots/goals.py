@@ -2,10 +2,21 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping, Sequence
+from typing import TYPE_CHECKING
+
 from stackmill.documents.job import Goal
 from stackmill.frozen import frozen
 from stackmill.jobs import Job
+from stackmill.report.plots.canvas import Unit
+from stackmill.report.plots.paint import GOAL, halo
+from stackmill.report.plots.slices import Slice
 from stackmill.timing.plan import Ground, Spot
+
+if TYPE_CHECKING:
+    from matplotlib.axes import Axes
+
+_SAME_NM = 0.5
 
 
 @frozen
@@ -35,3 +46,33 @@ def goal_in_words(goal: Goal) -> str:
     """`metal 1 / strap, top`."""
     what = goal.layer if goal.feature is None else f"{goal.layer} / {goal.feature}"
     return f"{what}, {goal.at}"
+
+
+def mark_goal(axes: Axes, job: Job, slices: Sequence[Slice], levels: Mapping[int, GoalLevel], unit: Unit) -> None:
+    """A dashed line at the goal's level over every stretch it is wanted on; a band by both its ends."""
+    is_band = job.goal is not None and not job.goal.at.top
+    for start, end, level in _stretches(slices, levels):
+        if is_band:
+            axes.fill_between(
+                [start / unit.nm, end / unit.nm], level.lower_nm / unit.nm, level.upper_nm / unit.nm,
+                color=GOAL, alpha=0.18, lw=0.0, zorder=6.5,
+            )  # fmt: skip
+        for height in (level.upper_nm, level.lower_nm) if is_band else (level.upper_nm,):
+            axes.plot(
+                [start / unit.nm, end / unit.nm], [height / unit.nm] * 2, color=GOAL, lw=1.2 if is_band else 1.8,
+                ls=(0, (5, 2)), zorder=7, path_effects=halo(2.4 if is_band else 3.4), dash_capstyle="butt",
+            )  # fmt: skip
+
+
+def _stretches(slices: Sequence[Slice], levels: Mapping[int, GoalLevel]) -> list[tuple[float, float, GoalLevel]]:
+    """Where the goal is wanted, neighbours at one level joined: start and end (nm), and the level."""
+    found: list[tuple[float, float, GoalLevel]] = []
+    for one in slices:
+        if one.column not in levels:
+            continue
+        level, start, end = levels[one.column], float(one.s_nm[0]), float(one.s_nm[-1])
+        if found and abs(found[-1][1] - start) < _SAME_NM and abs(found[-1][2].upper_nm - level.upper_nm) < _SAME_NM:
+            found[-1] = (found[-1][0], end, level)
+        else:
+            found.append((start, end, level))
+    return found

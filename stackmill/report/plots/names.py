@@ -44,14 +44,17 @@ class View:
         return self.height_px / (self.high_nm - self.low_nm)
 
 
-def layer_names(job: Job, pieces: Sequence[Piece], *, beside: Mapping[int, str], sizes: bool) -> dict[int, str]:
-    """What is written at the side of each layer met: its name, features named beside it, its thickness."""
+def layer_names(
+    job: Job, pieces: Sequence[Piece], *, beside: Mapping[int, str], sizes: bool, goal: int | None = None
+) -> dict[int, str]:
+    """What is written at the side of each layer met: its name, features named beside it, its thickness, the goal."""
     found = {}
     for k in sorted({piece.layer for piece in pieces}):
         layer = job.stack.layers[k]
         name = f"{layer.name} / {beside[k]}" if k in beside else layer.name
         thick = layer.thickness.value
-        found[k] = f"{name}  {length(thick)}" if sizes and thick < _SUBSTRATE_SHOWN else name
+        text = f"{name}  {length(thick)}" if sizes and thick < _SUBSTRATE_SHOWN else name
+        found[k] = f"{text}  (goal)" if k == goal else text
     return found
 
 
@@ -64,8 +67,9 @@ def side_width(names: Mapping[int, str]) -> float:
 def write_layers(
     axes: Axes, view: View, pieces: Sequence[Piece], names: Mapping[int, str], goal: int | None, unit: Unit
 ) -> None:
-    """Names of layers at the right, each with a leader to where the layer meets the edge, or else to its middle."""
-    found = sorted(names, reverse=True)
+    """Names of layers at the right, each with a leader to where the layer ends there."""
+    met = {piece.layer for piece in pieces if piece.top_nm.max() > view.low_nm and piece.floor_nm.min() < view.high_nm}
+    found = sorted(met & set(names), reverse=True)
     at = [_anchor(view, [piece for piece in pieces if piece.layer == k]) for k in found]
     wanted = [(height - view.low_nm) * view.up_px_per_nm for _, height in at]
     places = spread(wanted, [_LINE_PX] * len(found), -6.0, view.height_px + 10.0)
@@ -86,7 +90,7 @@ def write_layers(
 
 
 def _anchor(view: View, own: Sequence[Piece]) -> tuple[float, float]:
-    """Where a layer's leader ends: at the right edge if the layer comes to it, else in the middle of its widest."""
+    """Where a layer's leader ends: at the edge if the layer comes to it, else at its largest piece."""
     shown = [piece for piece in own if piece.top_nm.max() > view.low_nm and piece.floor_nm.min() < view.high_nm]
     ending = [piece for piece in shown if piece.s_nm[-1] >= 0.999 * view.across_nm]
     if ending:
@@ -95,13 +99,15 @@ def _anchor(view: View, own: Sequence[Piece]) -> tuple[float, float]:
         return view.across_nm, 0.5 * (min(top, view.high_nm) + max(floor, view.low_nm))
     if not shown:
         return view.across_nm, view.low_nm
-    s, height = max(shown, key=lambda piece: piece.area_nm2).middle_nm
-    return s, min(max(height, view.low_nm), view.high_nm)
+    one = max(shown, key=lambda piece: piece.area_nm2)
+    top, floor = min(float(one.top_nm[-1]), view.high_nm), max(float(one.floor_nm[-1]), view.low_nm)
+    return float(one.s_nm[-1]), 0.5 * (top + floor)
 
 
 def feature_places(job: Job, view: View, pieces: Sequence[Piece]) -> tuple[list[tuple[str, Piece]], dict[int, str]]:
     """Names that fit inside a piece of their feature, and those that do not, by layer."""
-    inside, beside = [], {}
+    inside: list[tuple[str, Piece]] = []
+    beside: dict[int, str] = {}
     for number, (layer, name) in enumerate(job.column_map.features):
         own = [piece for piece in pieces if piece.feature == number]
         if not own:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Mapping, Sequence
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
@@ -40,10 +40,10 @@ def paint(axes: Axes, pieces: Iterable[Piece], names: Sequence[str], look: Mappi
 
     for piece in pieces:
         own, outline = look[names[piece.material]], piece.outline_nm / unit.nm
-        axes.add_patch(
+        axes.add_artist(
             Polygon(outline, closed=True, facecolor=own.face, edgecolor=own.ink, hatch=own.hatch, lw=0.0, zorder=2)
         )
-        axes.add_patch(Polygon(outline, closed=True, fill=False, edgecolor=own.ink, lw=0.6, zorder=2.1))
+        axes.add_artist(Polygon(outline, closed=True, fill=False, edgecolor=own.ink, lw=0.6, zorder=2.1))
 
 
 def haunt(axes: Axes, pieces: Iterable[Piece], names: Sequence[str], look: Mapping[str, Style], unit: Unit) -> None:
@@ -52,10 +52,10 @@ def haunt(axes: Axes, pieces: Iterable[Piece], names: Sequence[str], look: Mappi
 
     for piece in pieces:
         outline = piece.outline_nm / unit.nm
-        axes.add_patch(
+        axes.add_artist(
             Polygon(outline, closed=True, facecolor=look[names[piece.material]].face, alpha=0.13, lw=0.0, zorder=1)
         )
-        axes.add_patch(Polygon(outline, closed=True, fill=False, edgecolor="#b4b8bd", lw=0.5, ls=":", zorder=1.1))
+        axes.add_artist(Polygon(outline, closed=True, fill=False, edgecolor="#b4b8bd", lw=0.5, ls=":", zorder=1.1))
 
 
 def break_off(axes: Axes, across_nm: float, bottom_nm: float, tooth_nm: float, unit: Unit) -> None:
@@ -66,11 +66,11 @@ def break_off(axes: Axes, across_nm: float, bottom_nm: float, tooth_nm: float, u
     s = np.linspace(0.0, across_nm, teeth + 1)
     high = bottom_nm + tooth_nm * np.where(np.arange(teeth + 1) % 2, 1.0, 0.15)
     under = np.concatenate([np.column_stack([s, high]), [[across_nm, bottom_nm], [0.0, bottom_nm]]])
-    axes.add_patch(Polygon(under / unit.nm, closed=True, facecolor="white", edgecolor="none", zorder=3))
+    axes.add_artist(Polygon(under / unit.nm, closed=True, facecolor="white", edgecolor="none", zorder=3))
     axes.plot(s / unit.nm, high / unit.nm, color="#333333", lw=0.9, zorder=3.1, clip_on=False)
 
 
-def halo(width: float = 2.5) -> list[object]:
+def halo(width: float = 2.5) -> list[Any]:
     """A white rim around letters and lines, so that they read on any ground."""
     from matplotlib.patheffects import withStroke
 
@@ -99,10 +99,11 @@ def legend(
         size = (_SWATCH[0] / across, _SWATCH[1] / up)
         if name in look:
             own = look[name]
-            for more in (
+            ways: tuple[dict[str, Any], ...] = (
                 {"facecolor": own.face, "edgecolor": own.ink, "hatch": own.hatch, "lw": 0.0},
                 {"fill": False, "edgecolor": "#444444", "lw": 0.7},
-            ):
+            )
+            for more in ways:
                 figure.add_artist(Rectangle(low, *size, transform=figure.transFigure, **more))
         else:
             at = [low[0], low[0] + size[0]], [low[1] + 0.5 * size[1]] * 2
@@ -110,7 +111,7 @@ def legend(
         write(figure, x + _SWATCH[0] + 7.0, top + y, name, _LEGEND_SIZE)
 
 
-LINES: dict[str, dict[str, object]] = {
+LINES: dict[str, dict[str, Any]] = {
     "goal": {"color": GOAL, "lw": 1.8, "ls": (0, (5, 2))},
     "earlier surfaces": {"color": "#55595e", "lw": 0.8},
     "the surface": {"color": "black", "lw": 1.6},

@@ -77,13 +77,14 @@ class Piece:
 
 
 def busiest_cut(region: RegionColumns, cell: tuple[float, float], wanted: Iterable[int] = ()) -> Cut:
-    """The line through a column's centre that meets the most of the wanted columns, then the most columns at all."""
+    """The line through a column's centre that meets a wanted column, the most features, then the most columns."""
     goal = set(wanted)
     lines = [cut for x, y in region.centre_nm.tolist() for cut in (Cut("y", y), Cut("x", x))]
 
-    def worth(cut: Cut) -> tuple[int, int, int]:
+    def worth(cut: Cut) -> tuple[int, int, int, int]:
         met = columns_along(region, cell, cut)
-        return int(bool(met & goal)), len(met), -lines.index(cut)
+        features = set(region.feature[sorted(met)].ravel().tolist())
+        return int(bool(met & goal)), len(features), len(met), -lines.index(cut)
 
     return max(lines, key=worth)
 
@@ -184,4 +185,14 @@ def _touch(one: tuple[Array, Array, Array], other: tuple[Array, Array, Array]) -
 
 def _piece(key: Key, parts: Sequence[tuple[Array, Array, Array]]) -> Piece:
     s, top, floor = (np.concatenate(rows) for rows in zip(*parts, strict=True))
-    return Piece(*key, s, top, floor)
+    keep = _bends(s, top) | _bends(s, floor)
+    return Piece(*key, s[keep], top[keep], floor[keep])
+
+
+def _bends(s: Array, height: Array) -> NDArray[np.bool_]:
+    """Where a line is not straight: its ends, its kinks, its steps."""
+    keep = np.ones(len(s), dtype=bool)
+    left, right = np.diff(s)[:-1], np.diff(s)[1:]
+    rise = np.diff(height)
+    keep[1:-1] = (left <= 0.0) | (right <= 0.0) | (np.abs(rise[:-1] * right - rise[1:] * left) > 1e-6 * (left + right))
+    return keep

@@ -10,8 +10,8 @@ from stackmill.errors import UsageError
 from stackmill.frozen import frozen
 from stackmill.jobs import Job
 from stackmill.relief.gridding import Cut, columns_along
-from stackmill.report.plots.canvas import WIDTH_PX, Scale, Unit, blank, fitted, look, panel, text_px, unit_for, write
-from stackmill.report.plots.goals import GoalLevel, goal_in_words, goal_levels
+from stackmill.report.plots.canvas import WIDTH_PX, Scale, Unit, blank, fitted, look, panel, unit_for, write
+from stackmill.report.plots.goals import GoalLevel, goal_in_words, goal_levels, mark_goal
 from stackmill.report.plots.names import (
     View,
     feature_places,
@@ -20,7 +20,8 @@ from stackmill.report.plots.names import (
     write_features,
     write_layers,
 )
-from stackmill.report.plots.paint import GOAL, break_off, frame, halo, job_styles, legend, legend_height, paint
+from stackmill.report.plots.paint import break_off, frame, job_styles, legend, legend_height, paint
+from stackmill.report.plots.palette import Style
 from stackmill.report.plots.slices import Piece, Slice, busiest_cut, pieces, region_slices
 from stackmill.report.words import length
 from stackmill.timing.plan import Ground, ground
@@ -97,9 +98,9 @@ def _drawn(job: Job, shown: list[Sectioned]) -> Figure:
     unit = unit_for(max(high - low, across))
     abreast = min(len(shown), _ABREAST)
     lines = -(-len(shown) // abreast)
-    slot = (WIDTH_PX - 2 * _MARGIN) / abreast
     sides = [side_width(_all_names(job, one)) for one in shown]
-    room = max(slot - _LEFT - max(sides), _NARROWEST)
+    aside = [sum(sides[k : k + abreast]) for k in range(0, len(sides), abreast)]
+    room = max((WIDTH_PX - 2 * _MARGIN - max(aside)) / abreast - _LEFT, _NARROWEST)
     layers = max(len({piece.layer for piece in one.pieces}) for one in shown)
     scale = fitted(across, high - low, room, _TALLEST, max(_LEAST, _LINE_PX * layers))
     tall = scale.up_px_per_nm * (high - low)
@@ -110,11 +111,13 @@ def _drawn(job: Job, shown: list[Sectioned]) -> Figure:
     figure = blank(WIDTH_PX, _MARGIN + 36.0 + lines * row + under)
     write(figure, _MARGIN, _MARGIN + 10.0, job.title, 12.0, bold=True)
     write(figure, _MARGIN, _MARGIN + 31.0, _caption(job, scale), 9.0, color="#333333")
+    left = _MARGIN
     for k, one in enumerate(shown):
         wide = scale.px_per_nm * one.across_nm(job)
-        left = _MARGIN + (k % abreast) * slot + _LEFT + 0.5 * max(slot - _LEFT - sides[k] - wide, 0.0)
+        left = _MARGIN + _LEFT if k % abreast == 0 else left + _LEFT
         place = (left, _MARGIN + 36.0 + (k // abreast) * row + _TITLE)
         _panel(figure, job, one, View(one.across_nm(job), low, high, wide, tall), place, unit, first=k % abreast == 0)
+        left += room + sides[k]
     legend(figure, _MARGIN + 36.0 + lines * row, _MARGIN, WIDTH_PX - _MARGIN, styles, extra)
     return figure
 
@@ -125,10 +128,14 @@ def _all_names(job: Job, one: Sectioned) -> dict[int, str]:
     for number, (layer, name) in enumerate(job.column_map.features):
         if any(piece.feature == number for piece in one.pieces) and len(one.slices) > 1:
             beside[layer] = f"{beside[layer]}, {name}" if layer in beside else name
-    return layer_names(job, one.pieces, beside=beside, sizes=True)
+    return layer_names(job, one.pieces, beside=beside, sizes=True, goal=_goal_layer(job, one))
 
 
-def _styles_met(job: Job, shown: list[Sectioned]) -> dict:
+def _goal_layer(job: Job, one: Sectioned) -> int | None:
+    return job.column_map.layers.index(job.goal.layer) if job.goal and one.goal else None
+
+
+def _styles_met(job: Job, shown: list[Sectioned]) -> dict[str, Style]:
     names, every = job.column_map.materials, job_styles(job)
     met = {piece.material for one in shown for piece in one.pieces}
     return {name: every[name] for k, name in enumerate(names) if k in met}
@@ -152,9 +159,10 @@ def _panel(
     break_off(axes, view.across_nm, view.low_nm, 7.0 / view.up_px_per_nm, unit)
     inside, beside = feature_places(job, view, one.pieces)
     write_features(axes, inside, names, every, unit)
-    goal = job.column_map.layers.index(job.goal.layer) if job.goal and one.goal else None
-    write_layers(axes, view, one.pieces, layer_names(job, one.pieces, beside=beside, sizes=True), goal, unit)
-    mark_goal(axes, one.slices, one.goal, unit)
+    goal = _goal_layer(job, one)
+    beside_it = layer_names(job, one.pieces, beside=beside, sizes=True, goal=goal)
+    write_layers(axes, view, one.pieces, beside_it, goal, unit)
+    mark_goal(axes, job, one.slices, one.goal, unit)
     region = job.column_map.regions[one.region]
     left, top = place
     write(figure, left - 40.0, top - 44.0, region.name, 11.0, bold=True)
@@ -162,18 +170,6 @@ def _panel(
     note = _unmet(job, one)
     if note:
         write(figure, left - 40.0, top - 10.0, note, 8.0, color="#555555", style="italic")
-
-
-def mark_goal(axes: object, slices: tuple[Slice, ...], levels: dict[int, GoalLevel], unit: Unit) -> None:
-    """The goal's upper level over the columns it is wanted in, and its band where it is one."""
-    for one in slices:
-        if one.column not in levels:
-            continue
-        level, s = levels[one.column], one.s_nm[[0, -1]] / unit.nm
-        axes.plot(  # type: ignore[attr-defined]
-            s, [level.upper_nm / unit.nm] * 2, color=GOAL, lw=1.8, ls=(0, (5, 2)), zorder=7,
-            path_effects=halo(3.4), solid_capstyle="butt",
-        )  # fmt: skip
 
 
 def _unmet(job: Job, one: Sectioned) -> str:
