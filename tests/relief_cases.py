@@ -8,6 +8,7 @@ here.
 
 from __future__ import annotations
 
+import functools
 from collections.abc import Callable, Sequence
 
 import numpy as np
@@ -58,6 +59,11 @@ def swinging(low_deg: float, high_deg: float) -> Light:
 
 def table_of(light: Light, shapes: Sequence[Shape] = SHAPES, flat: Array = FLAT) -> SlopeTable:
     """A table whose flat ground falls at Y(tilt) cos(tilt) times `flat` at the mean tilt of the light."""
+    return _table(light, tuple(shapes), tuple(flat.tolist()))
+
+
+@functools.cache
+def _table(light: Light, shapes: tuple[Shape, ...], flat: tuple[float, ...]) -> SlopeTable:
     tilt = 0.5 * (light.low_rad + light.high_rad)
     falls = [v * float(shape.ratio(np.array(tilt))) * np.cos(tilt) for v, shape in zip(flat, shapes, strict=True)]
     return slope_table(light, shapes, np.array(falls))

@@ -20,7 +20,7 @@ from stackmill.relief.terrain import Surface, Terrain
 
 Array = NDArray[np.float64]
 
-_HAIR_NM = 1e-9
+_HAIR_NM, _STRAIGHT = 1e-9, 1e-9
 
 
 def _compiled(function: Any) -> Any:
@@ -329,6 +329,8 @@ def _at_size(speed, m, square):
 @_compiled
 def _cell_flux(speed, extremum, extreme, m, back_y, ahead_y, back_x, ahead_x):
     valley_y, valley_x = back_y <= ahead_y, back_x <= ahead_x
+    straight_y, straight_x = abs(ahead_y - back_y) <= _STRAIGHT, abs(ahead_x - back_x) <= _STRAIGHT
+    valley_y, valley_x = valley_x if straight_y else valley_y, valley_y if straight_x else valley_x
     yy, zy, xx, zx = back_y * back_y, ahead_y * ahead_y, back_x * back_x, ahead_x * ahead_x
     least_y, most_y = 0.0 if back_y * ahead_y <= 0.0 else min(yy, zy), max(yy, zy)
     least_x, most_x = 0.0 if back_x * ahead_x <= 0.0 else min(xx, zx), max(xx, zx)
@@ -364,9 +366,9 @@ def _direct_speed(facet, m, slope_y, slope_x, toward_y, toward_x, sine, cosine):
 @_compiled
 def _march(ground, rows, points, toward, shift, drop, before, bit, dark, edge, above):
     """Carry the shadow's edge away from the light, row by row; set a bit where a point lies under it."""
-    whole = math.floor(shift)
-    part = shift - whole
-    pad = 2 + abs(whole)
+    way, whole = (1 if shift >= 0.0 else -1), int(abs(shift))
+    part = abs(shift) - whole
+    pad = 2 + whole
     for i in range(points):
         edge[i] = -np.inf
     for k in range(-before, rows):
@@ -381,8 +383,8 @@ def _march(ground, rows, points, toward, shift, drop, before, bit, dark, edge, a
             above[i] = above[points + i]
             above[pad + points + i] = above[pad + i]
         for i in range(points):
-            at = pad + i + whole
-            edge[i] = (1.0 - part) * above[at] + part * above[at + 1] - drop
+            at = pad + i + way * whole
+            edge[i] = (1.0 - part) * above[at] + part * above[at + way] - drop
         if k >= 0:
             base = here * points
             for i in range(points):
@@ -401,18 +403,19 @@ def _shadows(height, turned, ny, nx, step_y, step_x, reach, count, bearing, dark
     dark[:] = 0
     dark_turned[:] = 0
     off = ((0.5 + count * GOLDEN) % 1.0) * (2.0 * math.pi / AZIMUTHS)
+    c, s = math.cos(off), math.sin(off)
+    toward = ((c, s), (c, -s), (s, c), (-s, c), (-c, s), (-c, -s), (s, -c), (-s, -c))
     for a in range(AZIMUTHS):
-        angle = 0.5 * math.pi * (a // 2) + (off if a % 2 == 0 else -off)
-        x, y = math.cos(angle), math.sin(angle)
+        x, y = toward[a]
         bearing[a, 0], bearing[a, 1] = x, y
         bit = np.uint8(1 << a)
         if abs(x) * step_y >= abs(y) * step_x:
             drop = step_x / abs(x) / reach
-            before = min(nx, math.ceil((highest - lowest) / drop) + 1)
+            before = 2 * math.ceil((highest - lowest) / drop)
             _march(turned, nx, ny, x, y / abs(x) * step_x / step_y, drop, before, bit, dark_turned, edge, above)
         else:
             drop = step_y / abs(y) / reach
-            before = min(ny, math.ceil((highest - lowest) / drop) + 1)
+            before = 2 * math.ceil((highest - lowest) / drop)
             _march(height, ny, nx, y, x / abs(y) * step_y / step_x, drop, before, bit, dark, edge, above)
     for j in range(ny):
         for i in range(nx):

@@ -28,6 +28,7 @@ SADDLE_SAMPLES = 5  # of one axis' slopes where the surface is a saddle; the oth
 AZIMUTHS = 8  # of the light in a cell, turned a little each step
 GOLDEN = 0.6180339887498949  # the golden ratio's turn, which fills a range evenly
 _HAIR_NM = 1e-9
+_STRAIGHT = 1e-9  # slopes either side that differ by less do not open at all
 
 
 @frozen
@@ -196,10 +197,12 @@ def _over_range(table: SlopeTable, material: Index, low: Array, high: Array, *, 
 def cell_flux(table: SlopeTable, material: Index, back: list[Array], ahead: list[Array]) -> Array:
     """Godunov's flux of a cell under a turning sample, whose speed depends on the size of the slope alone (P,).
 
-    Where both axes open the same way, the slopes' sizes fill one range. At a saddle the axis that opens upwards
-    is sampled and the other taken whole.
+    Where both axes open the same way, the slopes' sizes fill one range; an axis that is straight goes with the
+    other. At a saddle the axis that opens upwards is sampled and the other taken whole.
     """
     valley = [b <= a for b, a in zip(back, ahead, strict=True)]
+    straight = [np.abs(a - b) <= _STRAIGHT for b, a in zip(back, ahead, strict=True)]
+    valley = [np.where(straight[0], valley[1], valley[0]), np.where(straight[1], valley[0], valley[1])]
     least, most = zip(*(_squares(b, a) for b, a in zip(back, ahead, strict=True)), strict=True)
     low, high = np.sqrt(least[0] + least[1]), np.sqrt(most[0] + most[1])
     flux = _over_range(table, material, low, high, valley=valley[0])
@@ -317,8 +320,8 @@ def bearings(step: int) -> Array:
     Pairs either side of each axis, so that mirrored and turned ground stays so; the steps fill the circle evenly.
     """
     off = ((0.5 + step * GOLDEN) % 1.0) * (2.0 * np.pi / AZIMUTHS)
-    axes = 0.5 * np.pi * np.arange(AZIMUTHS // 2)
-    return np.array([(np.cos(a), np.sin(a)) for axis in axes for a in (axis + off, axis - off)])
+    c, s = np.cos(off), np.sin(off)  # taken once, so that pairs are alike to the last digit
+    return np.array([(c, s), (c, -s), (s, c), (-s, c), (-c, s), (-c, -s), (s, -c), (-s, -c)])
 
 
 def in_shadow(height: Array, step_nm: tuple[float, float], bearing: Array, reach: float) -> NDArray[np.bool_]:
@@ -334,15 +337,15 @@ def in_shadow(height: Array, step_nm: tuple[float, float], bearing: Array, reach
         ground = ground[::-1]  # the light comes from greater rows: go from there
     shift = across / abs(toward) * row_step / point_step  # towards the light, in points
     drop = row_step / abs(toward) / reach
-    whole = int(np.floor(shift))
-    part = shift - whole
+    way, whole = (1 if shift >= 0.0 else -1), int(abs(shift))
+    part = abs(shift) - whole
     edge = np.full(ground.shape[1], -np.inf)
     dark = np.zeros(ground.shape, dtype=np.bool_)
     rows = len(ground)
-    before = min(rows, int(np.ceil(float(np.ptp(ground)) / drop)) + 1)
+    before = 2 * int(np.ceil(float(np.ptp(ground)) / drop))  # as far as a shadow reaches, and again for its blur
     for k in range(-before, rows):
         above = np.maximum(ground[(k - 1) % rows], edge)
-        edge = (1.0 - part) * np.roll(above, -whole) + part * np.roll(above, -whole - 1) - drop
+        edge = (1.0 - part) * np.roll(above, -way * whole) + part * np.roll(above, -way * (whole + 1)) - drop
         if k >= 0:
             dark[k] = ground[k] < edge - _HAIR_NM
     if toward > 0.0:

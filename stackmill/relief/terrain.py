@@ -71,7 +71,7 @@ def untouched(terrain: Terrain) -> Surface:
     """The surface before anything is done to it."""
     segments = terrain.floor_nm.shape[1]
     return Surface(
-        terrain.top_nm[terrain.column].astype(np.float64),
+        np.ascontiguousarray(terrain.top_nm[terrain.column], dtype=np.float64),
         np.zeros(terrain.column.shape, dtype=np.intp),
         np.full((*terrain.column.shape, segments), np.inf),
     )

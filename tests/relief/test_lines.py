@@ -142,7 +142,7 @@ def settling_s(table, slope, half):
     return float(np.max((slope - slopes) * half / (speed_of(table, 0)(slope) - table.speed_at(0, slopes))))
 
 
-def settled_over_exact(backend, pair, tilt, *, shadow, per_half=16, half=60.0):
+def settled_over_exact(backend, pair, tilt, *, shadow, per_half=12, half=60.0):
     """Height of the line's middle over the last point of the fill, as a multiple of the roof's."""
     table = of_library(pair, tilt)
     slope = keeping_up(table, 0, 1)

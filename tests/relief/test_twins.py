@@ -44,7 +44,7 @@ LIGHTS = {
 IN_CELLS = ["0", "45", "60", "75"]
 
 
-def both(terrain, light, *, fall=0.6, second_order, shadow):
+def both(terrain, light, *, fall=0.45, second_order, shadow):
     table = table_of(LIGHTS[light])
     settings = {"second_order": second_order, "shadow": shadow}
     time = fall / flat_speed(table, OX)
@@ -67,7 +67,7 @@ def check(surfaces, within):
 @pytest.mark.parametrize("second_order", ORDERS)
 @pytest.mark.parametrize("light", LIGHTS)
 def test_sections_without_shadow(light, second_order):
-    terrain = ground(line_plan(60, 20), 0.03, STACKS)
+    terrain = ground(line_plan(42, 14), 0.03, STACKS)
     check(both(terrain, light, second_order=second_order, shadow=False), 1e-12)
 
 
@@ -75,7 +75,7 @@ def test_sections_without_shadow(light, second_order):
 @pytest.mark.parametrize("second_order", ORDERS)
 @pytest.mark.parametrize("light", LIGHTS)
 def test_sections_in_shadow(light, second_order):
-    terrain = ground(line_plan(60, 20), 0.03, STACKS)
+    terrain = ground(line_plan(42, 14), 0.03, STACKS)
     within = 1e-3 if "still" in light else 1e-11
     check(both(terrain, light, second_order=second_order, shadow=True), within)
 
@@ -85,15 +85,15 @@ def test_sections_in_shadow(light, second_order):
 @pytest.mark.parametrize("light", IN_CELLS)
 @pytest.mark.parametrize("shadow", [False, True])
 def test_cells(light, second_order, shadow):
-    terrain = ground(disc_plan(22, 6.0), (0.05, 0.045), STACKS)
-    surfaces = both(terrain, light, fall=0.5, second_order=second_order, shadow=shadow)
+    terrain = ground(disc_plan(18, 5.0), (0.05, 0.045), STACKS)
+    surfaces = both(terrain, light, fall=0.45, second_order=second_order, shadow=shadow)
     check(surfaces, 1e-3 if shadow and light != "0" else 1e-12)
 
 
 @pytest.mark.independent
 @pytest.mark.parametrize("light", LIGHTS)
 def test_sections_whose_walls_are_upright_from_the_start(light):
-    terrain = ground(line_plan(60, 20), 0.03, STACKS, [0.0, 0.4])
+    terrain = ground(line_plan(42, 14), 0.03, STACKS, [0.0, 0.4])
     check(both(terrain, light, second_order=False, shadow=True), 1e-3 if "still" in light else 1e-11)
 
 

@@ -30,15 +30,15 @@ def step_at(relief: Relief, time_s: float) -> Beam | None:
     """The beam step that is in force at a moment, or was last; None where the region is covered then."""
     recipe = relief.job.recipe.steps
     name = relief.job.column_map.regions[relief.region].name
-    spans, covered, found = relief.ensemble.best.spans, False, None
+    spans, covered, milled, found = relief.ensemble.best.spans, False, False, None
     for step, lowering, span in zip(recipe, relief.ensemble.best_steps, spans, strict=False):
-        if found is not None and float(span.start_s[0]) >= time_s:
+        if milled and float(span.start_s[0]) >= time_s:
             break
         if isinstance(step, Cover | Uncover):
             named = step.cover if isinstance(step, Cover) else step.uncover
             covered = isinstance(step, Cover) if name in named else covered
         elif isinstance(step, Beam) and isinstance(lowering, Lowering):
-            found = None if covered else step
+            milled, found = True, None if covered else step
     return found
 
 

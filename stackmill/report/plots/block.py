@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 
 from stackmill.planning.relief import Relief
 from stackmill.relief.evolve import Frame
+from stackmill.relief.measure import FLUSH_NM
 from stackmill.report.plots.canvas import DPI
 from stackmill.report.plots.palette import Style
 from stackmill.report.plots.slices import Piece, pieces, terrain_slices
@@ -79,7 +80,7 @@ def _axes(
 def _exaggeration(relief_nm: float, across_nm: float) -> float:
     """The least of round numbers that makes the relief show, without making the block a tower."""
     best = 1.0
-    for times in _TIMES:
+    for times in _TIMES if relief_nm >= FLUSH_NM else ():
         if times * relief_nm > _MOST * across_nm:
             break
         best = times
@@ -136,7 +137,7 @@ def _light(faces: Array) -> Array:
 
 def _sides(axes: Any, relief: Relief, at: Frame, low: float, look: Mapping[str, Style]) -> set[int]:
     """The two near sides, cut open: y at its start, x at its end; gives the materials that they show."""
-    from mpl_toolkits.mplot3d.art3d import Poly3DCollection  # type: ignore[import-untyped]
+    from mpl_toolkits.mplot3d.art3d import Poly3DCollection
 
     job, terrain = relief.job, relief.run.terrain
     region, names = job.column_map.regions[relief.region], job.column_map.materials

@@ -67,6 +67,22 @@ def write(
     figure.text(x / across, 1.0 - y / up, text, fontsize=size, fontweight=weight, ha=ha, va="center", **more)
 
 
+def write_within(
+    figure: Figure, x: float, y: float, text: str, size: float, room: float, *, bold: bool = False, **more: Any
+) -> None:
+    """A line of text that stays within a width (px): smaller where it is long, and cut where it is far too long."""
+    wide = text_px(text, size, bold)[0]
+    size = max(size * min(1.0, room / wide), min(size, 8.0)) if wide > 0.0 else size
+    while len(text) > 4 and text_px(text, size, bold)[0] > room:
+        text = text[:-4].rstrip() + "..."
+    write(figure, x, y, text, size, bold=bold, **more)
+
+
+def short(text: str, most: int = 32) -> str:
+    """A name as a picture has room for it."""
+    return text if len(text) <= most else text[: most - 3].rstrip() + "..."
+
+
 @cache
 def text_px(text: str, size: float, bold: bool = False) -> tuple[float, float]:
     """How wide and high (px) a line of text is; the widest of several lines, all their heights."""

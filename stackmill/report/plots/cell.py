@@ -13,7 +13,7 @@ from stackmill.relief.evolve import Frame
 from stackmill.relief.measure import FLUSH_NM, Standing, footprints
 from stackmill.report.plots.beam import beam_in_words, step_at
 from stackmill.report.plots.block import draw_block
-from stackmill.report.plots.canvas import WIDTH_PX, Unit, blank, look, panel, text_px, unit_for, write
+from stackmill.report.plots.canvas import WIDTH_PX, Unit, blank, look, panel, text_px, unit_for, write, write_within
 from stackmill.report.plots.paint import halo, job_styles, legend, legend_height
 from stackmill.report.words import percent
 from stackmill.units import format_time
@@ -29,6 +29,7 @@ _MAP_PX, _BAR_PX, _BLOCK_PX, _UNDER = 520.0, 18.0, 610.0, 56.0
 _SHADE = 0.35
 _SUN = (-1.0, 1.0, 1.6)  # from the upper left of the map
 _NAME_SIZE = 8.0
+_CLEAR_PX = 12.0
 _SHARED_PX = 400.0  # how far off its middle a name goes to lie in one outline less
 
 
@@ -59,8 +60,9 @@ def _drawn(relief: Relief, number: int) -> Figure:
     box = (WIDTH_PX - _BLOCK_PX - 2.0 * _MARGIN, _TOP + 6.0, _BLOCK_PX, tall)
     times, met = draw_block(figure, relief, at, box, every)
     styles = {name: every[name] for k, name in enumerate(names) if k in met}
-    write(figure, _MARGIN, _MARGIN + 10.0, job.title, 12.0, bold=True)
-    write(figure, _MARGIN, _MARGIN + 31.0, _caption(relief, number), 9.0, color="#333333")
+    room = WIDTH_PX - 2.0 * _MARGIN
+    write_within(figure, _MARGIN, _MARGIN + 10.0, job.title, 12.0, room, bold=True)
+    write_within(figure, _MARGIN, _MARGIN + 31.0, _caption(relief, number), 9.0, room, color="#333333")
     unit = unit_for(max(wide, deep))
     axes = panel(figure, _LEFT + _MARGIN, _TOP, width, height)
     shown = _map(axes, relief, at, unit)
@@ -131,7 +133,7 @@ def _outlines(axes: Axes, relief: Relief, at: Frame, unit: Unit) -> None:
     wanted: list[tuple[str, NDArray[np.bool_]]] = []
     for one in footprints(job.column_map.regions[relief.region], terrain, job.column_map.features):
         standing = rows.get(one.feature)
-        if standing is None or (standing.state == "gone" and standing.kind == "flush"):
+        if standing is None or standing.overshadowed or (standing.state == "gone" and standing.kind == "flush"):
             continue
         dashes = "solid" if standing.state == "showing" else (0, (4, 2)) if standing.state == "gone" else "dotted"
         drawn = axes.contour(
@@ -160,7 +162,7 @@ def _names(axes: Axes, wanted: list[tuple[str, NDArray[np.bool_]]], x: Array, y:
     shared = np.sum([points for _, points in wanted], axis=0)
     for text, points in sorted(wanted, key=lambda one: int(one[1].sum())):
         half = 0.5 * text_px(text, _NAME_SIZE)[0] + 5.0
-        rows, columns = np.nonzero(points)
+        rows, columns = np.nonzero(_inner(points, round(_CLEAR_PX / float((x[1] - x[0]) * px))))
         at = np.column_stack([x[columns] * px, y[rows] * py])
         at[:, 0] = np.clip(at[:, 0], half, float(x[-1] + x[0]) * px - half)
         at[:, 1] = np.clip(at[:, 1], 10.0, float(y[-1] + y[0]) * py - 10.0)
@@ -176,3 +178,16 @@ def _names(axes: Axes, wanted: list[tuple[str, NDArray[np.bool_]]], x: Array, y:
             at[best, 0] / px, at[best, 1] / py, text, fontsize=_NAME_SIZE, ha="center", va="center", zorder=5,
             path_effects=halo(3.0),
         )  # fmt: skip
+
+
+def _inner(points: NDArray[np.bool_], by: int) -> NDArray[np.bool_]:
+    """Points at least so many off the outline, as far as there are any."""
+    inner = points
+    for _ in range(by):
+        less = inner.copy()
+        for axis in (0, 1):
+            less &= np.roll(inner, 1, axis=axis) & np.roll(inner, -1, axis=axis)
+        if not less.any():
+            break
+        inner = less
+    return inner

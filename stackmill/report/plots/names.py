@@ -5,9 +5,11 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from typing import TYPE_CHECKING
 
+import numpy as np
+
 from stackmill.frozen import frozen
 from stackmill.jobs import Job
-from stackmill.report.plots.canvas import Unit, text_px
+from stackmill.report.plots.canvas import Unit, short, text_px
 from stackmill.report.plots.labels import spread
 from stackmill.report.plots.paint import FAINT, GOAL, halo
 from stackmill.report.plots.palette import Style
@@ -51,7 +53,7 @@ def layer_names(
     found = {}
     for k in sorted({piece.layer for piece in pieces}):
         layer = job.stack.layers[k]
-        name = f"{layer.name} / {beside[k]}" if k in beside else layer.name
+        name = short(f"{layer.name} / {beside[k]}" if k in beside else layer.name)
         thick = layer.thickness.value
         text = f"{name}  {length(thick)}" if sizes and thick < _SUBSTRATE_SHOWN else name
         found[k] = f"{text}  (goal)" if k == goal else text
@@ -69,7 +71,7 @@ def write_layers(
 ) -> None:
     """Names of layers at the right, each with a leader to where the layer ends there."""
     met = {piece.layer for piece in pieces if piece.top_nm.max() > view.low_nm and piece.floor_nm.min() < view.high_nm}
-    found = sorted(met & set(names), reverse=True)
+    found = sorted(_most_important(view, pieces, met & set(names), goal), reverse=True)
     at = [_anchor(view, [piece for piece in pieces if piece.layer == k]) for k in found]
     wanted = [(height - view.low_nm) * view.up_px_per_nm for _, height in at]
     places = spread(wanted, [_LINE_PX] * len(found), -6.0, view.height_px + 10.0)
@@ -87,6 +89,17 @@ def write_layers(
             fontsize=SIZE, va="center", ha="left", clip_on=False,
             color=GOAL if k == goal else "black", fontweight="bold" if k == goal else "normal",
         )  # fmt: skip
+
+
+def _most_important(view: View, pieces: Sequence[Piece], layers: set[int], goal: int | None) -> list[int]:
+    """The layers there is room to name: the goal's, then the thickest."""
+    thick = dict.fromkeys(layers, 0.0)
+    for piece in pieces:
+        if piece.layer in thick:
+            shown = np.minimum(piece.top_nm, view.high_nm) - np.maximum(piece.floor_nm, view.low_nm)
+            thick[piece.layer] = max(thick[piece.layer], float(shown.max()))
+    order = sorted(layers, key=lambda k: (k != goal, -thick[k], k))
+    return order[: max(int((view.height_px + 16.0) / _LINE_PX), 1)]
 
 
 def _anchor(view: View, own: Sequence[Piece]) -> tuple[float, float]:

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from stackmill.jobs import Job
-from stackmill.report.plots.canvas import DPI, Unit, text_px, write
+from stackmill.report.plots.canvas import DPI, Unit, short, text_px, write
 from stackmill.report.plots.palette import Style, styles
 from stackmill.report.plots.slices import Piece
 
@@ -108,7 +108,7 @@ def legend(
         else:
             at = [low[0], low[0] + size[0]], [low[1] + 0.5 * size[1]] * 2
             figure.add_artist(Line2D(*at, transform=figure.transFigure, **LINES[name]))
-        write(figure, x + _SWATCH[0] + 7.0, top + y, name, _LEGEND_SIZE)
+        write(figure, x + _SWATCH[0] + 7.0, top + y, short(name), _LEGEND_SIZE)
 
 
 LINES: dict[str, dict[str, Any]] = {
@@ -129,7 +129,7 @@ def _laid_out(names: Sequence[str], left: float, right: float) -> list[tuple[str
     """Name, x and y (px) of each entry."""
     placed, x, y = [], left, 0.5 * _LEGEND_ROW
     for name in names:
-        wide = _SWATCH[0] + 7.0 + text_px(name, _LEGEND_SIZE)[0] + 26.0
+        wide = _SWATCH[0] + 7.0 + text_px(short(name), _LEGEND_SIZE)[0] + 26.0
         if x > left and x + wide > right:
             x, y = left, y + _LEGEND_ROW
         placed.append((name, x, y))

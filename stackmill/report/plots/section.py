@@ -9,16 +9,24 @@ import numpy as np
 from numpy.typing import NDArray
 
 from stackmill.errors import NoAnswerError, UsageError
-from stackmill.frozen import frozen
 from stackmill.planning.relief import Relief
 from stackmill.relief.evolve import Frame
-from stackmill.relief.measure import FLUSH_NM, Standing, footprints
 from stackmill.report.plots.beam import ROOM_PX, beam_in_words, draw_beam, step_at
-from stackmill.report.plots.canvas import WIDTH_PX, Scale, Unit, blank, fitted, look, panel, text_px, unit_for, write
-from stackmill.report.plots.goals import GoalLevel, goal_in_words, goal_levels, mark_goal
-from stackmill.report.plots.labels import rows
+from stackmill.report.plots.canvas import (
+    WIDTH_PX,
+    Scale,
+    Unit,
+    blank,
+    fitted,
+    look,
+    panel,
+    text_px,
+    unit_for,
+    write,
+    write_within,
+)
+from stackmill.report.plots.goals import goal_in_words, mark_goal
 from stackmill.report.plots.names import (
-    SIZE,
     View,
     feature_places,
     layer_names,
@@ -26,9 +34,11 @@ from stackmill.report.plots.names import (
     write_features,
     write_layers,
 )
-from stackmill.report.plots.paint import break_off, frame, halo, haunt, job_styles, legend, legend_height, paint
+from stackmill.report.plots.paint import break_off, frame, haunt, job_styles, legend, legend_height, paint
 from stackmill.report.plots.palette import Style
-from stackmill.report.plots.slices import Piece, Slice, pieces, terrain_slices
+from stackmill.report.plots.scene import Scene, chosen_of, scene_of
+from stackmill.report.plots.slices import Piece, pieces
+from stackmill.report.plots.standing import head_px, label_standing
 from stackmill.report.words import percent
 from stackmill.units import format_time
 
@@ -36,39 +46,11 @@ if TYPE_CHECKING:
     from matplotlib.axes import Axes
     from matplotlib.figure import Figure
 
-MOST = 4
-"""Panels in one picture."""
-
 _LEFT, _TITLE, _UNDER, _MARGIN, _HEADING, _GAP = 58.0, 62.0, 52.0, 18.0, 56.0, 16.0
 _TALLEST, _LEAST, _NARROW = 1240.0, 210.0, 0.27
-_LABEL_PX, _LEADER_PX = 13.0, 14.0
-_HEAD_PX = ROOM_PX + _LEADER_PX + 2.0 * _LABEL_PX
-_UNDER_SURFACE, _SUBSTRATE = 0.3, 0.09
+_HEAD_PX = ROOM_PX + 40.0
 _ONE_ROW, _TITLE_PX, _NARROWEST_PX = 1.35, 300.0, 860.0
 _EARLIER = 8
-_SAME_PX = 25.0
-
-
-@frozen
-class Scene:
-    """What all panels share.
-
-    relief; slices and pieces before milling; step_nm between points; goal: its levels; window (F, 2): lowest and
-    highest height shown by each panel (nm); common: whether all show the same.
-    """
-
-    relief: Relief
-    slices: tuple[Slice, ...]
-    pieces: tuple[Piece, ...]
-    step_nm: float
-    goal: dict[int, GoalLevel]
-    window: NDArray[np.float64]
-    common: bool
-
-    @property
-    def across_nm(self) -> float:
-        """The length of the section."""
-        return float(self.slices[-1].s_nm[-1])
 
 
 def draw_section(relief: Relief) -> Figure:
@@ -80,37 +62,9 @@ def draw_section(relief: Relief) -> Figure:
         raise UsageError("the whole cell was run: it has no section to draw", cure="draw the cell, or run a section")
     if not relief.run.frames:
         raise NoAnswerError("the run was stopped before the first moment asked for: there is nothing to draw")
-    chosen = _chosen(len(relief.run.frames))
+    chosen = chosen_of(len(relief.run.frames))
     with look():
-        return _drawn(_scene(relief, chosen), chosen)
-
-
-def _chosen(count: int) -> list[int]:
-    """Which of the frames are drawn: all, or MOST of them from the first to the last."""
-    if count <= MOST:
-        return list(range(count))
-    return sorted({round(k * (count - 1) / (MOST - 1)) for k in range(MOST)})
-
-
-def _scene(relief: Relief, chosen: Sequence[int]) -> Scene:
-    terrain = relief.run.terrain
-    slices = terrain_slices(relief.job.column_map.regions[relief.region], terrain, row=0)
-    across, top = float(slices[-1].s_nm[-1]), float(terrain.top_nm.max())
-    floor = -_SUBSTRATE * max(top, 0.25 * across)
-    surfaces = [relief.run.frames[k].height_nm[0] for k in chosen]
-    lowest = np.array([float(one.min()) for one in surfaces])
-    low = max(lowest.min() - _UNDER_SURFACE * max(top - lowest.min(), 0.4 * across), floor)
-    low = floor if low < -0.8 * floor else low
-    common = top - low <= 2.4 * across
-    if common:
-        window = np.tile([low, top], (len(chosen), 1))
-    else:
-        tall = max(1.2 * across, 1.8 * max(float(np.ptp(one)) for one in surfaces))
-        start = np.maximum(lowest - _UNDER_SURFACE * tall, floor)
-        window = np.column_stack([start, start + tall])
-    goal = goal_levels(relief.job, relief.ensemble.best_ground, relief.region)
-    found = pieces(slices, bottom_nm=min(float(window.min()), 0.0))
-    return Scene(relief, tuple(slices), tuple(found), terrain.step_nm[1], goal, window, common)
+        return _drawn(scene_of(relief, chosen), chosen)
 
 
 def _drawn(scene: Scene, chosen: Sequence[int]) -> Figure:
@@ -120,7 +74,7 @@ def _drawn(scene: Scene, chosen: Sequence[int]) -> Figure:
     plans = [_plan(scene, n, abreast, up, side) for abreast in sorted({n, -(-n // 2), 1}, reverse=True)]
     abreast, scale = _best(plans)
     wide = scale.px_per_nm * scene.across_nm
-    tall = scale.up_px_per_nm * up + _head_px(scene, chosen, scale, up)
+    tall = scale.up_px_per_nm * up + head_px(scene, chosen, scale, up)
     lines, styles = -(-n // abreast), _styles_met(scene)
     extra = ["the surface", "earlier surfaces", "milled or stripped off", *(["goal"] if _goal_met(scene) else [])]
     caption = _caption(scene, scale, chosen)
@@ -132,8 +86,8 @@ def _drawn(scene: Scene, chosen: Sequence[int]) -> Figure:
     row = _TITLE + tall + _UNDER
     under = legend_height([*styles, *extra], _MARGIN, across - _MARGIN)
     figure = blank(across, _MARGIN + _HEADING + lines * row + under)
-    write(figure, _MARGIN, _MARGIN + 10.0, relief.job.title, 12.0, bold=True)
-    write(figure, _MARGIN, _MARGIN + 31.0, caption, 9.0, color="#333333")
+    write_within(figure, _MARGIN, _MARGIN + 10.0, relief.job.title, 12.0, across - 2.0 * _MARGIN, bold=True)
+    write_within(figure, _MARGIN, _MARGIN + 31.0, caption, 9.0, across - 2.0 * _MARGIN, color="#333333")
     unit = unit_for(max(scene.across_nm, float(scene.window.max())))
     for k, number in enumerate(chosen):
         left = _MARGIN + (k % abreast) * slot + _LEFT
@@ -141,7 +95,7 @@ def _drawn(scene: Scene, chosen: Sequence[int]) -> Figure:
         low = float(scene.window[k, 0])
         view = View(scene.across_nm, low, low + tall / scale.up_px_per_nm, wide, tall)
         named = not scene.common or k % abreast == abreast - 1 or k == n - 1
-        _panel(figure, scene, number, view, (left, top), unit, first=k % abreast == 0, named=named)
+        _panel(figure, scene, number, view, (left, top), unit, first=k % abreast == 0, named=named, room=slot - 14.0)
     legend(figure, _MARGIN + _HEADING + lines * row, _MARGIN, across - _MARGIN, styles, extra)
     return figure
 
@@ -153,21 +107,6 @@ def _plan(scene: Scene, n: int, abreast: int, up: float, side: float) -> tuple[i
     room = (WIDTH_PX - 2.0 * _MARGIN - aside) / abreast - _LEFT - _GAP
     high = _TALLEST / lines - _HEAD_PX - _TITLE - _UNDER
     return abreast, fitted(scene.across_nm, up, room, max(high, 60.0), min(_LEAST, _NARROW * room))
-
-
-def _head_px(scene: Scene, chosen: Sequence[int], scale: Scale, up: float) -> float:
-    """The room (px) over the window that labels and beam need."""
-    need = 4.0
-    for (low, high), number in zip(scene.window.tolist(), chosen, strict=True):
-        at = scene.relief.run.frames[number]
-        view = View(scene.across_nm, low, high, scale.px_per_nm * scene.across_nm, scale.up_px_per_nm * up)
-        blocks = _blocks(scene, at, view)
-        if blocks:
-            sizes = _sizes(blocks)
-            places = rows([s * view.px_per_nm for _, (s, _) in blocks], [one[0] for one in sizes], 2.0, view.width_px)
-            high_px = (max(row for row, _ in places) + 1) * max(one[1] for one in sizes) + _LEADER_PX
-            need = max(need, high_px - (low + up - float(at.height_nm.max())) * scale.up_px_per_nm)
-    return ROOM_PX + need
 
 
 def _best(plans: Sequence[tuple[int, Scale]]) -> tuple[int, Scale]:
@@ -225,6 +164,7 @@ def _panel(
     *,
     first: bool,
     named: bool,
+    room: float,
 ) -> None:
     job, at = scene.relief.job, scene.relief.run.frames[number]
     names, every = job.column_map.materials, job_styles(job)
@@ -247,19 +187,27 @@ def _panel(
     if named:
         goal = job.column_map.layers.index(job.goal.layer) if job.goal and _goal_met(scene) else None
         beside_it = layer_names(job, scene.pieces, beside=beside, sizes=False, goal=goal)
-        write_layers(axes, view, scene.pieces, beside_it, goal, unit)
+        write_layers(axes, _without_head(scene, view), scene.pieces, beside_it, goal, unit)
     step = step_at(scene.relief, at.time_s)
     if step is not None:
         draw_beam(axes, view, step, scene.relief, unit)
-    _label_standing(axes, scene, at, view, unit)
+    label_standing(axes, scene, at, view, unit)
     moment = scene.relief.moments[number]
     x, y = place[0] - 40.0, place[1]
     write(
         figure, x, y - 50.0, f"after {format_time(at.time_s)}" if at.time_s > 0.0 else "at the start", 11.0, bold=True
     )
-    write(figure, x, y - 32.0, beam_in_words(step), 8.5, color="#333333")
+    write_within(figure, x, y - 32.0, beam_in_words(step), 8.5, room, color="#333333")
     clear = "" if moment.clear_share is None else f", goal {percent(moment.clear_share)} clear"
     write(figure, x, y - 16.0, f"relief {moment.relief_nm:.0f} nm{clear}", 8.5, color="#333333")
+
+
+def _without_head(scene: Scene, view: View) -> View:
+    """The part of a panel under its head room, where all panels show the same."""
+    if not scene.common:
+        return view
+    high = float(scene.window[0, 1])
+    return View(view.across_nm, view.low_nm, high, view.width_px, (high - view.low_nm) * view.up_px_per_nm)
 
 
 def _surfaces(axes: Axes, scene: Scene, number: int, unit: Unit) -> None:
@@ -278,62 +226,3 @@ def _line(scene: Scene, one: Frame, unit: Unit) -> tuple[NDArray[np.float64], ND
     ends = 0.5 * (height[0] + height[-1])
     s = np.concatenate([[0.0], (np.arange(len(height)) + 0.5) * step, [len(height) * step]])
     return s / unit.nm, np.concatenate([[ends], height, [ends]]) / unit.nm
-
-
-def _label_standing(axes: Axes, scene: Scene, at: Frame, view: View, unit: Unit) -> None:
-    """What stands up or is sunk, with its height, over the surface and with a line to its highest or lowest point."""
-    blocks = _blocks(scene, at, view)
-    places = rows([s * view.px_per_nm for _, (s, _) in blocks], [one[0] for one in _sizes(blocks)], 2.0, view.width_px)
-    above = (float(at.height_nm.max()) - view.low_nm) * view.up_px_per_nm + _LEADER_PX
-    for (text, (s, height)), (row, middle) in zip(blocks, places, strict=True):
-        x = middle / view.px_per_nm / unit.nm
-        under = [one[1] for one, (other, _) in zip(_sizes(blocks), places, strict=True) if other < row]
-        y = (view.low_nm + (above + row * max(under, default=0.0)) / view.up_px_per_nm) / unit.nm
-        axes.plot([s / unit.nm, x], [height / unit.nm, y], color="#222222", lw=0.8, zorder=7.5, path_effects=halo())
-        axes.text(
-            x, y, text, fontsize=SIZE, ha="center", va="bottom", zorder=9, linespacing=1.1, path_effects=halo(3.0),
-            clip_on=False,
-        )  # fmt: skip
-
-
-def _sizes(blocks: Sequence[tuple[str, tuple[float, float]]]) -> list[tuple[float, float]]:
-    return [(text_px(text, SIZE)[0] + 12.0, (text.count("\n") + 1) * _LABEL_PX + 3.0) for text, _ in blocks]
-
-
-def _blocks(scene: Scene, at: Frame, view: View) -> list[tuple[str, tuple[float, float]]]:
-    """Labels, one line a feature and one block a place, with the point (s, height; nm) they belong to."""
-    blocks: list[tuple[str, str, tuple[float, float]]] = []
-    for name, one, (s, height) in _standing(scene, at):
-        text = f"{name}: {one.kind} {abs(one.height_nm):.0f} nm"
-        near = [
-            k
-            for k, (_, kind, (other, _)) in enumerate(blocks)
-            if kind == one.kind and abs(other - s) * view.px_per_nm < _SAME_PX
-        ]
-        if near:
-            before, kind, where = blocks[near[0]]
-            blocks[near[0]] = (f"{before}\n{text}", kind, where)
-        else:
-            blocks.append((text, one.kind, (s, height)))
-    return [(text, where) for text, _, where in blocks]
-
-
-def _standing(scene: Scene, at: Frame) -> list[tuple[str, Standing, tuple[float, float]]]:
-    """Features that stand up or are sunk: name, measure, and the point (s, height; nm) that shows it."""
-    relief = scene.relief
-    features = relief.job.column_map.features
-    own = {
-        one.feature: one
-        for one in footprints(relief.job.column_map.regions[relief.region], relief.run.terrain, features)
-    }
-    found = []
-    for row in relief.rows:
-        one = row.standing
-        if row.time_s != at.time_s or abs(one.height_nm) < FLUSH_NM or one.feature not in own:
-            continue
-        height = np.where(own[one.feature].points[0], np.sign(one.height_nm) * at.height_nm[0], -np.inf)
-        top = np.flatnonzero(height >= height.max() - 1.0)
-        peak = int(top[len(top) // 2])
-        name = features[one.feature][1] + (" (gone)" if one.state == "gone" else "")
-        found.append((name, one, ((peak + 0.5) * scene.step_nm, float(at.height_nm[0][peak]))))
-    return found

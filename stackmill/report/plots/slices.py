@@ -19,6 +19,7 @@ Key = tuple[int, int, int, int]
 _SLOPE_POINTS = 24
 _FLAT_NM = 1e-3
 _NOTHING_NM = 1e-6
+_GAP_NM = 0.01
 
 
 @frozen
@@ -179,8 +180,10 @@ def _segments(one: Slice, roof: Array | float, bottom_nm: float) -> Iterator[tup
 
 
 def _touch(one: tuple[Array, Array, Array], other: tuple[Array, Array, Array]) -> bool:
-    """Whether the end of one stretch and the start of the next share some height."""
-    return bool(min(one[1][-1], other[1][0]) > max(one[2][-1], other[2][0]) + _NOTHING_NM)
+    """Whether one stretch ends where the next starts, and shares some height with it there."""
+    return abs(one[0][-1] - other[0][0]) < _GAP_NM and bool(
+        min(one[1][-1], other[1][0]) > max(one[2][-1], other[2][0]) + _NOTHING_NM
+    )
 
 
 def _piece(key: Key, parts: Sequence[tuple[Array, Array, Array]]) -> Piece:

@@ -10,7 +10,7 @@ from stackmill.errors import UsageError
 from stackmill.frozen import frozen
 from stackmill.jobs import Job
 from stackmill.relief.gridding import Cut, columns_along
-from stackmill.report.plots.canvas import WIDTH_PX, Scale, Unit, blank, fitted, look, panel, unit_for, write
+from stackmill.report.plots.canvas import WIDTH_PX, Scale, Unit, blank, fitted, look, panel, unit_for, write_within
 from stackmill.report.plots.goals import GoalLevel, goal_in_words, goal_levels, mark_goal
 from stackmill.report.plots.names import (
     View,
@@ -96,21 +96,19 @@ def _drawn(job: Job, shown: list[Sectioned]) -> Figure:
     low, high = -_SUBSTRATE * whole, top + _ABOVE * whole
     across = max(one.across_nm(job) for one in shown)
     unit = unit_for(max(high - low, across))
-    abreast = min(len(shown), _ABREAST)
-    lines = -(-len(shown) // abreast)
     sides = [side_width(_all_names(job, one)) for one in shown]
-    aside = [sum(sides[k : k + abreast]) for k in range(0, len(sides), abreast)]
-    room = max((WIDTH_PX - 2 * _MARGIN - max(aside)) / abreast - _LEFT, _NARROWEST)
+    abreast, room = _abreast(sides)
+    lines = -(-len(shown) // abreast)
     layers = max(len({piece.layer for piece in one.pieces}) for one in shown)
-    scale = fitted(across, high - low, room, _TALLEST, max(_LEAST, _LINE_PX * layers))
+    scale = fitted(across, high - low, room, max(_TALLEST, 1.3 * _LINE_PX * layers), max(_LEAST, _LINE_PX * layers))
     tall = scale.up_px_per_nm * (high - low)
     styles = _styles_met(job, shown)
     extra = ["goal"] if any(one.goal for one in shown) else []
     under = legend_height([*styles, *extra], _MARGIN, WIDTH_PX - _MARGIN)
     row = _TITLE + tall + _UNDER
     figure = blank(WIDTH_PX, _MARGIN + 36.0 + lines * row + under)
-    write(figure, _MARGIN, _MARGIN + 10.0, job.title, 12.0, bold=True)
-    write(figure, _MARGIN, _MARGIN + 31.0, _caption(job, scale), 9.0, color="#333333")
+    write_within(figure, _MARGIN, _MARGIN + 10.0, job.title, 12.0, WIDTH_PX - 2.0 * _MARGIN, bold=True)
+    write_within(figure, _MARGIN, _MARGIN + 31.0, _caption(job, scale), 9.0, WIDTH_PX - 2.0 * _MARGIN, color="#333333")
     left = _MARGIN
     for k, one in enumerate(shown):
         wide = scale.px_per_nm * one.across_nm(job)
@@ -120,6 +118,16 @@ def _drawn(job: Job, shown: list[Sectioned]) -> Figure:
         left += room + sides[k]
     legend(figure, _MARGIN + 36.0 + lines * row, _MARGIN, WIDTH_PX - _MARGIN, styles, extra)
     return figure
+
+
+def _abreast(sides: list[float]) -> tuple[int, float]:
+    """How many panels stand beside each other, and how wide (px) each can be beside its names."""
+    for abreast in range(min(len(sides), _ABREAST), 0, -1):
+        aside = max(sum(sides[k : k + abreast]) for k in range(0, len(sides), abreast))
+        room = (WIDTH_PX - 2.0 * _MARGIN - aside) / abreast - _LEFT
+        if room >= _NARROWEST:
+            return abreast, room
+    return 1, _NARROWEST
 
 
 def _all_names(job: Job, one: Sectioned) -> dict[int, str]:
@@ -165,11 +173,12 @@ def _panel(
     mark_goal(axes, job, one.slices, one.goal, unit)
     region = job.column_map.regions[one.region]
     left, top = place
-    write(figure, left - 40.0, top - 44.0, region.name, 11.0, bold=True)
-    write(figure, left - 40.0, top - 26.0, f"along {one.cut.along} at {one.cut}", 8.5, color="#333333")
+    room = view.width_px + 40.0 + side_width(beside_it)
+    write_within(figure, left - 40.0, top - 44.0, region.name, 11.0, room, bold=True)
+    write_within(figure, left - 40.0, top - 26.0, f"along {one.cut.along} at {one.cut}", 8.5, room, color="#333333")
     note = _unmet(job, one)
     if note:
-        write(figure, left - 40.0, top - 10.0, note, 8.0, color="#555555", style="italic")
+        write_within(figure, left - 40.0, top - 10.0, note, 8.0, room, color="#555555", style="italic")
 
 
 def _unmet(job: Job, one: Sectioned) -> str:
