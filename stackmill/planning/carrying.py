@@ -147,8 +147,12 @@ def _inside_nm(points: Mask, step_nm: tuple[float, float]) -> Array:
     return far - 0.5 * step * points
 
 
-def _represented(ensemble: Ensemble, region: int, laid: Layout) -> tuple[int, ...]:
+def spoken_for(ensemble: Ensemble, region: int, cut: Cut | None) -> tuple[int, ...]:
     """The columns a surface can speak for: those it cuts about as wide as they are."""
+    return _represented(ensemble, region, _layouts(Surfaces(ensemble, region, cut))[0])
+
+
+def _represented(ensemble: Ensemble, region: int, laid: Layout) -> tuple[int, ...]:
     own = ensemble.inputs.job.column_map.regions[region]
     found = []
     for c in sorted(set(laid.of_region.tolist())):

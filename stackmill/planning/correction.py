@@ -15,9 +15,9 @@ from numpy.typing import NDArray
 from stackmill.ensemble.run import Ensemble, Outcome, first_lost
 from stackmill.errors import InputError
 from stackmill.frozen import frozen
-from stackmill.planning.carrying import PARTS, Carried, SurfaceTimes, surface_times
+from stackmill.planning.carrying import PARTS, Carried, SurfaceTimes, spoken_for, surface_times
 from stackmill.planning.windows import Window, find_window
-from stackmill.relief.gridding import Cut, columns_along
+from stackmill.relief.gridding import Cut
 from stackmill.relief.watch import Watch
 from stackmill.timing.fall import area_quantile
 
@@ -103,35 +103,26 @@ def _why_not(ensemble: Ensemble, where: tuple[int, int]) -> str:
 
 
 def _cuts(ensemble: Ensemble, open_: Sequence[tuple[int, int]], *, cell: bool) -> list[tuple[int, Cut | None]]:
-    """The fewest lines, one after the other, through the centres of some columns."""
+    """The fewest lines through the centres of some columns that can speak for all of them, as far as lines can."""
     column_map = ensemble.inputs.job.column_map
     found: list[tuple[int, Cut | None]] = []
     for r in dict.fromkeys(r for r, _ in open_):
         region = column_map.regions[r]
+        wanted = {c for where, c in open_ if where == r}
         if region.placeless.any():
             continue
         if cell:
             found.append((r, None))
             continue
-        left = [c for where, c in open_ if where == r]
-        while left:
-            cut = _best_line(ensemble, r, left)
-            found.append((r, cut))
-            left = [c for c in left[1:] if c not in _met(ensemble, r, cut)]
+        centres = [region.centre_nm[c].tolist() for c in sorted(wanted)]
+        speaks = {cut: set(spoken_for(ensemble, r, cut)) for x, y in centres for cut in (Cut("y", y), Cut("x", x))}
+        while wanted:
+            best = max(speaks, key=lambda cut: (len(speaks[cut] & wanted), len(speaks[cut])))
+            if not speaks[best] & wanted:
+                break
+            found.append((r, best))
+            wanted -= speaks[best]
     return found
-
-
-def _best_line(ensemble: Ensemble, r: int, wanted: Sequence[int]) -> Cut:
-    """The line through the first wanted column's centre that meets most of the others, then most columns at all."""
-    x, y = ensemble.inputs.job.column_map.regions[r].centre_nm[wanted[0]].tolist()
-    lines = [Cut("y", y), Cut("x", x)]
-    met = [_met(ensemble, r, cut) for cut in lines]
-    return lines[max((0, 1), key=lambda k: (len(met[k] & set(wanted)), len(met[k]), -k))]
-
-
-def _met(ensemble: Ensemble, r: int, cut: Cut) -> set[int]:
-    column_map = ensemble.inputs.job.column_map
-    return columns_along(column_map.regions[r], column_map.cell, cut)
 
 
 def _with(flat: Ensemble, outcome: Outcome, surfaces: Sequence[SurfaceTimes], *, best: bool) -> Outcome:

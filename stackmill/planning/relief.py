@@ -14,6 +14,7 @@ from stackmill.ensemble.run import run as run_ensemble
 from stackmill.errors import InputError, StackmillWarning, UsageError
 from stackmill.frozen import frozen
 from stackmill.jobs import Job
+from stackmill.planning.carrying import spoken_for
 from stackmill.planning.surfaces import Surfaces
 from stackmill.planning.windows import find_window
 from stackmill.relief.evolve import Frame, Reaching, Run, evolve
@@ -217,12 +218,12 @@ def deciding_cut(ensemble: Ensemble, r: int) -> tuple[Cut, str]:
     best = max(
         lines,
         key=lambda cut: (
-            len(columns_along(region, size, cut) & set(deciding)),
+            len(set(spoken_for(ensemble, r, cut)) & set(deciding)),
             len(edges_along(region, size, cut)),
             -lines.index(cut),
         ),
     )
-    met = columns_along(region, size, best) & set(deciding)
+    met = set(spoken_for(ensemble, r, best)) & set(deciding)
     names = " and ".join(region.label(c) for c in sorted(met))
     return best, f"through {names}, which decide{'s' if len(met) == 1 else ''}"
 

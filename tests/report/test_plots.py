@@ -5,6 +5,7 @@ from __future__ import annotations
 import itertools
 import subprocess
 import sys
+import xml.etree.ElementTree as ET
 from pathlib import Path
 
 import numpy as np
@@ -352,6 +353,7 @@ def test_files_repeat_byte_for_byte_and_say_nothing_of_when_or_by_what(section, 
         one, other = render(make(), suffix), render(make(), suffix)
         assert one == other
         assert len(one) > 5000
+        assert suffix == ".png" or ET.fromstring(one).tag.endswith("svg")
         for word in (b"<dc:date>", b"matplotlib v", b"Software"):
             assert word.lower() not in one.lower()
 
@@ -426,6 +428,12 @@ def test_every_demo_stack_is_drawn_with_no_text_off_the_picture(name):
     figure = draw_stack(demo(name))
     off = texts_off(figure)
     assert not off
+
+
+@pytest.mark.regression
+def test_sections_and_cells_keep_their_text_on_the_picture(section, cell):
+    assert not texts_off(draw_section(section))
+    assert not texts_off(draw_cell(cell))
 
 
 def texts_off(figure):

@@ -48,7 +48,7 @@ def chosen_of(count: int) -> list[int]:
 
 
 def scene_of(relief: Relief, chosen: Sequence[int]) -> Scene:
-    """The scene of a run at its chosen moments: one window for all panels where it fits, else one about each surface."""
+    """The scene of a run at its chosen moments: one window for all where it fits, else one about each surface."""
     terrain = relief.run.terrain
     slices = terrain_slices(relief.job.column_map.regions[relief.region], terrain, row=0)
     across, top = float(slices[-1].s_nm[-1]), float(terrain.top_nm.max())

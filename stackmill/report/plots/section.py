@@ -70,7 +70,9 @@ def draw_section(relief: Relief) -> Figure:
 def _drawn(scene: Scene, chosen: Sequence[int]) -> Figure:
     relief, n = scene.relief, len(chosen)
     up = float(np.max(scene.window[:, 1] - scene.window[:, 0]))
-    side = side_width(layer_names(scene.relief.job, _seen(scene), beside=_all_beside(scene), sizes=False))
+    side = side_width(
+        layer_names(scene.relief.job, _seen(scene), beside=_all_beside(scene), sizes=False, goal=_goal_layer(scene))
+    )
     plans = [_plan(scene, n, abreast, up, side) for abreast in sorted({n, -(-n // 2), 1}, reverse=True)]
     abreast, scale = _best(plans)
     wide = scale.px_per_nm * scene.across_nm
@@ -141,6 +143,11 @@ def _goal_met(scene: Scene) -> bool:
     return any(one.column in scene.goal for one in scene.slices)
 
 
+def _goal_layer(scene: Scene) -> int | None:
+    job = scene.relief.job
+    return job.column_map.layers.index(job.goal.layer) if job.goal and _goal_met(scene) else None
+
+
 def _caption(scene: Scene, scale: Scale, chosen: Sequence[int]) -> str:
     relief = scene.relief
     assert relief.cut is not None
@@ -185,7 +192,7 @@ def _panel(
     write_features(axes, inside, names, every, unit)
     mark_goal(axes, job, scene.slices, scene.goal, unit)
     if named:
-        goal = job.column_map.layers.index(job.goal.layer) if job.goal and _goal_met(scene) else None
+        goal = _goal_layer(scene)
         beside_it = layer_names(job, scene.pieces, beside=beside, sizes=False, goal=goal)
         write_layers(axes, _without_head(scene, view), scene.pieces, beside_it, goal, unit)
     step = step_at(scene.relief, at.time_s)

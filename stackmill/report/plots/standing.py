@@ -61,15 +61,16 @@ def _blocks(scene: Scene, at: Frame, view: View) -> list[tuple[str, tuple[float,
 
 
 def _text(block: Sequence[tuple[str, Standing]]) -> str:
-    """The lines of a block: what is buried counts only where nothing else is to be named."""
-    bare = [(name, one) for name, one in block if one.state != "buried"]
-    order = sorted(bare or block, key=lambda named: -abs(named[1].height_nm))[: _MOST_LINES if bare else 1]
-    lines = [f"{short(name, 24)}: {one.kind} {abs(one.height_nm):.0f} nm" for name, one in order]
-    return "\n".join(lines)
+    """The lines of a block, the highest first."""
+    order = sorted(block, key=lambda named: -abs(named[1].height_nm))[:_MOST_LINES]
+    return "\n".join(f"{short(name, 24)}: {one.kind} {abs(one.height_nm):.0f} nm" for name, one in order)
 
 
 def _standing(scene: Scene, at: Frame) -> list[tuple[str, Standing, tuple[float, float]]]:
-    """Features that stand up or are sunk: name, measure, and the point (s, height; nm) that shows it."""
+    """Features that stand up or are sunk: name, measure, and the point (s, height; nm) that shows it.
+
+    The ground over a buried feature is told of only where nothing else stands: the first of them, from the top.
+    """
     relief = scene.relief
     features = relief.job.column_map.features
     own = {
@@ -84,9 +85,11 @@ def _standing(scene: Scene, at: Frame) -> list[tuple[str, Standing, tuple[float,
         height = np.where(own[one.feature].points[0], np.sign(one.height_nm) * at.height_nm[0], -np.inf)
         top = np.flatnonzero(height >= height.max() - 1.0)
         peak = int(top[len(top) // 2])
-        name = features[one.feature][1] + (" (gone)" if one.state == "gone" else "")
+        name = features[one.feature][1]
+        name = {"gone": f"{name} (gone)", "buried": f"over {name}"}.get(one.state, name)
         found.append((name, one, ((peak + 0.5) * scene.step_nm, float(at.height_nm[0][peak]))))
-    return found
+    bare = [named for named in found if named[1].state != "buried"]
+    return bare or found[:1]
 
 
 def head_px(scene: Scene, chosen: Sequence[int], scale: Scale, up: float) -> float:
