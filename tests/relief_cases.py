@@ -2,8 +2,8 @@
 
 The materials are model materials, in units where flat SiO2 at normal incidence falls 1 in 1 s: the yield over that
 at normal incidence is cos^-f(th) exp(-S (1/cos th - 1)) with S = f cos(th_opt), after Yamamura, Itikawa & Itoh,
-IPPJ-AM-26 (1983), from memory. Their constants are rounded from the library's, so that a change there moves nothing
-here.
+IPPJ-AM-26 (1983), from memory. Their constants are made up, of the size of real ones, so that a change in the
+library moves nothing here.
 """
 
 from __future__ import annotations

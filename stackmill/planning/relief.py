@@ -8,17 +8,17 @@ from collections.abc import Sequence
 import numpy as np
 from numpy.typing import NDArray
 
+from stackmill.columns.columns import RegionColumns
 from stackmill.documents.recipe import Beam
 from stackmill.ensemble.run import DRAWS, SEED, Ensemble
 from stackmill.ensemble.run import run as run_ensemble
 from stackmill.errors import InputError, StackmillWarning, UsageError
 from stackmill.frozen import frozen
 from stackmill.jobs import Job
-from stackmill.planning.carrying import spoken_for
 from stackmill.planning.surfaces import Surfaces
 from stackmill.planning.windows import find_window
 from stackmill.relief.evolve import Frame, Reaching, Run, evolve
-from stackmill.relief.gridding import CELLS_ACROSS, Cut, Grid, cell_grid, columns_along, edges_along, section_grid
+from stackmill.relief.gridding import CELLS_ACROSS, Cut, Grid, cell_grid, columns_along, section_grid
 from stackmill.relief.measure import Standing, footprints, measured, relief_nm
 from stackmill.relief.watch import Watch
 
@@ -26,6 +26,7 @@ Array = NDArray[np.float64]
 Index = NDArray[np.intp]
 
 GRAZING_DEG = 75.0  # beyond, the shadow is not to be trusted
+_LARGEST, _NEAR_NM = 40, 5.0  # columns through which lines are tried, and how near lines are the same
 _LOOK_BEYOND = 1.5  # a section runs on to this multiple of the last moment, to see what vanishes
 
 
@@ -203,29 +204,28 @@ def _check_cut(job: Job, cut: Cut | None) -> None:
 
 
 def deciding_cut(ensemble: Ensemble, r: int) -> tuple[Cut, str]:
-    """The line through the columns that decide the window here, or else through the one with the most neighbours."""
+    """The line that meets the columns which decide the window here, and of those lines the most features."""
     job = ensemble.inputs.job
     region, size = job.column_map.regions[r], job.column_map.cell
-    deciding: list[int] = []
+    deciding: set[int] = set()
     if job.goal is not None and len(ensemble.weights) > 1:
         window = find_window(ensemble, job.confidence)
-        deciding = [c for where in (window.exposed_by, window.lost_by) if where and where[0] == r for c in where[1:]]
-    centres = [region.centre_nm[c].tolist() for c in (deciding or range(len(region.area)))]
-    lines = [cut for x, y in centres for cut in (Cut("x", x), Cut("y", y))]
-    if not deciding:
-        best = max(lines, key=lambda cut: (len(columns_along(region, size, cut)), -lines.index(cut)))
-        return best, "it meets the most columns"
-    best = max(
-        lines,
-        key=lambda cut: (
-            len(set(spoken_for(ensemble, r, cut)) & set(deciding)),
-            len(edges_along(region, size, cut)),
-            -lines.index(cut),
-        ),
-    )
-    met = set(spoken_for(ensemble, r, best)) & set(deciding)
-    names = " and ".join(region.label(c) for c in sorted(met))
-    return best, f"through {names}, which decide{'s' if len(met) == 1 else ''}"
+        deciding = {where[1] for where in (window.exposed_by, window.lost_by) if where and where[0] == r}
+    columns = [*sorted(deciding), *range(min(len(region.area), _LARGEST))]
+    centres = np.round(region.centre_nm[columns] / _NEAR_NM) * _NEAR_NM
+    lines = dict.fromkeys(cut for x, y in centres.tolist() for cut in (Cut("y", y), Cut("x", x)))
+    met = {cut: columns_along(region, size, cut) for cut in lines}
+    best = max(lines, key=lambda cut: (len(met[cut] & deciding), _features_crossed(region, met[cut]), len(met[cut])))
+    names = " and ".join(region.label(c) for c in sorted(met[best] & deciding))
+    if not names:
+        return best, "it meets the most features"
+    return best, f"through {names}, which decide{'s' if len(met[best] & deciding) == 1 else ''}"
+
+
+def _features_crossed(region: RegionColumns, columns: set[int]) -> int:
+    """How many features begin or end along a line that meets these columns."""
+    rows = [set(region.feature[c].tolist()) - {-1} for c in columns]
+    return len(set.union(*rows) - set.intersection(*rows))
 
 
 def _grid(job: Job, r: int, cut: Cut | None, points: int | None) -> Grid:

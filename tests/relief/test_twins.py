@@ -12,6 +12,7 @@ import numpy as np
 import pytest
 from relief_cases import (
     AL,
+    BACKENDS,
     NITRIDE,
     OX,
     W,
@@ -48,7 +49,7 @@ def both(terrain, light, *, fall=0.45, second_order, shadow):
     table = table_of(LIGHTS[light])
     settings = {"second_order": second_order, "shadow": shadow}
     time = fall / flat_speed(table, OX)
-    return [milled(backend, terrain, table, time, **settings) for backend in ("reference", "kernel")]
+    return [milled(backend, terrain, table, time, **settings) for backend in BACKENDS]
 
 
 def check(surfaces, within):
@@ -104,10 +105,8 @@ def test_a_clock_that_does_not_run(rows):
     table = table_of(rotating(45.0))
     terrain = ground(line_plan(24, 8, rows), 0.06, STACKS)
     found = []
-    for backend in ("reference", "kernel"):
+    for backend in BACKENDS:
         surface = milled(backend, terrain, table, 0.1)
-        from relief_cases import BACKENDS
-
         BACKENDS[backend](terrain, surface, table, duration_s=0.2, steps=9, counts=False)
         assert surface.clock_s == pytest.approx(0.1, rel=1e-12)
         met = surface.passed_s[np.isfinite(surface.passed_s)]
