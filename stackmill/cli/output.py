@@ -45,6 +45,14 @@ def write(text: str, output: str, *, force: bool) -> None:
     write_bytes((text + "\n").encode(), output, force=force)
 
 
+def picture_suffix(plot: str) -> str:
+    """The suffix of a picture's file, before the work that would fill it. Raises UsageError."""
+    suffix = Path(plot).suffix.lower()
+    if suffix not in (".png", ".svg"):
+        raise UsageError(f"no picture is made as {Path(plot).name!r}", cure="end it in .png or .svg")
+    return suffix
+
+
 def refuse_taken(output: str, *, force: bool) -> None:
     """Refuse a file that is there already, before the work that would fill it. Raises FileAccessError."""
     if not force and Path(output).exists():

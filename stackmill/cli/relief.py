@@ -93,6 +93,7 @@ def relief(
         chosen_format,
         gathered_warnings,
         paper,
+        picture_suffix,
         refuse_taken,
         say_notes,
         write,
@@ -105,6 +106,7 @@ def relief(
 
     form = chosen_format(format_, output)
     when, cut = asked_for(at or [], at_reach, at_stop=at_stop), section_line(section)
+    suffix = picture_suffix(plot) if plot is not None else ""
     for target in (plot, save):
         if target is not None:
             refuse_taken(target, force=force)
@@ -130,7 +132,7 @@ def relief(
         from stackmill.report import plots
 
         picture = plots.draw_cell(found[0]) if cell else plots.draw_section(found[0])
-        write_bytes(plots.render(picture, plots.suffix_of(plot)), plot, force=force)
+        write_bytes(plots.render(picture, suffix), plot, force=force)
     if form is Format.json:
         text = report.as_json(found, warned, paper(output, ascii_only))
     elif form is Format.csv:

@@ -1,7 +1,7 @@
 """How fast the surface moves, against fast marching of a front through the same depth (scikit-fmm) and plain numpy.
 
-A line or plug in ground 2.5 um wide goes 5 um down, as a section of 600 points and as a cell of 200 x 200; fast marching
-takes 600 x 800 and 200 x 200 x 400 points for one flat front, once, with no material and no shadow in it.
+A line or plug in ground 2.5 um wide goes 5 um down, as a section of 600 points and as a cell of 200 x 200. Fast
+marching takes 600 x 800 and 200 x 200 x 400 points for one flat front, once, with no material and no shadow in it.
 """
 
 from __future__ import annotations

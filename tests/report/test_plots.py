@@ -21,7 +21,7 @@ from stackmill.report.plots.beam import _along, step_at
 from stackmill.report.plots.block import top_material
 from stackmill.report.plots.canvas import fitted
 from stackmill.report.plots.cell import hillshade
-from stackmill.report.plots.colours import from_lch, lightness
+from stackmill.report.plots.colours import EYES, from_lch, lightness
 from stackmill.report.plots.goals import goal_levels
 from stackmill.report.plots.labels import rows, spread
 from stackmill.report.plots.names import View
@@ -112,6 +112,13 @@ def test_lightness_is_that_of_cie_and_colours_are_made_with_the_lightness_asked_
         colour = from_lch(light, chroma, hue)
         assert l_star(colour) == pytest.approx(light, abs=0.6)
         assert lightness(colour) == pytest.approx(l_star(colour), abs=0.05)
+
+
+@pytest.mark.common_practice
+def test_white_stays_white_to_every_eye_and_red_is_dark_to_one_without_red_cones():
+    assert all(lightness("#ffffff", eyes) == pytest.approx(100.0, abs=0.1) for eyes in EYES)
+    assert lightness("#ff0000", "protanopia") < lightness("#ff0000") - 10.0
+    assert lightness("#ff0000", "deuteranopia") > lightness("#ff0000", "protanopia") + 10.0
 
 
 @pytest.mark.common_practice
@@ -428,6 +435,15 @@ def test_every_demo_stack_is_drawn_with_no_text_off_the_picture(name):
     figure = draw_stack(demo(name))
     off = texts_off(figure)
     assert not off
+
+
+@pytest.mark.common_practice
+def test_a_surface_far_down_in_the_substrate_is_still_on_the_picture():
+    relief = relief_table(demo("gaas-amplifier/job"), when=When(at_s=(3500.0,)), region="street")
+    axes = draw_section(relief).axes[0]
+    assert relief.run.frames[0].height_nm.max() < 0.0
+    low, high = axes.get_ylim()
+    assert low < relief.run.frames[0].height_nm.min() / 1000.0 < high
 
 
 @pytest.mark.regression

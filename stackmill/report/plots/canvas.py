@@ -28,6 +28,7 @@ _SETTINGS = {
     "hatch.linewidth": 0.6,
     "axes.linewidth": 0.8,
     "axes.unicode_minus": False,
+    "text.hinting": "none",
 }
 _TIMES = (1.0, 2.0, 3.0, 4.0, 5.0, 8.0, 10.0, 15.0, 20.0, 30.0, 40.0, 50.0, 80.0, 100.0)
 

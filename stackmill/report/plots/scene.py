@@ -55,6 +55,7 @@ def scene_of(relief: Relief, chosen: Sequence[int]) -> Scene:
     floor = -_SUBSTRATE * max(top, 0.25 * across)
     surfaces = [relief.run.frames[k].height_nm[0] for k in chosen]
     lowest = np.array([float(one.min()) for one in surfaces])
+    floor = min(floor, float(lowest.min()) - 0.1 * (top - float(lowest.min()))) if lowest.min() < 0.5 * floor else floor
     low = max(lowest.min() - _UNDER_SURFACE * max(top - lowest.min(), 0.4 * across), floor)
     low = floor if low < -0.8 * floor else low
     common = top - low <= 2.4 * across

@@ -78,7 +78,8 @@ def _drawn(scene: Scene, chosen: Sequence[int]) -> Figure:
     wide = scale.px_per_nm * scene.across_nm
     tall = scale.up_px_per_nm * up + head_px(scene, chosen, scale, up)
     lines, styles = -(-n // abreast), _styles_met(scene)
-    extra = ["the surface", "earlier surfaces", "milled or stripped off", *(["goal"] if _goal_met(scene) else [])]
+    earlier = ["earlier surfaces"] if chosen[-1] > 0 else []
+    extra = ["the surface", *earlier, "milled or stripped off", *(["goal"] if _goal_met(scene) else [])]
     caption = _caption(scene, scale, chosen)
     slot = _LEFT + max(wide, _TITLE_PX - 40.0) + _GAP + (0.0 if scene.common else side)
     aside = side if scene.common else 0.0

@@ -33,6 +33,7 @@ _ABREAST = 4
 _LEFT, _TITLE, _UNDER, _MARGIN = 62.0, 88.0, 62.0, 18.0
 _TALLEST, _LEAST, _NARROWEST = 860.0, 330.0, 120.0
 _LINE_PX = 14.5
+_WORDS_PX = 780.0  # least width, for title and caption
 _SUBSTRATE = 0.09  # of the height over the substrate
 _ABOVE = 0.03
 
@@ -104,11 +105,13 @@ def _drawn(job: Job, shown: list[Sectioned]) -> Figure:
     tall = scale.up_px_per_nm * (high - low)
     styles = _styles_met(job, shown)
     extra = ["goal"] if any(one.goal for one in shown) else []
-    under = legend_height([*styles, *extra], _MARGIN, WIDTH_PX - _MARGIN)
+    alone = _LEFT + scale.px_per_nm * across + max(sides)
+    inner = (WIDTH_PX if abreast > 1 else min(max(alone, _WORDS_PX) + 2.0 * _MARGIN, WIDTH_PX)) - 2.0 * _MARGIN
+    under = legend_height([*styles, *extra], _MARGIN, _MARGIN + inner)
     row = _TITLE + tall + _UNDER
-    figure = blank(WIDTH_PX, _MARGIN + 36.0 + lines * row + under)
-    write_within(figure, _MARGIN, _MARGIN + 10.0, job.title, 12.0, WIDTH_PX - 2.0 * _MARGIN, bold=True)
-    write_within(figure, _MARGIN, _MARGIN + 31.0, _caption(job, scale), 9.0, WIDTH_PX - 2.0 * _MARGIN, color="#333333")
+    figure = blank(inner + 2.0 * _MARGIN, _MARGIN + 36.0 + lines * row + under)
+    write_within(figure, _MARGIN, _MARGIN + 10.0, job.title, 12.0, inner, bold=True)
+    write_within(figure, _MARGIN, _MARGIN + 31.0, _caption(job, scale), 9.0, inner, color="#333333")
     left = _MARGIN
     for k, one in enumerate(shown):
         wide = scale.px_per_nm * one.across_nm(job)
@@ -116,7 +119,7 @@ def _drawn(job: Job, shown: list[Sectioned]) -> Figure:
         place = (left, _MARGIN + 36.0 + (k // abreast) * row + _TITLE)
         _panel(figure, job, one, View(one.across_nm(job), low, high, wide, tall), place, unit, first=k % abreast == 0)
         left += room + sides[k]
-    legend(figure, _MARGIN + 36.0 + lines * row, _MARGIN, WIDTH_PX - _MARGIN, styles, extra)
+    legend(figure, _MARGIN + 36.0 + lines * row, _MARGIN, _MARGIN + inner, styles, extra)
     return figure
 
 
