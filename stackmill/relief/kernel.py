@@ -357,7 +357,7 @@ def _direct_speed(facet, m, slope_y, slope_x, toward_y, toward_x, sine, cosine):
     steepening = math.sqrt(1.0 + slope_y * slope_y + slope_x * slope_x)
     along = slope_x * toward_x + slope_y * toward_y
     c = min(max((cosine - sine * along) / steepening, 0.0), 1.0)
-    at = math.acos(c) * ((facet.shape[1] - 1) / (0.5 * math.pi))
+    at = math.sqrt(1.0 - c) * (facet.shape[1] - 1)
     k = min(int(at), facet.shape[1] - 2)
     part = at - k
     return ((1.0 - part) * facet[m, k] + part * facet[m, k + 1]) * steepening

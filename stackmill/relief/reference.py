@@ -296,7 +296,7 @@ def direct_speed(table: SlopeTable, material: Index, slope: list[Array], bearing
     along = slope[1] * bearing[0] + slope[0] * bearing[1]
     cosine = (np.cos(tilt) - np.sin(tilt) * along) / steepening
     intervals = table.facet.shape[1] - 1
-    at = np.arccos(np.clip(cosine, 0.0, 1.0)) * (intervals / (0.5 * np.pi))
+    at = np.sqrt(1.0 - np.clip(cosine, 0.0, 1.0)) * intervals
     k = np.minimum(at.astype(np.intp), intervals - 1)
     part = at - k
     value = (1.0 - part) * table.facet[material, k] + part * table.facet[material, k + 1]

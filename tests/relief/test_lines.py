@@ -167,5 +167,5 @@ def test_narrow_slow_lines_of_the_library_settle_where_their_facet_keeps_up_with
 @pytest.mark.parametrize("tilt", [45, 60])
 @pytest.mark.parametrize("pair", PAIRS)
 def test_narrow_slow_lines_of_the_library_in_their_own_shadow(tilt, pair):
-    """No exact answer is known: the shadow of a line on its foot changes what its fill falls at there."""
-    assert np.isfinite(settled_over_exact("kernel", pair, tilt, shadow=True))
+    """No exact answer is known: shadow slows the fill beside a line, so the line settles lower, but stands."""
+    assert 0.6 < settled_over_exact("kernel", pair, tilt, shadow=True) < 1.0
