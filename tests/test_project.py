@@ -49,8 +49,7 @@ def test_files_keep_to_their_soft_limit():
     long = {
         str(path.relative_to(ROOT)): n
         for path in (ROOT / "stackmill").rglob("*.py")
-        if path.name != KERNEL
-        and (n := len(path.read_text(encoding="utf-8").splitlines())) > 400
+        if path.name != KERNEL and (n := len(path.read_text(encoding="utf-8").splitlines())) > 400
     }
     assert long == {}
 
@@ -115,9 +114,9 @@ def keys_of(schema):
             yield from keys_of(part)
 
 
-@pytest.mark.parametrize("kind", ["stack", "mill", "recipe", "job", "materials"])
+@pytest.mark.parametrize("kind", ["stack", "mill", "recipe", "job", "materials", "calibration"])
 def test_the_file_reference_knows_every_key(kind, capsys):
     assert main(["schema", kind]) == 0
     page = (ROOT / "docs/files.md").read_text(encoding="utf-8")
-    words = set(re.findall(r"[a-z_]+", " ".join(re.findall(r"`([^`]*)`", page))))
+    words = set(re.findall(r"[a-z_0-9]+", " ".join(re.findall(r"`([^`]*)`", page))))
     assert set(keys_of(json.loads(capsys.readouterr().out))) - words == set()

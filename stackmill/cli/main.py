@@ -11,7 +11,7 @@ os.environ.setdefault("PYDANTIC_DISABLE_PLUGINS", "__all__")
 
 import typer
 
-from stackmill.cli import check, materials, rates, relief, schema, stops
+from stackmill.cli import calibrate, check, materials, rates, relief, schema, stops
 from stackmill.errors import InputErrors, StackmillError
 
 app = typer.Typer(
@@ -24,6 +24,7 @@ app = typer.Typer(
     add_completion=False,
     context_settings={"help_option_names": ["-h", "--help"]},
 )
+app.command()(calibrate.calibrate)
 app.command()(check.check)
 app.command()(materials.materials)
 app.command()(rates.rates)

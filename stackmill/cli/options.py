@@ -72,3 +72,7 @@ Flat = Annotated[
 ]
 Cell = Annotated[bool, typer.Option("--cell", help="Run the surface of the whole cell, not of a section.")]
 Plot = Annotated[str | None, typer.Option("--plot", help="Draw it into this file, .png or .svg.", metavar="FILE")]
+Calibration = Annotated[
+    str | None,
+    typer.Option("--calibration", help="What coupons say of this mill today; stands in for the job's.", metavar="FILE"),
+]

@@ -8,6 +8,7 @@ import typer
 
 from stackmill.cli.options import (
     Ascii,
+    Calibration,
     CurrentDensity,
     Debug,
     Energy,
@@ -36,6 +37,7 @@ def rates(
     incidence: Incidence = None,
     current_density: CurrentDensity = None,
     motion: Motion = None,
+    calibration: Calibration = None,
     why: Why = False,
     output: Output = "-",
     format_: FormatOption = None,
@@ -70,10 +72,12 @@ def rates(
         if file is not None:
             if gas is not None:
                 raise UsageError("--gas goes with --material", cure="a file's gas is in its mill file; use --set")
-            job = load_job(file, overrides=overrides(set_ or []), **settings)
+            job = load_job(file, overrides=overrides(set_ or []), calibration=calibration, **settings)
         else:
             if set_:
                 raise UsageError("--set goes with a file", cure="use the options for the setting")
+            if calibration is not None:
+                raise UsageError("--calibration goes with a file", cure="name the materials in a job")
             job = bare_job(material or [], gas=gas, **settings)
         rows = rate_rows(job)
     say_notes(job.notes, quiet=quiet)

@@ -8,6 +8,7 @@ import typer
 
 from stackmill.cli.options import (
     Ascii,
+    Calibration,
     Cell,
     Confidence,
     CurrentDensity,
@@ -66,6 +67,7 @@ def relief(
     order: Order = 1,
     plot: Plot = None,
     save: Save = None,
+    calibration: Calibration = None,
     confidence: Confidence = None,
     goal: GoalOption = None,
     energy: Energy = None,
@@ -120,6 +122,7 @@ def relief(
             current_density=current_density,
             motion=motion,
             confidence=confidence,
+            calibration=calibration,
         )
         found = relief_tables(
             job, when=when, section=cut, cell=cell, region=region, points=grid,

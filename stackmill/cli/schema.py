@@ -18,6 +18,7 @@ class Kind(StrEnum):
     recipe = "recipe"
     job = "job"
     materials = "materials"
+    calibration = "calibration"
 
 
 def schema(

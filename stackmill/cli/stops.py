@@ -6,6 +6,7 @@ import typer
 
 from stackmill.cli.options import (
     Ascii,
+    Calibration,
     Cell,
     Confidence,
     CurrentDensity,
@@ -32,6 +33,7 @@ from stackmill.cli.options import (
 
 def stops(
     file: File,
+    calibration: Calibration = None,
     confidence: Confidence = None,
     goal: GoalOption = None,
     energy: Energy = None,
@@ -81,6 +83,7 @@ def stops(
             current_density=current_density,
             motion=motion,
             confidence=confidence,
+            calibration=calibration,
         )
         table = stop_table(job, seed=seed, jobs=jobs, flat=flat, cell=cell, watch=watch)
     say_notes(job.notes, quiet=quiet)

@@ -141,6 +141,7 @@ class JobFile(Record):
     materials: Annotated[
         Any, PlainValidator(_bound_materials), WithJsonSchema({"type": ["string", "object", "array"]})
     ] = ()
+    calibration: Bound | None = Field(default=None, examples=["gun-a-today.yaml"])
     goal: Goal | None = None
     keep: Annotated[tuple[Keep, ...], BeforeValidator(one_or_more)] = ()
     confidence: Chance = DEFAULT_CONFIDENCE

@@ -7,7 +7,16 @@ from typing import ClassVar, Literal
 
 from pydantic import Field
 
-from stackmill.documents.fields import CurrentDensity, Divergence, Label, OnOff, Share, Uniformity, ZeroError
+from stackmill.documents.fields import (
+    UNKNOWN_CURRENT,
+    CurrentDensity,
+    Divergence,
+    Label,
+    OnOff,
+    Share,
+    Uniformity,
+    ZeroError,
+)
 from stackmill.documents.profile import Profile
 from stackmill.documents.reading import Record
 from stackmill.units import Measure
@@ -50,6 +59,11 @@ class Mill(Record):
     stage: Stage = Field(default_factory=Stage)
     mount: Mount = Mount()
     neutraliser: OnOff = True
+
+    @property
+    def from_coupon(self) -> bool:
+        """Whether only a calibration knows the current."""
+        return self.current_density == UNKNOWN_CURRENT
 
     @property
     def uniformity_sd(self) -> float:

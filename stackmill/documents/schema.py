@@ -15,6 +15,7 @@ from pydantic.json_schema import GenerateJsonSchema, JsonSchemaMode, JsonSchemaV
 from pydantic_core import core_schema
 
 from stackmill.documents import recipe
+from stackmill.documents.calibration import CalibrationFile
 from stackmill.documents.fields import one_or_more
 from stackmill.documents.job import JobFile
 from stackmill.documents.material import MaterialsFile
@@ -23,7 +24,7 @@ from stackmill.documents.recipe import Recipe
 from stackmill.documents.stack import Stack
 
 Schema = dict[str, Any]
-FileKind = Literal["stack", "mill", "recipe", "job", "materials"]
+FileKind = Literal["stack", "mill", "recipe", "job", "materials", "calibration"]
 
 DIALECT = "https://json-schema.org/draft/2020-12/schema"
 _MODELS: Mapping[str, type[BaseModel]] = {
@@ -32,6 +33,7 @@ _MODELS: Mapping[str, type[BaseModel]] = {
     "recipe": Recipe,
     "job": JobFile,
     "materials": MaterialsFile,
+    "calibration": CalibrationFile,
 }
 
 _NUMBER = r"[+-]?([0-9]+\.?[0-9]*|\.[0-9]+)([eE][+-]?[0-9]+)?"
@@ -110,7 +112,7 @@ def json_schema(kind: FileKind) -> Schema:
 
 def _bind_files(body: Schema, definitions: Schema) -> None:
     """A job's files are paths, or what the files would hold."""
-    for kind in ("stack", "mill", "recipe", "materials"):
+    for kind in ("stack", "mill", "recipe", "materials", "calibration"):
         inner = json_schema(kind)
         definitions.update(inner.pop("$defs", {}))
         name = _MODELS[kind].__name__

@@ -230,6 +230,19 @@ def already_passed(step: str, target: str) -> Sentence:
     return Sentence(f"{target} has been reached before step {quoted(step)} begins", "aim deeper, or leave the step out")
 
 
+NEEDS_COUPONS = Sentence(
+    "a current density 'from coupon' needs a calibration",
+    "add calibration: FILE to the job, as stackmill calibrate writes it, or the current you measured",
+)
+
+
+def other_gas(calibrated: str, mill: str) -> Sentence:
+    """A calibration made with another gas."""
+    return Sentence(
+        f"this calibration was made with {calibrated}, and the mill runs on {mill}", "calibrate with that gas"
+    )
+
+
 def no_rate(step: str, materials: Sequence[str]) -> Sentence:
     """A process that does not say what it does to some of the stack."""
     what = listed(materials, last="and")

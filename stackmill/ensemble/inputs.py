@@ -28,7 +28,7 @@ class Inputs:
     @classmethod
     def of(cls, job: Job) -> Inputs:
         """All inputs of a job that can differ from their best values."""
-        model = rate_model(job.mill, job.recipe.steps, job.rated_materials)
+        model = rate_model(job.mill, job.recipe.steps, job.rated_materials, job.coupons)
         return cls(job, model, tuple(_names(job, model)), model.belief.root())
 
     def sample(self, z: Array) -> Sample:

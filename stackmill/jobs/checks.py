@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import warnings
 from collections.abc import Iterable, Iterator, Sequence
 from typing import TYPE_CHECKING, Any
 
@@ -12,7 +13,7 @@ from stackmill.documents.reading import Document
 from stackmill.documents.recipe import OTHER, Beam, Cover, Process, Recipe, Seen, Strip, Target, Uncover
 from stackmill.documents.stack import NO_FILL, Feature, Layer, Line, Region, Stack, Via
 from stackmill.documents.wording import Sentence
-from stackmill.errors import InputError
+from stackmill.errors import InputError, StackmillWarning
 from stackmill.frozen import frozen
 from stackmill.jobs.beam import beam_over
 from stackmill.jobs.files import JobDocuments
@@ -23,6 +24,8 @@ if TYPE_CHECKING:
     from stackmill.columns.columns import ColumnMap
 
 Complaint = tuple[Sentence, KeyPath]
+
+_NEAR_ENERGY, _NEAR_DEG = 1.5, 15.0  # a step this near to a coupon, in energy (times) and angle, is covered by it
 
 
 @frozen
@@ -47,12 +50,46 @@ def check_fit(documents: JobDocuments, stack: Stack, recipe: Recipe, found: Foun
     errors = _placed(documents.job, _wants(documents, stack)) + _placed(documents.recipe, steps)
     if not documents.stack.healed:
         errors += _placed(documents.stack, _geometry(stack))
+    errors += _calibrated(documents)
     beam = beam_over(stack, documents.mill.model)
     errors += _placed(documents.stack, beam.complaints)
     column_map = None
     if not errors and not found.errors and not documents.errors:
         column_map = _build(documents, stack, errors)
     return Fit(column_map, (*_notes(stack, recipe), *beam.notes), tuple(errors), beam.share)
+
+
+def _calibrated(documents: JobDocuments) -> list[InputError]:
+    """A calibration must belong to the mill's gas, and a current from coupons needs one."""
+    mill, calibration = documents.mill, documents.calibration
+    if calibration is None:
+        return [mill.error(wording.NEEDS_COUPONS, "current_density")] if mill.model.from_coupon else []
+    if calibration.model.gas != mill.model.gas:
+        return [calibration.error(wording.other_gas(calibration.model.gas, mill.model.gas), "gas")]
+    return []
+
+
+def warn_outside_coupons(documents: JobDocuments) -> None:
+    """Warn of steps that mill where no coupon was milled, and of a calibration that is doubtful itself."""
+    if documents.calibration is None:
+        return
+    told = documents.calibration.model
+    if told.verdict == "doubtful":
+        _warn(f"the calibration {quoted(told.title or told.data)} is doubtful: see what stackmill calibrate says of it")
+    for step in documents.recipe.model.steps:
+        if isinstance(step, Beam) and not any(
+            max(step.energy, one.energy) <= _NEAR_ENERGY * min(step.energy, one.energy)
+            and abs(step.incidence - one.incidence) <= _NEAR_DEG
+            for one in told.coupons
+        ):
+            _warn(
+                f"step {quoted(step.name)} mills at {plain(step.energy)} eV and {plain(step.incidence)} deg, far from"
+                " every coupon: what the energy and the angle do is not known from them, and its sd is wider"
+            )
+
+
+def _warn(text: str) -> None:
+    warnings.warn(text, StackmillWarning, stacklevel=3)
 
 
 def _placed(document: Document[Any], complaints: Iterable[Complaint]) -> list[InputError]:

@@ -11,6 +11,7 @@ from typing import TypeVar
 from pydantic import BaseModel
 
 from stackmill.documents import wording
+from stackmill.documents.calibration import CalibrationFile
 from stackmill.documents.job import JobFile
 from stackmill.documents.marks import Block, Items, Node, Scalar, Tree, read_tree
 from stackmill.documents.material import MaterialsFile
@@ -23,9 +24,16 @@ from stackmill.documents.stack import Stack
 from stackmill.errors import FileAccessError, InputError, InputErrors, Place
 from stackmill.frozen import frozen
 
-_KINDS = {"layers": "stack", "steps": "recipe", "gas": "mill", "materials": "materials", "stack": "job"}
+_KINDS = {
+    "layers": "stack",
+    "steps": "recipe",
+    "coupons": "calibration",
+    "gas": "mill",
+    "materials": "materials",
+    "stack": "job",
+}
 _TELLING = {kind: key for key, kind in _KINDS.items()}
-_BOUND = ("stack", "mill", "recipe")
+_BOUND = ("stack", "mill", "recipe", "calibration")
 M = TypeVar("M", bound=BaseModel)
 
 
@@ -41,6 +49,7 @@ class JobDocuments:
     mill: Document[Mill]
     recipe: Document[Recipe]
     materials: tuple[Document[MaterialsFile], ...] = ()
+    calibration: Document[CalibrationFile] | None = None
     is_default_mill: bool = False
     errors: tuple[InputError, ...] = ()
 
@@ -49,13 +58,18 @@ class JobDocuments:
         job = {k: v for k, v in self.job.tree.plain().items() if k not in (*_BOUND, "materials")}
         grid = self.mill.model.profile and self.mill.model.profile.grid
         beam_map: dict[str, object] = {"beam map": [grid.x_nm, grid.y_nm, grid.relative]} if grid else {}
-        return beam_map | {
-            "job": job,
-            "stack": self.stack.tree.plain(),
-            "mill": self.mill.tree.plain(),
-            "recipe": self.recipe.tree.plain(),
-            "materials": [document.tree.plain() for document in self.materials],
-        }
+        calibration: dict[str, object] = {"calibration": self.calibration.tree.plain()} if self.calibration else {}
+        return (
+            beam_map
+            | calibration
+            | {
+                "job": job,
+                "stack": self.stack.tree.plain(),
+                "mill": self.mill.tree.plain(),
+                "recipe": self.recipe.tree.plain(),
+                "materials": [document.tree.plain() for document in self.materials],
+            }
+        )
 
 
 def read_source(source: str | Path) -> tuple[Tree, Path]:
@@ -74,7 +88,7 @@ def read_source(source: str | Path) -> tuple[Tree, Path]:
 def kind_of(tree: Tree) -> str | None:
     """Which kind of file a tree is, by the key that only that kind has, or one like it; else None."""
     keys = tree.root.values if isinstance(tree.root, Block) else {}
-    order = ("stack", "layers", "steps", "gas", "materials")
+    order = ("stack", "layers", "steps", "coupons", "gas", "materials")
     near = [wording.nearest(key, order) for key in keys]
     return next((_KINDS[key] for known in (keys, near) for key in order if key in known), None)
 
@@ -99,11 +113,14 @@ class FileReader:
         mill = self._with_map(self._mill_or_default() if is_default_mill else self._bound(Mill, "mill"))
         recipe = self._bound(Recipe, "recipe")
         materials = [self._one(MaterialsFile, "materials", node) for node in self._material_nodes()]
+        calibration = self._bound(CalibrationFile, "calibration")
         self._refuse_unused()
         if job is None or stack is None or mill is None or recipe is None or None in materials:
             return None
+        if calibration is None and self.tree.has(("calibration",)):
+            return None
         found = tuple(document for document in materials if document is not None)
-        return JobDocuments(job, stack, mill, recipe, found, is_default_mill, tuple(self.errors))
+        return JobDocuments(job, stack, mill, recipe, found, calibration, is_default_mill, tuple(self.errors))
 
     def _mill_or_default(self) -> Document[Mill] | None:
         tree = read_tree(DEFAULT_MILL, "default mill")

@@ -10,6 +10,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING
 
 from stackmill.documents import wording
+from stackmill.documents.calibration import CalibrationFile, CouponRate
 from stackmill.documents.job import Goal, Keep
 from stackmill.documents.marks import Block, Items, Scalar, Tree, read_tree
 from stackmill.documents.mill import Mill
@@ -48,7 +49,8 @@ class Job:
     stack, mill, recipe: with the materials' own names where the files use aliases; materials: every material
     that stack and recipe name; column_map: what lies under each point; documents: the files, for places in
     messages; inputs_sha256: of all they say; is_default_mill: no mill was given; notes: for the reader;
-    beam_share (regions,): the beam's current density in each region, as a share of the mill's.
+    beam_share (regions,): the beam's current density in each region, as a share of the mill's; calibration: what
+    coupons said of this mill on this day.
     """
 
     title: str
@@ -66,6 +68,7 @@ class Job:
     is_default_mill: bool = False
     notes: tuple[str, ...] = ()
     beam_share: tuple[float, ...] = ()
+    calibration: CalibrationFile | None = None
 
     @cached_property
     def milled_materials(self) -> Mapping[str, Material]:
@@ -74,8 +77,10 @@ class Job:
 
     @cached_property
     def rated_materials(self) -> Mapping[str, Material]:
-        """The milled materials, then those that a milled one is a multiple or a mixture of, and so on."""
+        """The milled materials and those of coupons, then those that one is a multiple or a mixture of, and so on."""
         rated = dict(self.milled_materials)
+        for coupon in self.coupons:
+            rated.setdefault(coupon.material, self.materials[coupon.material])
         ask = list(rated.values())
         while ask:
             material = ask.pop()
@@ -85,6 +90,11 @@ class Job:
                     rated[name] = self.library.get(name)
                     ask.append(rated[name])
         return rated
+
+    @property
+    def coupons(self) -> tuple[CouponRate, ...]:
+        """The coupons of the calibration, if there is one."""
+        return self.calibration.coupons if self.calibration else ()
 
     def feature_index(self, layer: str, feature: str) -> int:
         """The number in the column map's table of a feature that is in a layer. Raises KeyError without one."""
@@ -120,11 +130,13 @@ def load_job(
     current_density: str | None = None,
     motion: str | None = None,
     confidence: str | None = None,
+    calibration: str | Path | None = None,
 ) -> Job:
     """Read a job, or a lone stack with the default mill and a one-step recipe.
 
     source: a path, `-` for standard input, or the text itself. overrides: as of `--set`. goal to motion: for
-    a lone stack only. Raises InputErrors with every complaint about every file, FileAccessError, UsageError.
+    a lone stack only; calibration: a file that stands in for the job's. Raises InputErrors with every complaint
+    about every file, FileAccessError, UsageError.
     """
     options = {
         "goal": goal,
@@ -140,6 +152,8 @@ def load_job(
     ]
     if confidence is not None:
         changes.append(Override(("confidence",), confidence, "--confidence"))
+    if calibration is not None:
+        changes.append(Override(("calibration",), str(Path(calibration).absolute()), "--calibration"))
     if kind_of(tree) == "stack":
         tree, changes = _around_stack(tree, changes, options)
     else:
@@ -223,7 +237,7 @@ def _refuse_other_kind(tree: Tree) -> None:
 
 def _job(reader: FileReader) -> Job:
     """The job of some files. Raises InputErrors with whatever is wrong in them or does not fit together."""
-    from stackmill.jobs.checks import check_fit
+    from stackmill.jobs.checks import check_fit, warn_outside_coupons
 
     documents = reader.read()
     if documents is None:
@@ -239,6 +253,7 @@ def _job(reader: FileReader) -> Job:
         raise _all(errors, reader)
     assert fit.column_map is not None
     assert found.library is not None
+    warn_outside_coupons(documents)
     job = documents.job.model
     contents = json.dumps(documents.contents(), sort_keys=True, ensure_ascii=False)
     return Job(
@@ -257,11 +272,21 @@ def _job(reader: FileReader) -> Job:
         is_default_mill=documents.is_default_mill,
         notes=fit.notes,
         beam_share=fit.beam_share,
+        calibration=_renamed_calibration(documents, found),
     )
 
 
 def _all(errors: Sequence[InputError], reader: FileReader) -> InputErrors:
     return InputErrors(wording.in_order(errors, [tree.file for tree in reader.trees]))
+
+
+def _renamed_calibration(documents: JobDocuments, found: Found) -> CalibrationFile | None:
+    """The calibration with each material under its own name."""
+    if documents.calibration is None:
+        return None
+    told = documents.calibration.model
+    coupons = (one.model_copy(update={"material": found.own(one.material)}) for one in told.coupons)
+    return told.model_copy(update={"coupons": tuple(coupons)})
 
 
 def _renamed_stack(stack: Stack, found: Found) -> Stack:

@@ -127,6 +127,9 @@ def _named(documents: JobDocuments) -> Iterator[tuple[Document[Any], str, KeyPat
         yield documents.stack, name, path
     for name, path in _in_recipe(documents.recipe.model):
         yield documents.recipe, name, path
+    if documents.calibration is not None:
+        for k, coupon in enumerate(documents.calibration.model.coupons):
+            yield documents.calibration, coupon.material, ("coupons", k, "material")
 
 
 def in_stack(stack: Stack) -> Iterator[tuple[str, KeyPath]]:

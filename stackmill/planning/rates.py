@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
 
+from stackmill.documents.calibration import CouponRate
 from stackmill.documents.recipe import Beam, Process
 from stackmill.jobs import Job
 from stackmill.materials.material import Material
@@ -34,7 +36,7 @@ class RateRow:
 
 def rate_rows(job: Job) -> list[RateRow]:
     """A row for each step that lowers and each material of the job."""
-    model = rate_model(job.mill, job.recipe.steps, job.rated_materials)
+    model = rate_model(job.mill, job.recipe.steps, job.rated_materials, job.coupons)
     rows: list[RateRow] = []
     for i, step in enumerate(job.recipe.steps):
         if isinstance(step, Beam):
@@ -62,7 +64,7 @@ def _beam_rows(job: Job, model: RateModel, i: int, step: Beam) -> list[RateRow]:
                 yield_atoms_per_ion=untaught * float(shape.ratio(np.radians(step.incidence))) * taught,
                 rate_nm_per_min=60.0 * float(best[m]),
                 rate_rel_sd=float(sd[m]),
-                source=basis(material),
+                source=basis(material, job.coupons),
             )
         )
     return rows
@@ -78,8 +80,12 @@ def _process_rows(job: Job, step: Process) -> list[RateRow]:
     return rows
 
 
-def basis(material: Material) -> str:
+def basis(material: Material, coupons: Sequence[CouponRate] = ()) -> str:
     """What a material's rate rests on, in a few words."""
+    own = [one for one in coupons if one.material == material.name]
+    if own:
+        where = ", ".join(f"{one.name!r} at {one.energy:.4g} eV and {one.incidence:.4g} deg" for one in own)
+        return f"coupon{'s' if len(own) > 1 else ''} {where}"
     if material.measured_rates:
         where = ", ".join(f"{m.energy_ev:.4g} eV and {m.incidence_deg:.4g} deg" for m in material.measured_rates)
         return f"measured on this mill at {where}"

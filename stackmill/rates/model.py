@@ -14,6 +14,7 @@ from collections.abc import Mapping, Sequence
 import numpy as np
 from numpy.typing import NDArray
 
+from stackmill.documents.calibration import CouponRate
 from stackmill.documents.mill import Mill
 from stackmill.documents.recipe import Beam
 from stackmill.frozen import frozen
@@ -122,11 +123,13 @@ class RateModel:
         return found
 
 
-def rate_model(mill: Mill, steps: Sequence[object], materials: Mapping[str, Material]) -> RateModel:
-    """The rate model of a recipe on a mill, with every measured rate of the materials taken in.
+def rate_model(
+    mill: Mill, steps: Sequence[object], materials: Mapping[str, Material], coupons: Sequence[CouponRate] = ()
+) -> RateModel:
+    """The rate model of a recipe on a mill, with every measured rate of the materials and every coupon taken in.
 
     A material known as a multiple of another's rate learns from the other's measured rates where that one is
-    among the materials too.
+    among the materials too. coupons: of this mill and day; their materials must be among `materials`.
     """
     names = tuple(materials)
     known: dict[tuple[object, ...], BeamRates] = {}
@@ -148,7 +151,21 @@ def rate_model(mill: Mill, steps: Sequence[object], materials: Mapping[str, Mate
         for material in materials.values()
         for measured in material.measured_rates
     )
+    evidence += tuple(
+        coupon_evidence(mill, materials[coupon.material], names, coupon, len(prior.names)) for coupon in coupons
+    )
     return RateModel(names, beams, current, mill.doubly_charged.value, condition(prior, evidence), evidence)
+
+
+def coupon_evidence(
+    mill: Mill, material: Material, names: Sequence[str], coupon: CouponRate, parameters: int
+) -> RateEvidence:
+    """A coupon as one row: milled with the very current, dial and charge share of the day."""
+    current = Measure(coupon.current_density.value)
+    told = LabRate(coupon.rate, coupon.energy, coupon.incidence, current, same_day=True)
+    row = _evidence(mill, material, names, told, parameters, {})
+    what = f"coupon {coupon.name}: {row.what.removesuffix(' %')} %"
+    return RateEvidence(row.design, row.residual, row.noise_sd / float(np.sqrt(coupon.weight)), what)
 
 
 def setting(step: Beam) -> tuple[object, ...]:

@@ -26,7 +26,25 @@ def why_rates(job: Job) -> str:
             f" at {m.energy_ev:.4g} eV, {m.incidence_deg:.4g} deg, {m.current_density.value:.4g} mA/cm2, {_day(m)}"
             for m in material.measured_rates
         ]
+    lines += _coupon_lines(job)
     return "\n".join(lines)
+
+
+def _coupon_lines(job: Job) -> list[str]:
+    """The calibration a job rests on: where it comes from, and each coupon."""
+    if job.calibration is None:
+        return []
+    told = job.calibration
+    lines = [
+        f"- calibration {told.title}: made {told.made} from {told.data} (sha256 {told.data_sha256[:12]}),"
+        f" {told.verdict}"
+    ]
+    return lines + [
+        f"    {one.name}: {one.material} {60 * one.rate.value:.4g} nm/min ± {100 * one.rate.rel_sd:.2g} % at"
+        f" {one.energy:.4g} eV, {one.incidence:.4g} deg, {one.current_density.value:.4g} mA/cm2,"
+        f" weight {100 * one.weight:.3g} %"
+        for one in told.coupons
+    ]
 
 
 def why_stops(table: StopTable, warnings: Sequence[str] = ()) -> str:

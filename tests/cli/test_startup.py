@@ -44,6 +44,7 @@ def test_help_loads_only_the_command_line(verb):
 
 
 LIGHT = {
+    "calibrate": ["stacks/unknown/coupons.csv", "--mill", "stacks/four-metal/mill.yaml"],
     "check": ["stacks/four-metal/look.yaml"],
     "materials": ["W"],
     "rates": ["stacks/four-metal/look.yaml"],

@@ -17,7 +17,7 @@ from stackmill.errors import InputErrors
 from stackmill.jobs.files import kind_of
 
 ROOT = Path(__file__).parents[2]
-KINDS = ("stack", "mill", "recipe", "job", "materials")
+KINDS = ("stack", "mill", "recipe", "job", "materials", "calibration")
 SHIPPED = sorted([*(ROOT / "stacks").rglob("*.yaml"), *(ROOT / "tests/published/open_stack").glob("*.yaml")])
 BROKEN = ROOT / "tests/bad/files"
 

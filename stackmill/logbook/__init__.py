@@ -1,0 +1,1 @@
+"""What is learnt at the machine: coupons, and the run's own record."""
