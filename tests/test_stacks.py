@@ -50,7 +50,7 @@ def test_the_plugs_that_stand_are_about_three_per_cent_of_the_goal():
 
 @pytest.mark.regression
 def test_covered_pads_keep_their_metal_and_the_look_makes_the_window():
-    table = stop_table(load_job(ROOT / "stacks/two-metal/job.yaml"))
+    table = stop_table(load_job(ROOT / "stacks/two-metal/job.yaml"), flat=True)
     pads = [row for row in table.rows if row.region == "bond pad" and row.layer == "via 1"]
     assert pads
     assert all(row.time_s is None for row in pads)
@@ -60,7 +60,7 @@ def test_covered_pads_keep_their_metal_and_the_look_makes_the_window():
 
 @pytest.mark.regression
 def test_copper_lands_inside_the_via_only_by_its_looks():
-    table = stop_table(load_job(ROOT / "stacks/copper/job.yaml"))
+    table = stop_table(load_job(ROOT / "stacks/copper/job.yaml"), flat=True)
     assert table.window.leg == 3
     assert table.window.best_chance > 0.85
     assert table.window.lost_s - table.window.exposed_s < 120  # a stop of seconds, not minutes

@@ -16,6 +16,8 @@ _LINE = re.compile(r"\s*(?P<axis>[A-Za-z]+)\s*=\s*(?P<at>.+?)\s*")
 def asked_for(at: Sequence[str], reach: str | None, *, at_stop: bool) -> When | None:
     """The moments asked for; None for none. Raises UsageError."""
     times = [part for text in at for part in text.split(",") if part.strip()]
+    if at and not times:
+        raise UsageError("--at names no time", cure="write --at 10min,20min")
     if not times and reach is None and not at_stop:
         return None
     found = []

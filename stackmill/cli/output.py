@@ -53,6 +53,12 @@ def picture_suffix(plot: str) -> str:
     return suffix
 
 
+def archive_suffix(save: str) -> None:
+    """Refuse an archive's file that is not named as one. Raises UsageError."""
+    if Path(save).suffix.lower() != ".npz":
+        raise UsageError(f"surfaces are not kept as {Path(save).name!r}", cure="end it in .npz")
+
+
 def refuse_taken(output: str, *, force: bool) -> None:
     """Refuse a file that is there already, before the work that would fill it. Raises FileAccessError."""
     if not force and Path(output).exists():

@@ -37,7 +37,12 @@ Section = Annotated[
 ]
 At = Annotated[list[str] | None, typer.Option("--at", help="Moments on the clock, e.g. 10min,20min.", metavar="TIMES")]
 AtReach = Annotated[
-    str | None, typer.Option("--at-reach", help="The moment this layer's top is clear.", metavar="LAYER")
+    str | None,
+    typer.Option(
+        "--at-reach",
+        help="When this layer's top is down over the goal's clear share (or 95 %) of the region.",
+        metavar="LAYER",
+    ),
 ]
 AtStop = Annotated[
     bool, typer.Option("--at-stop", help="The stop that `stops` proposes (this is what you get without a moment).")
@@ -92,6 +97,7 @@ def relief(
     """
     from stackmill.cli.moments import asked_for, section_line
     from stackmill.cli.output import (
+        archive_suffix,
         chosen_format,
         gathered_warnings,
         paper,
@@ -103,12 +109,14 @@ def relief(
     )
     from stackmill.cli.progress import progress
     from stackmill.jobs import load_job, overrides
-    from stackmill.planning.relief import relief_tables
+    from stackmill.planning.relief import How, relief_tables
     from stackmill.report import relief as report
 
     form = chosen_format(format_, output)
     when, cut = asked_for(at or [], at_reach, at_stop=at_stop), section_line(section)
     suffix = picture_suffix(plot) if plot is not None else ""
+    if save is not None:
+        archive_suffix(save)
     for target in (plot, save):
         if target is not None:
             refuse_taken(target, force=force)
@@ -124,17 +132,16 @@ def relief(
             confidence=confidence,
             calibration=calibration,
         )
-        found = relief_tables(
-            job, when=when, section=cut, cell=cell, region=region, points=grid,
-            second_order=order == 2, seed=seed, watch=watch,
-        )  # fmt: skip
+        how = How(cut, cell, grid, order == 2)
+        found = relief_tables(job, when=when, how=how, region=region, seed=seed, watch=watch)
     say_notes(job.notes, quiet=quiet)
-    if save is not None:
-        write_bytes(report.as_npz(found[0]), save, force=force)
-    if plot is not None:
+    first = found[0]
+    if save is not None and first.run.frames:
+        write_bytes(report.as_npz(first), save, force=force)
+    if plot is not None and first.run.frames:
         from stackmill.report import plots
 
-        picture = plots.draw_cell(found[0]) if cell else plots.draw_section(found[0])
+        picture = plots.draw_cell(first) if cell else plots.draw_section(first)
         write_bytes(plots.render(picture, suffix), plot, force=force)
     if form is Format.json:
         text = report.as_json(found, warned, paper(output, ascii_only))

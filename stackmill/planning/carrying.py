@@ -18,7 +18,7 @@ from numpy.typing import NDArray
 from stackmill.ensemble.run import Descent, Ensemble
 from stackmill.frozen import frozen
 from stackmill.planning.kriging import learn
-from stackmill.planning.surfaces import RUNS, Surfaces
+from stackmill.planning.surfaces import Surfaces
 from stackmill.relief.evolve import evolve
 from stackmill.relief.gridding import Cut, Grid, Layout, cell_grid, section_grid
 from stackmill.relief.watch import Watch
@@ -27,30 +27,36 @@ Array = NDArray[np.float64]
 Index = NDArray[np.intp]
 Mask = NDArray[np.bool_]
 
+RUNS, CELL_RUNS = 64, 24  # draws whose surfaces are run, of a section and of a cell
 SHARES = np.array([0.01, 0.05, 0.15, 0.3, 0.5, 0.7, 0.85, 0.95, 0.99])  # of a column's points, first down first
 PARTS = np.diff(np.concatenate([[0.0], 0.5 * (SHARES[1:] + SHARES[:-1]), [1.0]]))  # of its area, one each
-_DRAW_POINTS, _DRAW_CELL_POINTS = 200, 64
+_DRAW_POINTS, _DRAW_CELL_POINTS = 200, 128
 _AS_WIDE = 0.9  # of a column's own half-width: what a section must cut of it to stand for it
 _LONGER = 1.25  # surfaces are followed to this multiple of the last time by columns
-_ENOUGH = 16  # draws that reach a level, to learn from
+_ENOUGH = 12  # draws that reach a level, to learn from
+_GRID_LEFT = 0.5  # of the difference between the two grids: what the finer one may still be off by
 _LEAST_SHARE = 0.05  # of the median: times shorter than this are not divided by
 _SAME = 1e-7
 
 
 @frozen
 class Carried:
-    """Moments of one level: best_s (Q,) at best values, draws_s (Q, D); error_s: sd of what carrying adds."""
+    """Moments of one level: best_s (Q,) at best values, draws_s (Q, D).
+
+    error_s (Q,): sd of what carrying adds, with what the grid may still be off by.
+    """
 
     best_s: Array
     draws_s: Array
-    error_s: float
+    error_s: Array
 
 
 @frozen
 class SurfaceTimes:
     """What one region's surface says.
 
-    cut: the section, None for the cell; points: of the finer grid; columns: those it can speak for; layer[c, k]:
+    cut: the section, None for the cell; points: of the finer grid, along x; runs: draws it was run in; columns: those
+    it can speak for; unresolved: share of the region's area in columns too narrow for the finer grid; layer[c, k]:
     when a column's centre gets to a layer's top (Q = 1); upper, spoilt: by their rows in the outcome, when each
     of SHARES of the column's points is down.
     """
@@ -58,7 +64,9 @@ class SurfaceTimes:
     region: int
     cut: Cut | None
     points: int
+    runs: int
     columns: frozenset[int]
+    unresolved: float
     layer: dict[tuple[int, int], Carried]
     upper: dict[int, Carried]
     spoilt: dict[int, Carried]
@@ -98,11 +106,12 @@ def surface_times(ensemble: Ensemble, region: int, cut: Cut | None, *, watch: Wa
     """
     surfaces = Surfaces(ensemble, region, cut)
     fine, coarse = _layouts(surfaces)
-    columns = _represented(ensemble, region, fine)
+    columns = tuple(c for c in _represented(ensemble, region, fine) if c in coarse.of_region)
     levels = _levels(ensemble, region, columns)
     end = _LONGER * max([level.flat_best_s for level in levels if np.isfinite(level.flat_best_s)], default=0.0)
     best = [_moments(surfaces, laid, levels, ensemble.best_descent, 0, end, watch) for laid in (fine, coarse)]
-    chosen = np.arange(min(RUNS, len(ensemble.weights))) * (len(ensemble.weights) // min(RUNS, len(ensemble.weights)))
+    runs = min(CELL_RUNS if cut is None else RUNS, len(ensemble.weights))
+    chosen = np.arange(runs) * (len(ensemble.weights) // runs)
     down = ensemble.descent(ensemble.z[:, chosen])
     drawn = []
     for d, number in enumerate(chosen.tolist()):
@@ -112,7 +121,10 @@ def surface_times(ensemble: Ensemble, region: int, cut: Cut | None, *, watch: Wa
         if watch:
             watch.done((d + 1) / len(chosen))
     carried = _carried(ensemble, region, levels, columns, best, drawn, chosen)
-    return _sorted(region, cut, fine, columns, levels, carried)
+    area = ensemble.inputs.job.column_map.regions[region].area
+    missing = 1.0 - float(area[np.unique(fine.of_region)].sum()) if cut is None else 0.0
+    layer, upper, spoilt = _sorted(levels, carried)
+    return SurfaceTimes(region, cut, fine.which.shape[1], runs, frozenset(columns), missing, layer, upper, spoilt)
 
 
 def _layouts(surfaces: Surfaces) -> tuple[Layout, Layout]:
@@ -254,36 +266,38 @@ def _fit(x_best: Array, x: Array, y_best: Array, y_coarse: Array, y: Array, chos
     All rates twice as fast halve every time, so what is learnt is the moment as a multiple of the column's own
     time, from the first and the last column's times as such multiples.
     """
-    own = np.maximum(x[0], _LEAST_SHARE * float(np.median(np.abs(x[0]))))
+    usual = float(np.median(np.abs(x[0])))
+    if not 0.0 < usual < np.inf:
+        return None
+    own = np.maximum(x[0], _LEAST_SHARE * usual)
     with np.errstate(invalid="ignore"):
         others = (x[1:] / own).T
         multiple = (y / own[chosen]).T
     met = np.isfinite(multiple).all(axis=1) & np.isfinite(others[chosen]).all(axis=1)
     if met.sum() < _ENOUGH or not (np.isfinite(y_best).all() and np.isfinite(y_coarse).all()):
         return None
-    finer = (y_best - y_coarse) / max(float(x_best[0]), _LEAST_SHARE * float(np.median(own)))
+    finer = (y_best - y_coarse) / max(float(x_best[0]), _LEAST_SHARE * usual)
     if np.abs(multiple[met] - 1.0).max() < _SAME and np.abs(finer).max() < _SAME:
-        return Carried(y_best, np.repeat(x[:1], len(y_best), axis=0), 0.0)
+        return Carried(y_best, np.repeat(x[:1], len(y_best), axis=0), np.zeros(len(y_best)))
     learnt = learn(others[chosen[met]], multiple[met])
     known = np.isfinite(others).all(axis=1)
     draws = np.full((len(y_best), x.shape[1]), np.inf)
     left_out = learnt.left_out[np.arange(int(known.sum())) % len(learnt.left_out)]
     draws[:, known] = (own[known, None] * (learnt.at(others[known]) + left_out + finer)).T
-    error = learnt.left_out * own[chosen[met], None]
-    return Carried(y_best, draws, float(np.sqrt(np.mean(error**2))))
+    error = np.sqrt(np.mean(np.square(learnt.left_out * own[chosen[met], None]), axis=0))
+    return Carried(y_best, draws, np.hypot(error, _GRID_LEFT * np.abs(y_best - y_coarse)))
+
+
+_Told = dict[int, Carried]
 
 
 def _sorted(
-    region: int,
-    cut: Cut | None,
-    laid: Layout,
-    columns: Sequence[int],
-    levels: Sequence[_Level],
-    carried: Sequence[Carried | None],
-) -> SurfaceTimes:
+    levels: Sequence[_Level], carried: Sequence[Carried | None]
+) -> tuple[dict[tuple[int, int], Carried], _Told, _Told]:
+    """The levels that were carried: layers' tops, upper levels and places to spoil."""
     layer: dict[tuple[int, int], Carried] = {}
-    upper: dict[int, Carried] = {}
-    spoilt: dict[int, Carried] = {}
+    upper: _Told = {}
+    spoilt: _Told = {}
     for level, one in zip(levels, carried, strict=True):
         if one is None:
             continue
@@ -291,4 +305,4 @@ def _sorted(
             layer[level.column, level.row] = one
         else:
             (upper if level.kind == "upper" else spoilt)[level.row] = one
-    return SurfaceTimes(region, cut, laid.which.shape[1], frozenset(columns), layer, upper, spoilt)
+    return layer, upper, spoilt

@@ -6,24 +6,29 @@ columns', and the window is found again, until no column decides that only its o
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import replace
 
 import numpy as np
 from numpy.typing import NDArray
 
+from stackmill.columns.columns import RegionColumns
 from stackmill.ensemble.run import Ensemble, Outcome, first_lost
 from stackmill.errors import InputError
 from stackmill.frozen import frozen
-from stackmill.planning.carrying import PARTS, Carried, SurfaceTimes, spoken_for, surface_times
+from stackmill.jobs import Job
+from stackmill.planning.carrying import PARTS, SHARES, Carried, SurfaceTimes, spoken_for, surface_times
+from stackmill.planning.surfaces import along_the_beam
 from stackmill.planning.windows import Window, find_window
-from stackmill.relief.gridding import Cut
+from stackmill.relief.gridding import Cut, columns_along
 from stackmill.relief.watch import Watch
 from stackmill.timing.fall import area_quantile
 
 Array = NDArray[np.float64]
 
 _ROUNDS = 4
+_MOST_LINES = 3  # in a region and round
+_EVEN_LINES = 8  # tried across the cell besides those through columns' centres
 
 Doubtful = Callable[[Ensemble, Window], Sequence[tuple[int, int]]]
 """Gives the deciding columns of a window whose own falls are not to be trusted until they decide."""
@@ -58,8 +63,7 @@ def correct(
     unsaid: dict[tuple[int, int], str] = {}
     window = find_window(ensemble, confidence)
     for _ in range(_ROUNDS):
-        spoken = {(s.region, c) for s in surfaces for c in s.columns}
-        open_ = [where for where in doubtful(ensemble, window) if where not in spoken and where not in unsaid]
+        open_ = _open(flat, doubtful(ensemble, window), surfaces, unsaid)
         if not open_:
             break
         for region, cut in _cuts(flat, open_, cell=cell):
@@ -67,31 +71,49 @@ def correct(
                 surfaces.append(surface_times(flat, region, cut, watch=watch))
             except InputError as error:
                 unsaid |= {where: error.what for where in open_ if where[0] == region}
-        spoken = {(s.region, c) for s in surfaces for c in s.columns}
-        unsaid |= {where: _why_not(flat, where) for where in open_ if where not in spoken and where not in unsaid}
+        unsaid |= {where: _why_not(flat, where) for where in _open(flat, open_, surfaces, unsaid)}
         ensemble = replace(
             flat,
             outcome=_with(flat, flat.outcome, surfaces, best=False),
             best_outcome=_with(flat, flat.best_outcome, surfaces, best=True),
         )
         window = find_window(ensemble, confidence)
-    still = set(doubtful(ensemble, window))
+    still = doubtful(ensemble, window)
+    left = dict.fromkeys(_open(flat, still, surfaces, unsaid), "too many columns decide in turn")
     return Correction(
         ensemble,
         window,
         tuple(surfaces),
-        tuple((w, why) for w, why in unsaid.items() if w in still),
+        tuple((where, why) for where, why in (unsaid | left).items() if where in still),
         _error_s(flat, window, surfaces),
     )
 
 
+def _open(
+    flat: Ensemble,
+    doubtful: Sequence[tuple[int, int]],
+    surfaces: Sequence[SurfaceTimes],
+    unsaid: Mapping[tuple[int, int], str],
+) -> list[tuple[int, int]]:
+    """The doubtful columns (region, column) that no surface has told a deciding moment of, and nothing is said of."""
+    told = {flat.outcome.wanted[row] for s in surfaces for row in s.upper}
+    told |= {flat.outcome.spoilt[row].place for s in surfaces for row in s.spoilt}
+    return [where for where in doubtful if where not in told and where not in unsaid]
+
+
 def _error_s(flat: Ensemble, window: Window, surfaces: Sequence[SurfaceTimes]) -> float:
+    """What carrying adds to the moments that decide: of the part that makes the goal clear, and of the first lost."""
+    goal = flat.inputs.job.goal
+    assert goal is not None
+    part = int(np.argmin(np.abs(SHARES - goal.clear)))
     errors = [0.0]
     for surface in surfaces:
-        errors += [one.error_s for row, one in surface.upper.items() if flat.outcome.wanted[row] == window.exposed_by]
-        errors += [
-            one.error_s for row, one in surface.spoilt.items() if flat.outcome.spoilt[row].place == window.lost_by
-        ]
+        for row, one in surface.upper.items():
+            if flat.outcome.wanted[row] == window.exposed_by:
+                errors.append(float(one.error_s[part]))
+        for row, one in surface.spoilt.items():
+            if flat.outcome.spoilt[row].place == window.lost_by:
+                errors.append(float(one.error_s[0]))
     return max(errors)
 
 
@@ -99,6 +121,8 @@ def _why_not(ensemble: Ensemble, where: tuple[int, int]) -> str:
     region = ensemble.inputs.job.column_map.regions[where[0]]
     if region.placeless.any():
         return "a pattern density in its region has no place"
+    if not along_the_beam(ensemble.inputs.job, None):
+        return "no straight section along the beam cuts it as wide as it is"
     return "no straight section through its centre cuts it as wide as it is; --cell would"
 
 
@@ -114,15 +138,44 @@ def _cuts(ensemble: Ensemble, open_: Sequence[tuple[int, int]], *, cell: bool) -
         if cell:
             found.append((r, None))
             continue
-        centres = [region.centre_nm[c].tolist() for c in sorted(wanted)]
-        speaks = {cut: set(spoken_for(ensemble, r, cut)) for x, y in centres for cut in (Cut("y", y), Cut("x", x))}
-        while wanted:
-            best = max(speaks, key=lambda cut: (len(speaks[cut] & wanted), len(speaks[cut])))
+        speaks = {cut: set(spoken_for(ensemble, r, cut)) for cut in _lines(ensemble, r, wanted)}
+        vias = {cut: crosses_a_via(ensemble.inputs.job, r, cut) for cut in speaks}
+        for _ in range(_MOST_LINES):
+            best = max(speaks, key=lambda cut: _worth(region, speaks[cut], wanted, via=vias[cut]))
             if not speaks[best] & wanted:
                 break
             found.append((r, best))
             wanted -= speaks[best]
     return found
+
+
+def _worth(region: RegionColumns, speaks: set[int], wanted: set[int], *, via: bool) -> tuple[float, bool, int]:
+    """How good a line is: the wanted area it speaks for, whether it leaves vias alone, what else it speaks for."""
+    area = float(region.area[list(speaks & wanted)].sum())
+    return round(area, 3), not via, len(speaks)
+
+
+def _lines(ensemble: Ensemble, r: int, wanted: set[int]) -> list[Cut]:
+    """Lines to try: through the wanted columns' centres, and some others, along the beam where that matters."""
+    column_map = ensemble.inputs.job.column_map
+    centres = [column_map.regions[r].centre_nm[c].tolist() for c in sorted(wanted)]
+    lines = [cut for x, y in centres for cut in (Cut("y", y), Cut("x", x))]
+    for k in range(_EVEN_LINES):
+        share = (k + 0.5) / _EVEN_LINES
+        lines += [Cut("y", share * column_map.cell[1]), Cut("x", share * column_map.cell[0])]
+    return [cut for cut in dict.fromkeys(lines) if along_the_beam(ensemble.inputs.job, cut)] or lines[:2]
+
+
+def crosses_a_via(job: Job, r: int, cut: Cut) -> bool:
+    """Whether a line meets a via, which a section takes for a wall."""
+    region, cell = job.column_map.regions[r], job.column_map.cell
+    vias = {
+        n
+        for n, (layer, name) in enumerate(job.column_map.features)
+        for feature in job.stack.layers[layer].features
+        if feature.name == name and feature.via is not None
+    }
+    return bool(vias and np.isin(region.feature[list(columns_along(region, cell, cut))], list(vias)).any())
 
 
 def _with(flat: Ensemble, outcome: Outcome, surfaces: Sequence[SurfaceTimes], *, best: bool) -> Outcome:

@@ -15,7 +15,8 @@ from stackmill.ensemble.run import run as run_ensemble
 from stackmill.errors import InputError, StackmillWarning, UsageError
 from stackmill.frozen import frozen
 from stackmill.jobs import Job
-from stackmill.planning.surfaces import Surfaces
+from stackmill.planning.stops import stop_table
+from stackmill.planning.surfaces import Surfaces, along_the_beam
 from stackmill.planning.windows import find_window
 from stackmill.relief.evolve import Frame, Reaching, Run, evolve
 from stackmill.relief.gridding import CELLS_ACROSS, Cut, Grid, cell_grid, columns_along, section_grid
@@ -32,11 +33,12 @@ _LOOK_BEYOND = 1.5  # a section runs on to this multiple of the last moment, to 
 
 @frozen
 class FeatureRelief:
-    """One feature at one moment: what it does, with the grid's own error of its height (None without one)."""
+    """One feature at one moment: what it does, with the grid's own errors of height and slope (None without one)."""
 
     time_s: float
     standing: Standing
     height_error_nm: float | None
+    slope_error_deg: float | None
 
 
 @frozen
@@ -87,77 +89,67 @@ def patterned(job: Job) -> tuple[int, ...]:
     return tuple(sorted(found, key=lambda r: (regions[r].name not in goal, r)))
 
 
+@frozen
+class How:
+    """How a surface is run. section, cell: by default a section through the columns that decide; points: of the
+    grid, along the section or x; second_order: finer facets from the same grid.
+    """
+
+    section: Cut | None = None
+    cell: bool = False
+    points: int | None = None
+    second_order: bool = False
+
+
 def relief_tables(
     job: Job,
     *,
     when: When | None = None,
-    section: Cut | None = None,
-    cell: bool = False,
+    how: How | None = None,
     region: str | None = None,
-    points: int | None = None,
-    second_order: bool = False,
     seed: int = SEED,
     watch: Watch | None = None,
 ) -> tuple[Relief, ...]:
-    """`relief_table` of every patterned region, the goal's first; of one region if that is named."""
-    wanted: list[str | None] = [region]
-    if region is None and patterned(job):
-        wanted = [job.column_map.regions[r].name for r in patterned(job)]
-    return tuple(
-        relief_table(
-            job, when=when, section=section, cell=cell, region=name, points=points,
-            second_order=second_order, seed=seed, watch=watch,
-        )
-        for name in wanted
-    )  # fmt: skip
+    """Run the surface of every patterned region, the goal's first, at best values; or of one region, if named.
 
-
-def relief_table(
-    job: Job,
-    *,
-    when: When | None = None,
-    section: Cut | None = None,
-    cell: bool = False,
-    region: str | None = None,
-    points: int | None = None,
-    second_order: bool = False,
-    seed: int = SEED,
-    watch: Watch | None = None,
-) -> Relief:
-    """Run one region's surface through the recipe at best values, and measure it.
-
-    when: by default the proposed stop, or without a goal the recipe's end; section, cell: by default a section
-    through the columns that decide; region: by default the goal's first, or the first with features; points: of
-    the grid; watch: told the clock and the last moment now and then.
+    when: by default the stop that the stop table proposes, or without a goal the recipe's end; watch: told how
+    much is done now and then. After an interrupt the regions that were not begun are left out.
     """
-    if section is not None and cell:
+    how = how or How()
+    if how.section is not None and how.cell:
         raise UsageError("a section and the cell cannot both be run", cure="leave out --section or --cell")
-    ensemble = run_ensemble(job, draws=DRAWS if job.goal else 1, seed=seed)
-    r = _region(job, region)
-    _refuse_densities(job, r)
-    at_s = _moments(ensemble, when)
-    cut, why = (None, "") if cell else (section, "") if section else deciding_cut(ensemble, r)
-    _check_cut(job, cut)
-    surfaces = Surfaces(ensemble, r, cut)
-    reach = when.reach if when else None
-    grid = _grid(job, r, cut, points)
-    last = max(at_s, default=float(ensemble.best_outcome.end_s[0]))
-    until = _until(ensemble, reach) if reach else None
-    run = _run(surfaces, grid, at_s, until, last, second_order, cell=cell, watch=watch)
-    coarse = _run(surfaces, _coarser(job, r, cut, grid), at_s, until, last, second_order, cell=True, watch=None)
-    if until is not None and run.reached_s is None and run.finished:
-        raise InputError(f"{reach!r} is not reached in {job.column_map.regions[r].name!r} while the recipe lasts")
+    _check_cut(job, how.section)
+    chosen = [_region(job, region)] if region or not patterned(job) else list(patterned(job))
+    for r in chosen:
+        _refuse_densities(job, r)
+    ensemble, at_s = _moments(job, when, how, seed, watch)
     _warn(job)
-    return Relief(
-        ensemble,
-        r,
-        cut,
-        why,
-        grid,
-        run,
-        tuple(_moment(ensemble, r, run, f) for f in run.frames),
-        _rows(job, r, run, coarse),
-    )
+    found: list[Relief] = []
+    for r in chosen:
+        found.append(_one_region(ensemble, r, when, how, at_s, watch))
+        if not found[-1].run.finished:
+            break
+    return tuple(found)
+
+
+def _one_region(
+    ensemble: Ensemble, r: int, when: When | None, how: How, at_s: Sequence[float], watch: Watch | None
+) -> Relief:
+    job = ensemble.inputs.job
+    cut, why = (None, "") if how.cell else (how.section, "") if how.section else deciding_cut(ensemble, r)
+    surfaces = Surfaces(ensemble, r, cut)
+    grid = _grid(job, r, cut, how.points)
+    last = max(at_s, default=float(ensemble.best_outcome.end_s[0]))
+    until = _until(ensemble, when.reach) if when and when.reach else None
+    run = _run(surfaces, grid, at_s, until, last, how.second_order, run_on=not how.cell, watch=watch)
+    if until is not None and run.reached_s is None and run.finished:
+        raise InputError(f"{until[0]!r} is not reached in {job.column_map.regions[r].name!r} while the recipe lasts")
+    coarse = None
+    if run.finished:
+        rough = _grid(job, r, cut, max(4, grid.x_nm.shape[1] // 2))
+        coarse = _run(surfaces, rough, at_s, until, last, how.second_order, run_on=False, watch=None)
+    moments = tuple(_moment(ensemble, r, run, frame) for frame in run.frames)
+    return Relief(ensemble, r, cut, why, grid, run, moments, _rows(job, r, run, coarse))
 
 
 def _region(job: Job, name: str | None) -> int:
@@ -179,18 +171,21 @@ def _refuse_densities(job: Job, r: int) -> None:
         )
 
 
-def _moments(ensemble: Ensemble, when: When | None) -> list[float]:
-    job = ensemble.inputs.job
+def _moments(job: Job, when: When | None, how: How, seed: int, watch: Watch | None) -> tuple[Ensemble, list[float]]:
+    """The moments asked for, and the ensemble they belong to: the stop table's own where its stop is one."""
     at = list(when.at_s) if when else []
     if when is not None and when.stop and job.goal is None:
         raise UsageError("without a goal there is no stop to look at", cure="give --at, --at-reach or --goal")
-    if when is None or when.stop:
-        if job.goal is None:
-            at.append(float(ensemble.best_outcome.end_s[0]))
-        else:
-            window = find_window(ensemble, job.confidence)
-            at.append(window.best_stop_s if window.stop_s is None else window.stop_s)
-    return at
+    if (when is None or when.stop) and job.goal is not None:
+        table = stop_table(job, seed=seed, cell=how.cell, watch=watch)
+        window = table.window
+        assert window is not None
+        at.append(window.best_stop_s if window.stop_s is None else window.stop_s)
+        return table.ensemble, at
+    ensemble = run_ensemble(job, draws=DRAWS if job.goal else 1, seed=seed)
+    if when is None:
+        at.append(float(ensemble.best_outcome.end_s[0]))
+    return ensemble, at
 
 
 def _check_cut(job: Job, cut: Cut | None) -> None:
@@ -213,12 +208,13 @@ def deciding_cut(ensemble: Ensemble, r: int) -> tuple[Cut, str]:
         deciding = {where[1] for where in (window.exposed_by, window.lost_by) if where and where[0] == r}
     columns = [*sorted(deciding), *range(min(len(region.area), _LARGEST))]
     centres = np.round(region.centre_nm[columns] / _NEAR_NM) * _NEAR_NM
-    lines = dict.fromkeys(cut for x, y in centres.tolist() for cut in (Cut("y", y), Cut("x", x)))
+    tried = list(dict.fromkeys(cut for x, y in centres.tolist() for cut in (Cut("y", y), Cut("x", x))))
+    lines = [cut for cut in tried if along_the_beam(job, cut)] or tried
     met = {cut: columns_along(region, size, cut) for cut in lines}
     best = max(lines, key=lambda cut: (len(met[cut] & deciding), _features_crossed(region, met[cut]), len(met[cut])))
     names = " and ".join(region.label(c) for c in sorted(met[best] & deciding))
     if not names:
-        return best, "it meets the most features"
+        return best, "it meets the most features" if _features_crossed(region, met[best]) else ""
     return best, f"through {names}, which decide{'s' if len(met[best] & deciding) == 1 else ''}"
 
 
@@ -231,10 +227,6 @@ def _features_crossed(region: RegionColumns, columns: set[int]) -> int:
 def _grid(job: Job, r: int, cut: Cut | None, points: int | None) -> Grid:
     region, cell = job.column_map.regions[r], job.column_map.cell
     return cell_grid(region, cell, points) if cut is None else section_grid(region, cell, cut, points)
-
-
-def _coarser(job: Job, r: int, cut: Cut | None, grid: Grid) -> Grid:
-    return _grid(job, r, cut, max(4, grid.x_nm.shape[1] // 2))
 
 
 def _until(ensemble: Ensemble, layer: str) -> tuple[str, float]:
@@ -252,9 +244,10 @@ def _run(
     last: float,
     second_order: bool,
     *,
-    cell: bool,
+    run_on: bool,
     watch: Watch | None,
 ) -> Run:
+    """Run one surface; run_on: beyond the last moment, to see what vanishes."""
     down = surfaces.ensemble.best_descent
     terrain = surfaces.terrain(surfaces.layout(grid), down)
     reaching = None
@@ -263,7 +256,7 @@ def _run(
         above = down.ground.layer_above[surfaces.region][:, layer]
         reaching = Reaching(above[terrain.of_region], until[1])
         last = max(last, 2.0 * float(surfaces.ensemble.best_outcome.end_s[0]))
-    end = last if cell or until else _LOOK_BEYOND * last
+    end = _LOOK_BEYOND * last if run_on and not until else last
     return evolve(
         terrain,
         surfaces.stages(terrain, down),
@@ -272,6 +265,7 @@ def _run(
         until=reaching,
         end_s=end,
         second_order=second_order,
+        undercuts_until_s=last,
         watch=watch,
     )
 
@@ -295,17 +289,23 @@ def clear_share(ensemble: Ensemble, r: int, run: Run, time_s: float) -> float | 
     return float(down[wanted].mean())
 
 
-def _rows(job: Job, r: int, run: Run, coarse: Run) -> tuple[FeatureRelief, ...]:
+def _rows(job: Job, r: int, run: Run, coarse: Run | None) -> tuple[FeatureRelief, ...]:
+    """All features at all moments; what a grid of half as many points makes of them is the grid's own error."""
     region, features = job.column_map.regions[r], job.column_map.features
-    own, rough = footprints(region, run.terrain, features), footprints(region, coarse.terrain, features)
+    own = footprints(region, run.terrain, features)
+    rough = footprints(region, coarse.terrain, features) if coarse else []
     rows = []
     for k, frame in enumerate(run.frames):
-        other = {}
-        if k < len(coarse.frames):
-            other = {s.feature: s.height_nm for s in measured(region, coarse, coarse.frames[k], rough)}
+        other: dict[int, Standing] = {}
+        if coarse and k < len(coarse.frames):
+            other = {s.feature: s for s in measured(region, coarse, coarse.frames[k], rough)}
         for one in measured(region, run, frame, own):
-            error = abs(one.height_nm - other[one.feature]) if one.feature in other else None
-            rows.append(FeatureRelief(frame.time_s, one, error))
+            twin = other.get(one.feature)
+            height = abs(one.height_nm - twin.height_nm) if twin else None
+            slope = None
+            if twin and one.side_slope_deg is not None and twin.side_slope_deg is not None:
+                slope = abs(one.side_slope_deg - twin.side_slope_deg)
+            rows.append(FeatureRelief(frame.time_s, one, height, slope))
     return tuple(rows)
 
 

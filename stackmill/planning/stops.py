@@ -26,6 +26,9 @@ if TYPE_CHECKING:
 
 Array = NDArray[np.float64]
 
+_EDGES = 0.02  # of the way to a column's centre: facets that have come no farther spoil no window
+_MATTERS = 0.9  # of the wanted area: columns are looked at, from the largest on, until so much is
+
 
 @frozen
 class Reach:
@@ -90,18 +93,20 @@ def stop_table(
     ensemble = run(job, draws=draws, seed=seed, jobs=jobs)
     until = _flat_until(ensemble)
     window = flat_window = find_window(ensemble, job.confidence) if job.goal else None
-    correction = None
-    if window is not None and not flat and _doubtful(ensemble, window, until):
-        from stackmill.planning.correction import correct
+    correction, provisional = None, False
+    if window is not None:
+        edges = _flat_until(ensemble, way=_EDGES)
+        in_doubt = doubtful(ensemble, window, edges)
+        provisional = bool(in_doubt)
+        if in_doubt and not flat:
+            from stackmill.planning.correction import correct
 
-        correction = correct(ensemble, job.confidence, lambda e, w: _doubtful(e, w, until), cell=cell, watch=watch)
-        ensemble, window = correction.ensemble, correction.window
+            correction = correct(ensemble, job.confidence, lambda e, w: doubtful(e, w, edges), cell=cell, watch=watch)
+            ensemble, window = correction.ensemble, correction.window
+            provisional = any(where in deciding(window) for where, _ in correction.unsaid)
     rows = tuple(_rows(ensemble, until, job.confidence))
     if correction:
         rows = tuple(_by_surface(row, ensemble, correction, job) for row in rows)
-    provisional = (
-        bool(correction.unsaid) if correction else window is not None and bool(_doubtful(ensemble, window, until))
-    )
     return StopTable(
         ensemble=ensemble,
         rows=rows,
@@ -135,15 +140,18 @@ def _by_surface(row: Reach, ensemble: Ensemble, correction: Correction, job: Job
     )
 
 
-def _flat_until(ensemble: Ensemble) -> list[Array]:
-    """For each region, the clock (C,) at which each column stops being flat and lit."""
+def _flat_until(ensemble: Ensemble, *, way: float = 1.0) -> list[Array]:
+    """For each region, the clock (C,) at which each column's centre stops being flat and lit.
+
+    way: how far on the way to the centre facets and shadows may have come by then.
+    """
     job, best = ensemble.inputs.job, ensemble.best
     speeds = _slope_speeds(ensemble)
     share = ensemble.inputs.best().region_share()
     return [
         flat_until(
             sloped=region.slope > 0,
-            distance_nm=region.edge_distance_nm,
+            distance_nm=way * region.edge_distance_nm,
             columns=ensemble.best_ground.columns[r],
             best=best,
             region=r,
@@ -243,11 +251,28 @@ def _finite(value: float) -> float | None:
     return value if np.isfinite(value) else None
 
 
-def _doubtful(ensemble: Ensemble, window: Window, until: list[Array]) -> list[tuple[int, int]]:
-    """The columns that decide the window but stop being flat and lit before they do."""
+def deciding(window: Window) -> list[tuple[int, int]]:
+    """The columns (region, column) that most often decide a window."""
+    return list(dict.fromkeys(where for where in (window.exposed_by, window.lost_by) if where is not None))
+
+
+def doubtful(ensemble: Ensemble, window: Window, edges: list[Array]) -> list[tuple[int, int]]:
+    """The columns whose own falls are not to be trusted until the window is decided, over all of their area.
+
+    edges: until when (C,) each column of a region is flat and lit but for a little of its edges. First those that
+    decide, then the wanted ones by their area, as long as there is enough of it to matter.
+    """
     best = ensemble.best_outcome
-    found = []
-    for where, moment in ((window.exposed_by, best.exposed_s[0]), (window.lost_by, best.lost_s[0])):
-        if where is not None and moment > until[where[0]][where[1]] and where not in found:
+    late = max((float(t[0]) for t in (best.exposed_s, best.lost_s) if np.isfinite(t[0])), default=0.0)
+    area: dict[tuple[int, int], float] = {}
+    for where, share in zip(best.wanted, best.upper_area.tolist(), strict=True):
+        area[where] = area.get(where, 0.0) + share
+    found = [where for where in deciding(window) if late > edges[where[0]][where[1]]]
+    covered, whole = 0.0, sum(area.values())
+    for where in sorted(area, key=lambda w: -area[w]):
+        if covered >= _MATTERS * whole:
+            break
+        covered += area[where]
+        if late > edges[where[0]][where[1]] and where not in found:
             found.append(where)
     return found

@@ -21,7 +21,7 @@ from stackmill.timing.fall import Lowering
 
 Array = NDArray[np.float64]
 
-RUNS = 64  # draws whose surfaces are run, to carry a surface's times to all of them
+_LOWEST_DEG = 85.0  # beyond, a surface would take thousands of steps for shadows that mean nothing
 _ALONG_DEG = 0.5  # how far a beam's azimuth may lie off a section's line
 
 
@@ -67,23 +67,22 @@ class Surfaces:
             share = 1.0 if step.region_share is None else float(step.region_share[self.region][draw])
             rate = step.rate_nm_per_s[:, draw] * share
             own = Lowering(rate[:, None], counts=step.counts, name=step.name)
-            beam = i if i < len(recipe) else beams[-1]
-            what = recipe[beam]
+            what = recipe[i] if i < len(recipe) else recipe[(beams or [-1])[-1]]
             table = (
-                self._table(terrain, what).scaled(rate[: len(self.job.column_map.materials)])
+                self._table(terrain.materials, what).scaled(rate[: len(self.job.column_map.materials)])
                 if isinstance(what, Beam)
                 else None
             )
             stages.append(Stage(own, length, table))
         return stages
 
-    def _table(self, terrain: Terrain, step: Beam) -> SlopeTable:
-        key = (*setting(step), terrain.materials)
+    def _table(self, materials: frozenset[int], step: Beam) -> SlopeTable:
+        key = (*setting(step), materials)
         if key not in self._known:
             names = self.job.column_map.materials
             shapes = [
                 angular_shape(self.job.materials[name], energy_ev=step.energy, gas=self.job.mill.gas)
-                if m in terrain.materials
+                if m in materials
                 else None
                 for m, name in enumerate(names)
             ]
@@ -91,11 +90,27 @@ class Surfaces:
         return self._known[key]
 
 
+def along_the_beam(job: Job, cut: Cut | None) -> bool:
+    """Whether the beams of all steps lie in a section, or turn over the cell (None)."""
+    try:
+        for step in job.recipe.steps:
+            if isinstance(step, Beam):
+                light_of(step, cut)
+    except InputError:
+        return False
+    return True
+
+
 def light_of(step: Beam, cut: Cut | None) -> Light:
     """Where the beam comes from, along a section, or over a cell (None). Raises InputError where it is neither."""
     tilt = float(np.radians(step.incidence))
     motion = step.motion
     swing = float(np.radians(motion.half_angle)) if motion.kind == "rocking" else 0.0
+    if tilt + swing > np.radians(_LOWEST_DEG):
+        raise InputError(
+            f"step {step.name!r} mills beyond {_LOWEST_DEG:.0f} deg from the normal, where no surface can be followed",
+            cure="tilt it less, or ask for --flat",
+        )
     if motion.kind == "rotating" or (tilt == 0.0 and swing == 0.0):
         return Light(ROTATING, tilt, tilt)
     if cut is None:

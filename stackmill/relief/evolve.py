@@ -109,6 +109,7 @@ class _Running:
     frames: list[Frame] = field(default_factory=list)
     reached_s: float | None = None
     undercutting: Undercutting | None = None
+    undercuts_until_s: float = np.inf
 
     def frame(self) -> None:
         s = self.surface
@@ -137,14 +138,15 @@ def evolve(
     shadow: bool = True,
     compiled: bool = True,
     undercuts: bool = True,
+    undercuts_until_s: float = np.inf,
     watch: Watch | None = None,
 ) -> Run:
     """Run stages over a surface, from the region's real top down.
 
     region: which region this is, for steps that cover regions; at_s: the moments of frames, on the clock; until:
     one more frame when a level is reached; end_s: where to stop in any case, otherwise at the last moment asked
-    for; undercuts: whether to watch for walls that undercut; watch: told now and then how much is done. A frame shows
-    the surface after all that takes no beam-on time then.
+    for; undercuts: whether to watch for walls that undercut, and until when; watch: told now and then how much is
+    done. A frame shows the surface after all that takes no beam-on time then.
     """
     moments = sorted({float(t) for t in at_s})
     last = end_s if end_s is not None else (np.inf if until else max(moments, default=np.inf))
@@ -159,6 +161,7 @@ def evolve(
         last,
         untouched(terrain),
         undercutting=Undercutting() if undercuts else None,
+        undercuts_until_s=undercuts_until_s,
     )
     finished = True
     try:
@@ -273,7 +276,7 @@ def _mill_to(running: _Running, table: SlopeTable, target: float) -> bool:
             terrain, s, table, duration_s=span, steps=steps,
             second_order=running.second_order, shadow=running.shadow,
         )  # fmt: skip
-        if running.undercutting:
+        if running.undercutting and s.clock_s <= running.undercuts_until_s:
             running.undercutting.look(terrain, s, table, span)
         running.watch.done(min(s.clock_s / running.end_s, 1.0))
         if running.note_reached() and before is not None and running.reached_s is not None:

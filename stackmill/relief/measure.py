@@ -8,7 +8,7 @@ from dataclasses import replace
 import numpy as np
 from numpy.typing import NDArray
 
-from stackmill.columns.columns import RegionColumns
+from stackmill.columns.columns import CORE, RegionColumns
 from stackmill.frozen import frozen
 from stackmill.relief.evolve import Frame, Run
 from stackmill.relief.terrain import Terrain
@@ -18,6 +18,8 @@ Index = NDArray[np.intp]
 Mask = NDArray[np.bool_]
 
 FLUSH_NM = 5.0  # what is less high is called flush: about what a tilted electron image still shows
+_SPIKE = 0.5  # of a feature's depth: what stands so high on a sunken one is what it is told by
+_TOLD = 0.7  # of a gone feature's height: a showing one on its ground that is as high tells of both
 _TOP, _BASE = 0.9, 0.1  # of the height: where a top's and a base's width are read
 
 
@@ -64,7 +66,9 @@ def footprints(region: RegionColumns, terrain: Terrain, features: Sequence[tuple
     """
     found = []
     for number, (layer, _) in enumerate(features):
-        has = (region.feature == number).any(axis=1)
+        mine = region.feature == number
+        has = (mine & (region.part == CORE)).any(axis=1)  # its liners are not it: they stand or go by themselves
+        has = has if has.any() else mine.any(axis=1)
         points = has[terrain.of_region][terrain.column]
         if points.any() and not points.all():
             found.append(Footprint(number, layer, points, _across(points)))
@@ -98,11 +102,17 @@ def _runs(row: Mask) -> list[Index]:
 def measured(region: RegionColumns, run: Run, frame: Frame, prints: Sequence[Footprint]) -> list[Standing]:
     """All features on one frame."""
     found = [_standing(region, run, frame, one) for one in prints]
-    showing = [own.points for own, one in zip(prints, found, strict=True) if one.state == "showing"]
+    showing = [(own, one) for own, one in zip(prints, found, strict=True) if one.state == "showing"]
     return [
-        replace(one, overshadowed=one.state == "gone" and any((own.points & other).any() for other in showing))
+        replace(one, overshadowed=one.state == "gone" and any(_stands_for(other, own, one) for other in showing))
         for own, one in zip(prints, found, strict=True)
     ]
+
+
+def _stands_for(other: tuple[Footprint, Standing], own: Footprint, one: Standing) -> bool:
+    """Whether what stands on a gone feature's ground is told by one that shows there."""
+    where, standing = other
+    return bool((own.points & where.points).any()) and abs(standing.height_nm) >= _TOLD * abs(one.height_nm)
 
 
 def _standing(region: RegionColumns, run: Run, frame: Frame, own: Footprint) -> Standing:
@@ -112,7 +122,7 @@ def _standing(region: RegionColumns, run: Run, frame: Frame, own: Footprint) -> 
     state = "gone" if (segment > last).all() else "buried" if (segment < first).all() else "showing"
     floor = _floor(own, height)
     inside = height - floor
-    pillar = float(np.median(inside[own.points])) >= 0.0
+    pillar = _stands_up(inside[own.points])
     sign = 1.0 if pillar else -1.0
     raised = np.where(own.points, sign * inside, -np.inf)
     at = np.unravel_index(int(np.argmax(raised)), raised.shape)
@@ -138,6 +148,11 @@ def _standing(region: RegionColumns, run: Run, frame: Frame, own: Footprint) -> 
         vanishes_s=gone_s if np.isfinite(gone_s) else None,
         cells_across=own.across,
     )
+
+
+def _stands_up(inside: Array) -> bool:
+    """Whether a feature stands up over the ground beside it (P,): most of it does, or a spike on it."""
+    return float(np.median(inside)) >= 0.0 or float(inside.max()) > _SPIKE * -float(inside.min())
 
 
 def _spans(region: RegionColumns, terrain: Terrain, own: Footprint) -> tuple[Index, Index]:
@@ -172,27 +187,28 @@ def _floor(own: Footprint, height: Array) -> float:
 
 def _widths(
     raised: Array, at: tuple[np.intp, ...], terrain: Terrain, own: Footprint, high: float
-) -> tuple[float, float]:
-    """The widths at 90 and 10 % of the height, through the highest point."""
+) -> tuple[float | None, float | None]:
+    """The widths at 90 and 10 % of the height, through the highest point; None where it does not end nearby."""
     y, x = int(at[0]), int(at[1])
     lines = [(raised[y], x, terrain.step_nm[1], own.points[y])]
     if not terrain.is_section:
         lines.append((raised[:, x], y, terrain.step_nm[0], own.points[:, x]))
-    row, middle, step, _ = min(lines, key=lambda line: int(line[3].sum()) * line[2])
-    return tuple(_width(row, middle, share * high, step) for share in (_TOP, _BASE))  # type: ignore[return-value]
+    row, middle, step, inside = min(lines, key=lambda line: int(line[3].sum()) * line[2])
+    reach = int(inside.sum()) + own.across
+    return _width(row, middle, _TOP * high, step, reach), _width(row, middle, _BASE * high, step, reach)
 
 
-def _width(row: Array, middle: int, level: float, step: float) -> float:
-    """How wide a row stands over a level around a point, between points linearly."""
+def _width(row: Array, middle: int, level: float, step: float, reach: int) -> float | None:
+    """How wide a row stands over a level around a point, between points linearly; looked for within `reach` points."""
     n, width = len(row), 0.0
     for way in (1, -1):
-        for k in range(1, n):
+        for k in range(1, min(reach, n)):
             here, before = float(row[(middle + way * k) % n]), float(row[(middle + way * (k - 1)) % n])
             if here < level:
                 width += step * (k - 1 + (before - level) / (before - here))
                 break
         else:
-            return n * step
+            return None
     return min(width, n * step)
 
 

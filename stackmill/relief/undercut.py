@@ -65,7 +65,7 @@ class Undercutting:
         above = np.full(len(steep), -1)
         for s in range(terrain.floor_nm.shape[1]):
             floor, material = terrain.floor_nm[column, s], terrain.material[column, s]
-            inside = (floor < high) & (top > low) & (top - floor > 0.0) & (material >= 0)
+            inside = (material >= 0) & (floor < high) & (top > low) & (top > floor)
             own = np.where(inside, pace[material], np.inf)
             faster = inside & (own > slowest)
             depth = (own[faster] - slowest[faster]) * lit[faster] * span_s

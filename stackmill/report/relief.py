@@ -17,6 +17,7 @@ from stackmill.report.stops import cautions
 from stackmill.report.words import length, percent, step_in_words
 from stackmill.units import clock
 
+_SURE_DEG = 1.5  # slopes whose grid error is smaller stand without it
 ROW_NAMES = (
     "time_s",
     "region",
@@ -30,6 +31,7 @@ ROW_NAMES = (
     "top_layer",
     "vanishes_s",
     "height_error_nm",
+    "slope_error_deg",
     "state",
     "cells_across",
 )
@@ -56,6 +58,7 @@ def machine_rows(relief: Relief) -> list[dict[str, Any]]:
                 "top_layer": _layer(relief, s.top_layer),
                 "vanishes_s": s.vanishes_s,
                 "height_error_nm": row.height_error_nm,
+                "slope_error_deg": row.slope_error_deg,
                 "state": s.state,
                 "cells_across": s.cells_across,
             }
@@ -122,7 +125,7 @@ def _one_region(relief: Relief, paper: Paper, *, markdown: bool) -> list[str]:
         parts.append(wrapped(f"At {clock(moment.time_s)}: relief {length(moment.relief_nm)}{clear}.", paper.width))
         grid = _grid(relief, n)
         if grid.rows:
-            parts.append(grid.text("github" if markdown else "simple", 0))
+            parts.append(grid.text("github" if markdown else "simple", paper.width))
     if not relief.run.finished:
         parts.append("INTERRUPTED: the moments after the last one shown were not reached.")
     return parts
@@ -150,7 +153,7 @@ def _grid(relief: Relief, moment: int) -> Grid:
         for row in relief.rows
         if row.time_s == time_s and row.standing.state != "buried" and not row.standing.overshadowed
     ]
-    headers = ["feature", "", "height\nnm", "top\nnm", "base\nnm", "side\n°", "its top\nis in", "milled\naway at"]
+    headers = ["feature", "", "height\nnm", "top\nnm", "base\nnm", "side\n°", "its top\nis in", "gone\nat"]
     return Grid(headers, [_cells(relief, row) for row in rows], frozenset({2, 3, 4, 5}))
 
 
@@ -165,14 +168,20 @@ def _cells(relief: Relief, row: FeatureRelief) -> list[str]:
 
     return [
         f"{relief.job.column_map.layers[layer]} / {name}",
-        s.kind,
+        f"{s.kind}*" if s.state == "gone" else s.kind,
         "" if flush else f"{s.height_nm:.0f}{error}",
         nm(s.width_nm),
         nm(s.base_width_nm),
-        nm(s.side_slope_deg),
+        _with_error(s.side_slope_deg, row.slope_error_deg),
         _layer(relief, s.top_layer) or "below all",
-        "later" if s.vanishes_s is None else clock(s.vanishes_s),
+        f"> {clock(relief.run.end_s)}" if s.vanishes_s is None else clock(s.vanishes_s),
     ]
+
+
+def _with_error(value: float | None, error: float | None) -> str:
+    if value is None:
+        return ""
+    return f"{value:.0f}" if error is None or error < _SURE_DEG else f"{value:.0f} ± {error:.0f}"
 
 
 def _layer(relief: Relief, number: int) -> str | None:
@@ -187,6 +196,8 @@ def _notes(relief: Relief) -> list[str]:
         " 90 % (top) and 10 % (base) of the height.",
         "Widths exclude redeposition and reflected ions, which move heights by a few per cent, widths by 10 to 90 %.",
     ]
+    if any(row.standing.state == "gone" and not row.standing.overshadowed for row in relief.rows):
+        notes.append("* the feature itself is gone: this is what it has left on its ground.")
     if buried:
         names = ", ".join(_feature(relief, f) for f in buried)
         notes.append(f"{_region(relief)}: still buried at one of these moments, and not listed there: {names}.")

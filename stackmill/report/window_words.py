@@ -2,12 +2,11 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from typing import TYPE_CHECKING
 
 from stackmill.documents.recipe import Beam, Process, Strip
-from stackmill.planning.stops import StopTable
-from stackmill.planning.surfaces import RUNS
+from stackmill.planning.stops import StopTable, deciding
 from stackmill.planning.windows import FIRST_LOOK_RISK, Window
 from stackmill.report.words import percent
 from stackmill.units import clock, format_time
@@ -15,6 +14,7 @@ from stackmill.units import clock, format_time
 if TYPE_CHECKING:
     from stackmill.planning.carrying import SurfaceTimes
 
+_UNRESOLVED = 0.01  # of a region's area: a cell that misses more of it says so
 _SAME_S, _SAME_SHARE, _SAME_CHANCE = 10.0, 0.005, 0.02  # moves smaller than these change no plan at the mill
 
 
@@ -43,14 +43,40 @@ def surface_in_words(table: StopTable, window: Window) -> list[str]:
     if table.correction.surfaces:
         run = ", ".join(map(_one_surface(table), table.correction.surfaces))
         lines.append(f"  {_moved(table, window)} BY THE SURFACE: {run}.")
+        runs = min(surface.runs for surface in table.correction.surfaces)
         lines.append(
-            f"  The surface's times at best values are carried to all draws by {RUNS} draws run on it, good to ±"
+            f"  The surface's times at best values are carried to all draws by {runs} draws run on it, good to ±"
             f" {format_time(table.correction.error_s)} (1 sd, held in the chances)."
         )
-    lines += [
-        f"  PROVISIONAL: {column_name(table, *where)} decides, and by its own column only: {why}."
-        for where, why in table.correction.unsaid
-    ]
+        lines += _caveats(table, table.correction.surfaces)
+    for where, why in table.correction.unsaid:
+        if where in deciding(window):
+            lines.append(f"  PROVISIONAL: {column_name(table, *where)} decides, and by its own column only: {why}.")
+        else:
+            lines.append(f"  By its own column only: {column_name(table, *where)}: {why}.")
+    return lines
+
+
+def _caveats(table: StopTable, surfaces: Sequence[SurfaceTimes]) -> list[str]:
+    """What the surfaces that were run cannot know."""
+    from stackmill.planning.correction import crosses_a_via
+
+    job = table.ensemble.inputs.job
+    lines = []
+    walls = [s for s in surfaces if s.cut is not None and crosses_a_via(job, s.region, s.cut)]
+    tilted = any(isinstance(step, Beam) and step.incidence > 0.0 for step in job.recipe.steps)
+    if walls and tilted:
+        lines.append("  A section takes a via for a wall, whose shadow is longer: --cell takes it as it is.")
+    if any(s.cut is not None for s in surfaces) and job.goal and job.goal.clear < 1.0:
+        lines.append("  A section speaks for the area by one line across it: --cell weighs all of it.")
+    for surface in surfaces:
+        if surface.unresolved > _UNRESOLVED:
+            name = job.column_map.regions[surface.region].name
+            lines.append(
+                f"  TOO COARSE: {percent(surface.unresolved)} of {name} lies in films narrower than the cell's grid."
+            )
+    if any(getattr(step, "seen", None) for step in job.recipe.steps):
+        lines.append("  The moments at which the eye stops a step are by columns: where pillars stand, it sees sooner.")
     return lines
 
 

@@ -4,12 +4,13 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
+from reliefs import relief_table
 from scipy.optimize import brentq
 
 from stackmill.ensemble.run import run
 from stackmill.errors import InputError, StackmillWarning, UsageError
 from stackmill.jobs import load_job
-from stackmill.planning.relief import When, relief_table, too_coarse
+from stackmill.planning.relief import When, too_coarse
 from stackmill.planning.surfaces import Surfaces
 from stackmill.rates.yields import angular_shape
 from stackmill.relief.evolve import evolve

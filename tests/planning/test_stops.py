@@ -35,8 +35,9 @@ confidence: 60 %
 """
 
 
-def forecast(text, **more):
-    return stop_table(load_job(text), **more)
+def forecast(text):
+    """By columns alone: what surfaces make of it is tested in test_correction.py."""
+    return stop_table(load_job(text), flat=True)
 
 
 def brute(table):
@@ -142,7 +143,7 @@ goal: {layer: under, at: top, clear: 100 %}
 
 @pytest.mark.independent
 def test_a_slow_line_is_flat_until_its_kinks_meet_and_a_window_on_it_is_provisional():
-    narrow, wide = (forecast(NARROW.replace("WIDTH", width), flat=True) for width in ("200 nm", "1200 nm"))
+    narrow, wide = (forecast(NARROW.replace("WIDTH", width)) for width in ("200 nm", "1200 nm"))
     rows = {r.column: r for r in narrow.rows if r.layer == "under"}
     assert not rows["wall"].flat_ok
     assert narrow.provisional
@@ -205,7 +206,7 @@ def test_a_to_step_lasts_as_long_in_every_draw_and_counts_the_goals_regions():
 @pytest.mark.independent
 def test_the_window_hardly_depends_on_the_seed():
     job = load_job(JOB.replace("LEVEL", "50 % ± 150 nm"))
-    windows = [stop_table(job, seed=seed).window for seed in range(8)]
+    windows = [stop_table(job, seed=seed, flat=True).window for seed in range(8)]
     ends = np.array([(w.exposed_s, w.lost_s, w.stop_s) for w in windows])
     assert (np.ptp(ends, axis=0) < 0.08 * ends.mean(axis=0)).all()
 
@@ -267,7 +268,7 @@ def test_the_chance_told_is_that_of_the_stop_told():
 @pytest.mark.regression
 @pytest.mark.parametrize("demo", ["copper", "sensor", "two-metal"])
 def test_the_chance_of_a_stop_in_the_window_is_read_at_that_stop(demo):
-    table = stop_table(load_job(f"stacks/{demo}/job.yaml"))
+    table = stop_table(load_job(f"stacks/{demo}/job.yaml"), flat=True)
     window, ensemble = table.window, table.ensemble
     begin, end = success_spans(ensemble.outcome, window.leg)
     stop = window.stop_s - window.leg_start_s + 1e-9  # the first moment of a stretch belongs to it

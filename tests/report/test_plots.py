@@ -10,11 +10,12 @@ from pathlib import Path
 
 import numpy as np
 import pytest
+from reliefs import relief_table
 
 from stackmill.errors import FileAccessError, UsageError
 from stackmill.jobs import load_job
 from stackmill.materials.library import Library
-from stackmill.planning.relief import When, relief_table
+from stackmill.planning.relief import When
 from stackmill.relief.gridding import Cut
 from stackmill.report.plots import draw_cell, draw_section, draw_stack, render, save, style, styles
 from stackmill.report.plots.beam import _along, step_at

@@ -74,7 +74,7 @@ def depths(job):
 
 def check(points=100, margin=1.0, **case):
     job = load_job(JOB.format(middle=case["cell"] / 2, **case))
-    table = stop_table(job, draws=16)
+    table = stop_table(job, draws=16, flat=True)
     reached = centre_times(job, table, points)
     until = _flat_until(table.ensemble)[0]
     trusted = 0
