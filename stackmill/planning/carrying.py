@@ -212,6 +212,8 @@ def _moments(
     run = evolve(
         terrain, surfaces.stages(terrain, down, draw), region=surfaces.region, end_s=end_s, undercuts=False, watch=watch
     )
+    if not run.finished:  # a surface that was interrupted has told nothing
+        raise KeyboardInterrupt
     found = []
     for level in levels:
         points = _points(laid, level.column)

@@ -153,10 +153,17 @@ def test_facets_over_the_edges_of_the_goal_are_seen_though_its_centre_stays_flat
     assert first <= by_columns * (1.0 + 1e-9)
 
 
-def test_an_interrupt_while_surfaces_run_is_no_answer():
+@pytest.mark.parametrize("calls", [1, 40])
+def test_an_interrupt_while_surfaces_run_is_no_answer(calls):
+    """At once, while the first surface is run, and later, while the draws are."""
+
     class Interrupting(Watch):
+        left = calls
+
         def done(self, share):
-            raise KeyboardInterrupt
+            self.left -= 1
+            if self.left == 0:
+                raise KeyboardInterrupt
 
     with pytest.raises(KeyboardInterrupt):
         stop_table(job(), watch=Interrupting())
