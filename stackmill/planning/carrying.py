@@ -21,6 +21,7 @@ from stackmill.planning.kriging import learn
 from stackmill.planning.surfaces import Surfaces
 from stackmill.relief.evolve import evolve
 from stackmill.relief.gridding import Cut, Grid, Layout, cell_grid, section_grid
+from stackmill.relief.terrain import passed_above
 from stackmill.relief.watch import Watch
 
 Array = NDArray[np.float64]
@@ -106,7 +107,7 @@ def surface_times(ensemble: Ensemble, region: int, cut: Cut | None, *, watch: Wa
     """
     surfaces = Surfaces(ensemble, region, cut)
     fine, coarse = _layouts(surfaces)
-    columns = tuple(c for c in _represented(ensemble, region, fine) if c in coarse.of_region)
+    columns = tuple(c for c in _represented(ensemble, region, fine) if c in coarse.region_column)
     levels = _levels(ensemble, region, columns)
     end = _LONGER * max([level.flat_best_s for level in levels if np.isfinite(level.flat_best_s)], default=0.0)
     best = [_moments(surfaces, laid, levels, ensemble.best_descent, 0, end, watch) for laid in (fine, coarse)]
@@ -122,7 +123,7 @@ def surface_times(ensemble: Ensemble, region: int, cut: Cut | None, *, watch: Wa
             watch.done((d + 1) / len(chosen))
     carried = _carried(ensemble, region, levels, columns, best, drawn, chosen)
     area = ensemble.inputs.job.column_map.regions[region].area
-    missing = 1.0 - float(area[np.unique(fine.of_region)].sum()) if cut is None else 0.0
+    missing = 1.0 - float(area[np.unique(fine.region_column)].sum()) if cut is None else 0.0
     layer, upper, spoilt = _sorted(levels, carried)
     return SurfaceTimes(region, cut, fine.which.shape[1], runs, frozenset(columns), missing, layer, upper, spoilt)
 
@@ -142,7 +143,7 @@ def _layouts(surfaces: Surfaces) -> tuple[Layout, Layout]:
 
 def _points(laid: Layout, column: int) -> Mask:
     """The points (ny, nx) of one of the region's columns."""
-    found: Mask = laid.of_region[laid.which] == column
+    found: Mask = laid.region_column[laid.which] == column
     return found
 
 
@@ -167,7 +168,7 @@ def spoken_for(ensemble: Ensemble, region: int, cut: Cut | None) -> tuple[int, .
 def _represented(ensemble: Ensemble, region: int, laid: Layout) -> tuple[int, ...]:
     own = ensemble.inputs.job.column_map.regions[region]
     found = []
-    for c in sorted(set(laid.of_region.tolist())):
+    for c in sorted(set(laid.region_column.tolist())):
         points = _points(laid, c)
         width = float(own.edge_distance_nm[c].min())
         far = float(_inside_nm(points, laid.step_nm).max())
@@ -218,7 +219,8 @@ def _moments(
     for level in levels:
         points = _points(laid, level.column)
         above = level.above(surfaces.region, down, draw)
-        times = run.passed_s[points][:, above - 1] if above else np.zeros(int(points.sum()))
+        passed = run.passed_s[points]
+        times = passed_above(passed, np.full(len(passed), above))
         if level.kind == "layer":
             far = _inside_nm(points, laid.step_nm)[points]
             found.append(times[far >= far.max() - 1e-9].max(keepdims=True))

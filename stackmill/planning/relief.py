@@ -21,6 +21,7 @@ from stackmill.planning.windows import find_window
 from stackmill.relief.evolve import Frame, Reaching, Run, evolve
 from stackmill.relief.gridding import CELLS_ACROSS, Cut, Grid, cell_grid, columns_along, section_grid
 from stackmill.relief.measure import Standing, footprints, measured, relief_nm
+from stackmill.relief.terrain import passed_above
 from stackmill.relief.watch import Watch
 
 Array = NDArray[np.float64]
@@ -254,7 +255,7 @@ def _run(
     if until is not None:
         layer = surfaces.job.column_map.layers.index(until[0])
         above = down.ground.layer_above[surfaces.region][:, layer]
-        reaching = Reaching(above[terrain.of_region], until[1])
+        reaching = Reaching(above[terrain.region_column], until[1])
         last = max(last, 2.0 * float(surfaces.ensemble.best_outcome.end_s[0]))
     end = _LOOK_BEYOND * last if run_on and not until else last
     return evolve(
@@ -280,12 +281,11 @@ def clear_share(ensemble: Ensemble, r: int, run: Run, time_s: float) -> float | 
     for spot in ensemble.best_ground.goal_upper:
         if spot.region == r:
             above[spot.column] = int(np.asarray(spot.above).flat[0])
-    at = above[run.terrain.of_region][run.terrain.column]
+    at = above[run.terrain.region_column][run.terrain.column]
     wanted = at >= 0
     if not wanted.any():
         return None
-    passed = np.take_along_axis(run.passed_s, np.maximum(at - 1, 0)[..., None], axis=-1)[..., 0]
-    down = np.where(at > 0, passed, 0.0) <= time_s * (1.0 + 1e-12)
+    down = passed_above(run.passed_s, at) <= time_s * (1.0 + 1e-12)
     return float(down[wanted].mean())
 
 

@@ -14,7 +14,7 @@ from numpy.typing import NDArray
 
 from stackmill.frozen import frozen
 from stackmill.relief.slope_speed import SlopeTable
-from stackmill.relief.terrain import Surface, Terrain, etch, strip, untouched
+from stackmill.relief.terrain import Surface, Terrain, etch, passed_above, strip, untouched
 from stackmill.relief.undercut import Undercut, Undercutting
 from stackmill.relief.watch import Watch
 from stackmill.timing.fall import Cover, Lowering, Step, Strip
@@ -197,9 +197,7 @@ def mover(*, section: bool, compiled: bool, watch: Watch) -> Mover:
 def reached_s(terrain: Terrain, passed_s: Array, level: Reaching) -> float:
     """When the share of the area has come down to a level; inf if it has not."""
     above = level.above[terrain.column]
-    counted = above >= 0
-    times = np.take_along_axis(passed_s, np.maximum(above - 1, 0)[..., None], axis=-1)[..., 0]
-    times = np.sort(np.where(above > 0, times, 0.0)[counted])
+    times = np.sort(passed_above(passed_s, above)[above >= 0])
     if not times.size:
         return np.inf
     return float(times[int(np.ceil(level.share * times.size * (1.0 - 1e-9))) - 1])
@@ -231,7 +229,7 @@ def _run(running: _Running, stages: Sequence[Stage], region: int, last: float) -
 
 
 def _frames_up_to(running: _Running, clock_s: float, *, including: bool) -> None:
-    """Take the frames that are due: those of this very moment only when no more happens in it."""
+    """Take the frames that are due by a moment; those of the very moment only if nothing more happens in it."""
     while running.at_s and (running.at_s[0] < clock_s or (including and running.at_s[0] <= clock_s)):
         running.at_s.pop(0)
         running.frame()
@@ -242,10 +240,7 @@ def _lower_on_the_clock(running: _Running, stage: Stage, step: Lowering, covered
     s = running.surface
     end = min(s.clock_s + stage.length_s, last)
     if s.clock_s < end:
-        due = [t for t in running.at_s if t <= s.clock_s]
-        for _ in due:
-            running.at_s.pop(0)
-            running.frame()
+        _frames_up_to(running, s.clock_s, including=True)
     while s.clock_s < end:
         target = min([end, *(t for t in running.at_s[:1] if t < end)])
         if not np.isfinite(target) and not (s.segment < running.terrain.count[running.terrain.column]).any():
@@ -257,9 +252,8 @@ def _lower_on_the_clock(running: _Running, stage: Stage, step: Lowering, covered
         elif _mill_to(running, stage.table, target):
             return True
         s.clock_s = target if np.isfinite(target) else s.clock_s
-        if s.clock_s < end and running.at_s and running.at_s[0] <= s.clock_s:
-            running.at_s.pop(0)
-            running.frame()
+        if s.clock_s < end:
+            _frames_up_to(running, s.clock_s, including=True)
     return False
 
 

@@ -123,22 +123,22 @@ def _fitting(edges: Array, length: float, least: int, most: float = 1.25) -> int
 class Layout:
     """Which of the C distinct columns lies under each point of a grid, in any draw.
 
-    which (ny, nx): its number; of_region (C,): the region's column it is; off_nm (C, S + 1): how much higher its
+    which (ny, nx): its number; region_column (C,): the region's column it is; off_nm (C, S + 1): how much higher its
     boundaries lie than that column's: on conformal slopes every point has its own heights.
     """
 
     step_nm: tuple[float, float]
     which: Index
-    of_region: Index
+    region_column: Index
     off_nm: Array
 
 
 def layout(region: RegionColumns, grid: Grid) -> Layout:
     """What lies where on a grid."""
     x, y = grid.x_nm.ravel(), grid.y_nm.ravel()
-    of_region = region.plan(x, y)
-    off = np.round(region.above_mean_nm(x, y, of_region) / _ALIKE_NM).astype(np.int64)
-    rows, which = np.unique(np.column_stack([of_region, off]), axis=0, return_inverse=True)
+    region_column = region.plan(x, y)
+    off = np.round(region.above_mean_nm(x, y, region_column) / _ALIKE_NM).astype(np.int64)
+    rows, which = np.unique(np.column_stack([region_column, off]), axis=0, return_inverse=True)
     return Layout(grid.step_nm, which.reshape(grid.x_nm.shape), rows[:, 0].astype(np.intp), rows[:, 1:] * _ALIKE_NM)
 
 
@@ -148,13 +148,13 @@ def terrain_of(region: RegionColumns, columns: Sequence[Column], boundary: Seque
     columns: the region's, cut at the levels asked for (D = 1); boundary: where the boundaries of the column map's
     segments lie among those cuts (timing.plan.Ground).
     """
-    rows, of_region = laid.off_nm, laid.of_region
-    most = max(len(columns[c].material) for c in of_region.tolist())
+    rows, region_column = laid.off_nm, laid.region_column
+    most = max(len(columns[c].material) for c in region_column.tolist())
     material = np.full((len(rows), most), -1, dtype=np.intp)
     floor = np.full((len(rows), most), -np.inf)
     owner = np.full((len(rows), most), -1, dtype=np.intp)
     top, count = np.zeros(len(rows)), np.zeros(len(rows), dtype=np.intp)
-    for k, (c, off) in enumerate(zip(of_region.tolist(), rows, strict=True)):
+    for k, (c, off) in enumerate(zip(region_column.tolist(), rows, strict=True)):
         levels = _levels(region, columns[c], boundary[c], c, off)
         count[k] = len(levels) - 1
         material[k, : count[k]] = columns[c].material
@@ -167,7 +167,7 @@ def terrain_of(region: RegionColumns, columns: Sequence[Column], boundary: Seque
         material=material,
         floor_nm=floor,
         count=count,
-        of_region=of_region,
+        region_column=region_column,
         owner=owner,
     )
 

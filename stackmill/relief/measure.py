@@ -69,7 +69,7 @@ def footprints(region: RegionColumns, terrain: Terrain, features: Sequence[tuple
         mine = region.feature == number
         has = (mine & (region.part == CORE)).any(axis=1)  # its liners are not it: they stand or go by themselves
         has = has if has.any() else mine.any(axis=1)
-        points = has[terrain.of_region][terrain.column]
+        points = has[terrain.region_column][terrain.column]
         if points.any() and not points.all():
             found.append(Footprint(number, layer, points, _across(points)))
     return found
@@ -160,7 +160,7 @@ def _spans(region: RegionColumns, terrain: Terrain, own: Footprint) -> tuple[Ind
     columns = terrain.column[own.points]
     first, last = np.zeros(len(terrain.top_nm), dtype=np.intp), np.zeros(len(terrain.top_nm), dtype=np.intp)
     for c in np.unique(columns):
-        r = int(terrain.of_region[c])
+        r = int(terrain.region_column[c])
         inside = np.flatnonzero(region.feature[r] == own.feature)
         owner = terrain.owner[c, : terrain.count[c]]
         mine = np.flatnonzero((owner >= inside[0]) & (owner <= inside[-1]))
@@ -171,7 +171,7 @@ def _spans(region: RegionColumns, terrain: Terrain, own: Footprint) -> tuple[Ind
 def _layer_of(region: RegionColumns, terrain: Terrain, column: int, segment: int) -> int:
     if segment >= terrain.count[column]:
         return -1
-    return int(region.layer[terrain.of_region[column], terrain.owner[column, segment]])
+    return int(region.layer[terrain.region_column[column], terrain.owner[column, segment]])
 
 
 def _floor(own: Footprint, height: Array) -> float:

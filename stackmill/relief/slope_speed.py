@@ -6,7 +6,7 @@ something stands between a slope and the beam, the hidden part of the light is t
 of a slope's speed comes from the light that a horizon hides first.
 
 A motion is a set of directions the beam comes from, with the share of time of each: `Light`. To add a motion,
-give its directions and how many of them a horizon hides (`Light.hidden_bins`); nothing else knows motions.
+give its directions and how many of them a horizon hides (docs/physics/relief.md says where).
 """
 
 from __future__ import annotations
@@ -89,6 +89,7 @@ class Light:
             reach = self.steepest_tan
             share = np.arccos(1.0 / np.maximum(horizon * reach, 1.0)) / (0.5 * np.pi)
         else:
+            # Seen from the left, the swing is mirrored: its lowest light has the least signed incidence.
             ends = (self.high_rad, self.low_rad) if side > 0 else (-self.low_rad, -self.high_rad)
             first, last = ends[0], max(ends[1], 0.0)
             if first <= 0.0:

@@ -24,7 +24,7 @@ class Terrain:
 
     step_nm: distances (y, x) between points; column (ny, nx): what lies there, an index into the rest; top_nm (C,):
     where each column starts; material, floor_nm (C, S): its segments from the top down, material -1 and floor -inf
-    below the last; count (C,): how many there are; of_region (C,): the region's column each is; owner (C, S): the
+    below the last; count (C,): how many there are; region_column (C,): the region's column each is; owner (C, S): the
     segment of that column each one is a piece of.
     """
 
@@ -34,7 +34,7 @@ class Terrain:
     material: Index
     floor_nm: Array
     count: Index
-    of_region: Index = field(default_factory=lambda: np.zeros(0, dtype=np.intp))
+    region_column: Index = field(default_factory=lambda: np.zeros(0, dtype=np.intp))
     owner: Index = field(default_factory=lambda: np.zeros((0, 0), dtype=np.intp))
 
     @property
@@ -75,6 +75,12 @@ def untouched(terrain: Terrain) -> Surface:
         np.zeros(terrain.column.shape, dtype=np.intp),
         np.full((*terrain.column.shape, segments), np.inf),
     )
+
+
+def passed_above(passed_s: Array, above: Index) -> Array:
+    """When the last of the `above` (...) segments over a level was gone, from passed_s (..., S); 0 for none."""
+    times = np.take_along_axis(passed_s, np.maximum(above - 1, 0)[..., None], axis=-1)[..., 0]
+    return np.where(above > 0, times, 0.0)
 
 
 def etch(terrain: Terrain, surface: Surface, rate_nm_per_s: Array, duration_s: float, *, counts: bool) -> None:

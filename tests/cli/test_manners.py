@@ -33,15 +33,15 @@ def run(*arguments, **more):
 @pytest.mark.parametrize(
     ("arguments", "code", "says"),
     [
-        (["stops", LOOK], 0, ""),
-        (["stops", LAB], 1, ""),
+        (["stops", "--flat", LOOK], 0, ""),
+        (["stops", "--flat", LAB], 1, ""),
         (["stops", LOOK, "--nonsense"], 2, "--nonsense"),
         (["stops", LOOK, "--goal", "metal 1"], 2, "--goal is for a lone stack"),
         (["rates"], 2, "rates takes a file or --material"),
         (["rates", "--material", "Wolframite"], 3, "no material is called"),
         (["stops", LOOK, "--set", "confidence=2"], 3, "--set confidence"),
         (["stops", "nowhere.yaml"], 4, "nowhere.yaml"),
-        (["stops", LOOK, "-o", "/no/such/folder/x.csv"], 4, "cannot be written"),
+        (["stops", "--flat", LOOK, "-o", "/no/such/folder/x.csv"], 4, "cannot be written"),
         (["stops", LOOK, "-o", "x.pdf"], 2, "no format is known"),
         (["materials", "unobtainium"], 3, "unobtainium"),
     ],
@@ -97,7 +97,7 @@ WINDOW_NAMES = [
 
 
 def test_stops_as_json_has_the_pinned_names(capsys):
-    assert main(["stops", LOOK, "-f", "json"]) == 0
+    assert main(["stops", "--flat", LOOK, "-f", "json"]) == 0
     answer = json.loads(capsys.readouterr().out)
     assert {"schema_version", "stackmill_version", "inputs_sha256", "seed", "warnings", "rows", "windows"} <= set(
         answer
@@ -108,7 +108,7 @@ def test_stops_as_json_has_the_pinned_names(capsys):
 
 
 def test_no_window_is_null_in_json(capsys):
-    assert main(["stops", LAB, "-f", "json"]) == 1
+    assert main(["stops", "--flat", LAB, "-f", "json"]) == 1
     window = json.loads(capsys.readouterr().out)["windows"][0]
     assert window["exposed_s"] is None
     assert window["lost_s"] is None
@@ -130,22 +130,22 @@ def test_rates_as_json_and_csv_have_the_pinned_names(capsys):
 
 @pytest.mark.parametrize("form", ["table", "csv", "json", "markdown"])
 def test_same_inputs_same_bytes_whatever_the_jobs(form, capsys):
-    main(["stops", LOOK, "-f", form])
+    main(["stops", "--flat", LOOK, "-f", form])
     one = capsys.readouterr().out
-    main(["stops", LOOK, "-f", form, "--jobs", "2"])
+    main(["stops", "--flat", LOOK, "-f", form, "--jobs", "2"])
     assert capsys.readouterr().out == one
-    main(["stops", LOOK, "-f", form, "--seed", "1"])
+    main(["stops", "--flat", LOOK, "-f", form, "--seed", "1"])
     assert capsys.readouterr().out != one
 
 
 def test_an_output_file_is_not_overwritten_unless_told_and_leaves_nothing_beside(tmp_path, capsys):
     target = tmp_path / "out.csv"
-    assert main(["stops", LOOK, "-o", str(target)]) == 0
+    assert main(["stops", "--flat", LOOK, "-o", str(target)]) == 0
     first = target.read_text(encoding="utf-8")
-    assert main(["stops", LAB, "-o", str(target)]) == 4
+    assert main(["stops", "--flat", LAB, "-o", str(target)]) == 4
     assert "give --force" in capsys.readouterr().err
     assert target.read_text(encoding="utf-8") == first
-    assert main(["stops", LAB, "-o", str(target), "--force"]) == 1
+    assert main(["stops", "--flat", LAB, "-o", str(target), "--force"]) == 1
     assert target.read_text(encoding="utf-8") != first
     assert [path.name for path in tmp_path.iterdir()] == ["out.csv"]
 
@@ -173,9 +173,9 @@ def test_no_line_is_wider_than_the_paper(width, job, capsys, monkeypatch):
 
 
 def test_ascii_on_request_and_on_a_terminal_that_knows_no_other(capsys):
-    main(["stops", LOOK, "--ascii"])
+    main(["stops", "--flat", LOOK, "--ascii"])
     assert capsys.readouterr().out.isascii()
-    plain = run("stops", LOOK, env={**os.environ, "PYTHONIOENCODING": "ascii"})
+    plain = run("stops", "--flat", LOOK, env={**os.environ, "PYTHONIOENCODING": "ascii"})
     assert plain.returncode == 0
     assert plain.stdout.isascii()
 
@@ -194,13 +194,13 @@ def test_a_closed_pipe_ends_quietly():
 
 def test_a_job_may_come_from_standard_input():
     stack = (ROOT / "stacks/two-metal/stack.yaml").read_text(encoding="utf-8")
-    answer = run("stops", "-", "--goal", "metal 1 / strap", "--energy", "1 keV", input=stack)
+    answer = run("stops", "--flat", "-", "--goal", "metal 1 / strap", "--energy", "1 keV", input=stack)
     assert answer.returncode in (0, 1), answer.stderr
     assert "default mill" in answer.stdout
 
 
 def test_why_traces_every_rate_and_ends_with_what_would_narrow_it(capsys):
-    main(["stops", LOOK, "--why"])
+    main(["stops", "--flat", LOOK, "--why"])
     told = capsys.readouterr().out
     for word in ("Yamamura", "measured on this mill: 41 nm/min", "density", "angular shape", "sha256", "seed 2026"):
         assert word in told
@@ -210,13 +210,13 @@ def test_why_traces_every_rate_and_ends_with_what_would_narrow_it(capsys):
 def test_what_is_no_plain_file_is_never_replaced_and_a_link_stays_a_link(tmp_path, capsys):
     pipe, target, link = tmp_path / "pipe.csv", tmp_path / "target.csv", tmp_path / "link.csv"
     os.mkfifo(pipe)
-    assert main(["stops", LOOK, "-o", str(pipe), "--force"]) == 4
+    assert main(["stops", "--flat", LOOK, "-o", str(pipe), "--force"]) == 4
     assert "not a plain file" in capsys.readouterr().err
     assert pipe.is_fifo()
     target.write_text("old", encoding="utf-8")
     target.chmod(0o640)
     link.symlink_to(target)
-    assert main(["stops", LOOK, "-o", str(link), "--force"]) == 0
+    assert main(["stops", "--flat", LOOK, "-o", str(link), "--force"]) == 0
     assert link.is_symlink()
     assert target.read_text(encoding="utf-8").startswith("region,")
     assert target.stat().st_mode & 0o777 == 0o640
@@ -225,7 +225,7 @@ def test_what_is_no_plain_file_is_never_replaced_and_a_link_stays_a_link(tmp_pat
 def test_a_new_file_has_the_usual_mode(tmp_path):
     before = os.umask(0o027)
     try:
-        main(["stops", LOOK, "-o", str(tmp_path / "a.csv")])
+        main(["stops", "--flat", LOOK, "-o", str(tmp_path / "a.csv")])
     finally:
         os.umask(before)
     assert (tmp_path / "a.csv").stat().st_mode & 0o777 == 0o640
@@ -255,7 +255,9 @@ def test_json_is_ascii_on_paper_that_knows_no_other(tmp_path):
     stack = (ROOT / "stacks/two-metal/stack.yaml").read_text(encoding="utf-8").replace("overcoat", "é±top")
     (tmp_path / "s.yaml").write_text(stack, encoding="utf-8")
     for form in ("json", "csv", "table"):
-        answer = run("stops", str(tmp_path / "s.yaml"), "-f", form, env={**os.environ, "PYTHONIOENCODING": "ascii"})
+        answer = run(
+            "stops", "--flat", str(tmp_path / "s.yaml"), "-f", form, env={**os.environ, "PYTHONIOENCODING": "ascii"}
+        )
         assert answer.returncode == 0, answer.stderr
         assert answer.stdout.isascii()
 
@@ -274,9 +276,9 @@ def test_no_description_is_wider_than_the_paper(verb, width, job, capsys, monkey
 
 
 def test_stops_says_what_it_takes_as_exact(capsys):
-    assert main(["stops", LOOK, "--set", "mill.current_density=0.5 mA/cm2"]) == 0
+    assert main(["stops", "--flat", LOOK, "--set", "mill.current_density=0.5 mA/cm2"]) == 0
     assert "NO ± GIVEN for the current density of the mill" in " ".join(capsys.readouterr().out.split())
-    assert main(["stops", LOOK, "--set", "mill.current_density=0.5 mA/cm2", "--format", "json"]) == 0
+    assert main(["stops", "--flat", LOOK, "--set", "mill.current_density=0.5 mA/cm2", "--format", "json"]) == 0
     assert json.loads(capsys.readouterr().out)["taken_as_exact"] == ["current density of the mill"]
-    assert main(["stops", LOOK]) == 0
+    assert main(["stops", "--flat", LOOK]) == 0
     assert "NO ± GIVEN" not in capsys.readouterr().out

@@ -71,7 +71,7 @@ def test_a_surface_loads_the_compiler_and_no_other_heavy_library(verb):
 
 
 def test_a_stop_table_that_needs_no_surface_loads_no_compiler():
-    assert not loaded("stops", "stacks/two-metal/job.yaml") & HEAVY
+    assert not loaded("stops", "stacks/sensor/job.yaml") & HEAVY
 
 
 def test_importing_the_package_loads_next_to_nothing():

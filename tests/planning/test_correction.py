@@ -83,7 +83,7 @@ def test_carried_times_agree_with_surfaces_run_in_64_other_draws(incidence):
     for d in range(RUNS):
         terrain = surfaces.terrain(laid, down, d)
         passed = evolve(terrain, surfaces.stages(terrain, down, d), end_s=4000.0, undercuts=False).passed_s[0, :, 0]
-        direct.append(passed[terrain.of_region[terrain.column[0]] == column].max())
+        direct.append(passed[terrain.region_column[terrain.column[0]] == column].max())
     off = carried.draws_s[0][others] - np.array(direct)
     assert np.sqrt(np.mean(off**2)) < 2.5 * float(carried.error_s[0]) + 2.0
     assert abs(np.median(off)) < 0.01 * np.median(direct)

@@ -125,12 +125,12 @@ def terrain_slices(region: RegionColumns, terrain: Terrain, *, row: int | None =
     """The same of a terrain: along its second axis in a row of it, or (row None) along its first in a column."""
     line = terrain.column[row] if row is not None else terrain.column[:, column]
     step = terrain.step_nm[1] if row is not None else terrain.step_nm[0]
-    of_region = terrain.of_region[line]
-    starts = np.concatenate([[0], np.flatnonzero(np.diff(of_region)) + 1, [len(line)]])
+    region_column = terrain.region_column[line]
+    starts = np.concatenate([[0], np.flatnonzero(np.diff(region_column)) + 1, [len(line)]])
     found = []
     for a, b in pairwise(starts.tolist()):
         first = int(line[a])
-        c, owner = int(terrain.of_region[first]), terrain.owner[first, : terrain.count[first]]
+        c, owner = int(terrain.region_column[first]), terrain.owner[first, : terrain.count[first]]
         last = np.flatnonzero(np.append(np.diff(owner) != 0, True))
         floors = terrain.floor_nm[line[a:b]][:, last]
         levels = np.column_stack([terrain.top_nm[line[a:b]], floors])
