@@ -16,6 +16,7 @@ from stackmill.documents.reading import read_document
 from stackmill.documents.wording import Sentence
 from stackmill.errors import InputError, InputErrors
 from stackmill.frozen import frozen
+from stackmill.jobs.materials import with_told
 
 if TYPE_CHECKING:
     from stackmill.materials.library import Library
@@ -57,7 +58,7 @@ def read_calibrating(coupons: Path, mill: Path, materials: Sequence[Path] = ()) 
         named.append(replace(coupon, material=material.name))
     if errors:
         raise InputErrors(errors)
-    return Calibrating(read_mill, tuple(named), _with_told(known, library))
+    return Calibrating(read_mill, tuple(named), with_told(known, library))
 
 
 T = TypeVar("T")
@@ -83,17 +84,3 @@ def _misfit(coupon: Coupon, library: Library, mill: Mill) -> Sentence | None:
     if coupon.energy_ev <= threshold:
         return wording.too_slow(f"{coupon.energy_ev:g} eV", mill.gas, material.name, f"{threshold:.3g} eV")
     return None
-
-
-def _with_told(known: Mapping[str, Material], library: Library) -> Mapping[str, Material]:
-    """The materials, and those that one of them is a multiple or a mixture of, and so on."""
-    every = dict(known)
-    ask = list(every.values())
-    while ask:
-        material = ask.pop()
-        told = [material.follows] if material.follows else [part.material.name for part in material.mixture]
-        for name in told:
-            if name not in every:
-                every[name] = library.get(name)
-                ask.append(every[name])
-    return every

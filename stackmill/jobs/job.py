@@ -20,7 +20,7 @@ from stackmill.documents.stack import NO_FILL, Stack
 from stackmill.errors import InputError, InputErrors, UsageError
 from stackmill.frozen import frozen
 from stackmill.jobs.files import FileReader, JobDocuments, kind_of, read_source
-from stackmill.jobs.materials import Found, find_materials, unknown_materials
+from stackmill.jobs.materials import Found, find_materials, unknown_materials, with_told
 from stackmill.units import quoted
 
 if TYPE_CHECKING:
@@ -81,15 +81,7 @@ class Job:
         rated = dict(self.milled_materials)
         for coupon in self.coupons:
             rated.setdefault(coupon.material, self.materials[coupon.material])
-        ask = list(rated.values())
-        while ask:
-            material = ask.pop()
-            told = [material.follows] if material.follows else [part.material.name for part in material.mixture]
-            for name in told:
-                if name not in rated:
-                    rated[name] = self.library.get(name)
-                    ask.append(rated[name])
-        return rated
+        return with_told(rated, self.library)
 
     @property
     def coupons(self) -> tuple[CouponRate, ...]:

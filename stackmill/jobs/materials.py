@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Iterator, Sequence
+from collections.abc import Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Any
 
@@ -58,6 +58,20 @@ def find_materials(documents: JobDocuments) -> Found:
         if material.name != name:
             found.aliases[name] = material.name
     return found
+
+
+def with_told(known: Mapping[str, Material], library: Library) -> dict[str, Material]:
+    """Some materials by name, then those that one of them is a multiple or a mixture of, and so on."""
+    every = dict(known)
+    ask = list(every.values())
+    while ask:
+        material = ask.pop()
+        told = [material.follows] if material.follows else [part.material.name for part in material.mixture]
+        for name in told:
+            if name not in every:
+                every[name] = library.get(name)
+                ask.append(every[name])
+    return every
 
 
 def unknown_materials(trees: Iterable[Tree]) -> list[InputError]:

@@ -6,9 +6,11 @@ crash is left where it is and closed by the next append; it is told, and skipped
 
 from __future__ import annotations
 
+import errno
 import fcntl
 import json
 import os
+import stat
 from collections.abc import Iterator, Mapping
 from contextlib import contextmanager
 from datetime import UTC, datetime
@@ -78,7 +80,7 @@ def _write_all(file: int, text: str) -> None:
     written = os.write(file, content)
     if written < len(content):
         os.ftruncate(file, os.fstat(file).st_size - written)
-        raise OSError(28, "No space left on device")
+        raise OSError(errno.ENOSPC, os.strerror(errno.ENOSPC))
 
 
 @contextmanager
@@ -87,6 +89,8 @@ def _locked(path: Path, *, create: bool) -> Iterator[int]:
     flags = os.O_RDWR | os.O_APPEND | (os.O_CREAT | os.O_EXCL if create else 0)
     file = os.open(path, flags, 0o666)
     try:
+        if not stat.S_ISREG(os.fstat(file).st_mode):
+            raise OSError(errno.EINVAL, "this is not a plain file")
         fcntl.flock(file, fcntl.LOCK_EX)
         yield file
     finally:
@@ -108,6 +112,8 @@ def read_journal(path: Path) -> Journal:
 
     Only a last line, or one that a later append closed, may be torn: it is skipped.
     """
+    if path.exists() and not path.is_file():
+        raise FileAccessError("the logbook cannot be read: this is not a plain file", place=Place(str(path)))
     try:
         content = path.read_bytes()
     except FileNotFoundError as error:
