@@ -140,12 +140,20 @@ def _cuts(ensemble: Ensemble, open_: Sequence[tuple[int, int]], *, cell: bool) -
             continue
         speaks = {cut: set(spoken_for(ensemble, r, cut)) for cut in _lines(ensemble, r, wanted)}
         vias = {cut: crosses_a_via(ensemble.inputs.job, r, cut) for cut in speaks}
+        own: list[Cut] = []
         for _ in range(_MOST_LINES):
             best = max(speaks, key=lambda cut: _worth(region, speaks[cut], wanted, via=vias[cut]))
             if not speaks[best] & wanted:
                 break
-            found.append((r, best))
+            own.append(best)
             wanted -= speaks[best]
+        if own and any(vias.values()) and not any(vias[cut] for cut in own):
+            # What vias do to the ground around them is little of the area, but may be the first that is lost.
+            all_wanted = {c for where, c in open_ if where == r}
+            own.append(
+                max((c for c in speaks if vias[c]), key=lambda c: _worth(region, speaks[c], all_wanted, via=True))
+            )
+        found += [(r, cut) for cut in own]
     return found
 
 
@@ -184,7 +192,10 @@ def _with(flat: Ensemble, outcome: Outcome, surfaces: Sequence[SurfaceTimes], *,
     spoilt: dict[int, Carried] = {}
     for surface in surfaces:
         upper |= {row: one for row, one in surface.upper.items() if row not in upper}
-        spoilt |= {row: one for row, one in surface.spoilt.items() if row not in spoilt}
+        # Of what several lines tell of a loss, the earliest counts.
+        for row, one in surface.spoilt.items():
+            if row not in spoilt or one.best_s[0] < spoilt[row].best_s[0]:
+                spoilt[row] = one
 
     def moments(one: Carried) -> Array:
         return one.best_s[:, None] if best else one.draws_s
