@@ -110,7 +110,8 @@ def surface_times(ensemble: Ensemble, region: int, cut: Cut | None, *, watch: Wa
     columns = tuple(c for c in _represented(ensemble, region, fine) if c in coarse.region_column)
     levels = _levels(ensemble, region, columns)
     end = _LONGER * max([level.flat_best_s for level in levels if np.isfinite(level.flat_best_s)], default=0.0)
-    best = [_moments(surfaces, laid, levels, ensemble.best_descent, 0, end, watch) for laid in (fine, coarse)]
+    finer, coarser = _places(fine, columns), _places(coarse, columns)
+    best = [_moments(surfaces, at, levels, ensemble.best_descent, 0, end, watch) for at in (finer, coarser)]
     runs = min(CELL_RUNS if cut is None else RUNS, len(ensemble.weights))
     chosen = np.arange(runs) * (len(ensemble.weights) // runs)
     down = ensemble.descent(ensemble.z[:, chosen])
@@ -118,7 +119,7 @@ def surface_times(ensemble: Ensemble, region: int, cut: Cut | None, *, watch: Wa
     for d, number in enumerate(chosen.tolist()):
         flat = [float(level.flat_s[number]) for level in levels]
         last = _LONGER * max([time for time in flat if np.isfinite(time)], default=0.0)
-        drawn.append(_moments(surfaces, coarse, levels, down, d, last))
+        drawn.append(_moments(surfaces, coarser, levels, down, d, last))
         if watch:
             watch.done((d + 1) / len(chosen))
     carried = _carried(ensemble, region, levels, columns, best, drawn, chosen)
@@ -199,9 +200,24 @@ def _levels(ensemble: Ensemble, region: int, columns: Sequence[int]) -> list[_Le
     return found
 
 
+@frozen
+class _Places:
+    """A grid with the points (ny, nx) of each column that is asked for, and which of those (P,) are its centre."""
+
+    laid: Layout
+    points: dict[int, Mask]
+    centre: dict[int, Mask]
+
+
+def _places(laid: Layout, columns: Sequence[int]) -> _Places:
+    points = {c: _points(laid, c) for c in columns}
+    far = {c: _inside_nm(points[c], laid.step_nm)[points[c]] for c in columns}
+    return _Places(laid, points, {c: far[c] >= far[c].max() - 1e-9 for c in columns})
+
+
 def _moments(
     surfaces: Surfaces,
-    laid: Layout,
+    places: _Places,
     levels: Sequence[_Level],
     down: Descent,
     draw: int,
@@ -209,7 +225,7 @@ def _moments(
     watch: Watch | None = None,
 ) -> list[Array]:
     """Run one draw's surface and read every level's moments off it: (1,) of a centre, (len(SHARES),) of the rest."""
-    terrain = surfaces.terrain(laid, down, draw)
+    terrain = surfaces.terrain(places.laid, down, draw)
     run = evolve(
         terrain, surfaces.stages(terrain, down, draw), region=surfaces.region, end_s=end_s, undercuts=False, watch=watch
     )
@@ -217,13 +233,11 @@ def _moments(
         raise KeyboardInterrupt
     found = []
     for level in levels:
-        points = _points(laid, level.column)
+        passed = run.passed_s[places.points[level.column]]
         above = level.above(surfaces.region, down, draw)
-        passed = run.passed_s[points]
         times = passed_above(passed, np.full(len(passed), above))
         if level.kind == "layer":
-            far = _inside_nm(points, laid.step_nm)[points]
-            found.append(times[far >= far.max() - 1e-9].max(keepdims=True))
+            found.append(times[places.centre[level.column]].max(keepdims=True))
         else:
             order = np.sort(times)
             found.append(order[np.minimum((SHARES * len(order)).astype(np.intp), len(order) - 1)])
