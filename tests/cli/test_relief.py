@@ -136,7 +136,7 @@ def test_compiling_is_said_on_stderr_once_and_quiet_keeps_still(capsys, monkeypa
 def test_stops_says_whether_the_surface_confirmed_it_and_flat_leaves_it_provisional(capsys):
     assert main(["stops", LOOK]) == 0
     text = capsys.readouterr().out
-    assert "BY THE SURFACE: section y = 2.925 um of array, 200 points." in " ".join(text.split())
+    assert "BY THE SURFACE: section y = 2.925 um of array, 200 points" in " ".join(text.split())
     assert "PROVISIONAL" not in text
     assert "^ from the surface" in text
     assert main(["stops", LOOK, "--flat"]) == 0
