@@ -33,7 +33,7 @@ SHARES = np.array([0.01, 0.05, 0.15, 0.3, 0.5, 0.7, 0.85, 0.95, 0.99])  # of a c
 PARTS = np.diff(np.concatenate([[0.0], 0.5 * (SHARES[1:] + SHARES[:-1]), [1.0]]))  # of its area, one each
 _DRAW_POINTS, _DRAW_CELL_POINTS = 200, 128
 _AS_WIDE = 0.9  # of a column's own half-width: what a section must cut of it to stand for it
-_LONGER = 1.25  # surfaces are followed to this multiple of the last time by columns
+LONGER = 1.25  # surfaces are followed to this multiple of the last time by columns
 _ENOUGH = 12  # draws that reach a level, to learn from
 _GRID_LEFT = 0.5  # of the difference between the two grids: what the finer one may still be off by
 _LEAST_SHARE = 0.05  # of the median: times shorter than this are not divided by
@@ -74,7 +74,7 @@ class SurfaceTimes:
 
 
 @frozen
-class _Level:
+class Level:
     """A level in one column, and its times by columns alone.
 
     kind: a layer's top, or a row of the outcome's upper levels or of its places to spoil; row: which; layer: near
@@ -106,30 +106,36 @@ def surface_times(ensemble: Ensemble, region: int, cut: Cut | None, *, watch: Wa
     watch: told how much is done. Raises InputError where the beam does not lie in the section.
     """
     surfaces = Surfaces(ensemble, region, cut)
-    fine, coarse = _layouts(surfaces)
+    fine, coarse = layouts(surfaces)
     columns = tuple(c for c in _represented(ensemble, region, fine) if c in coarse.region_column)
-    levels = _levels(ensemble, region, columns)
-    end = _LONGER * max([level.flat_best_s for level in levels if np.isfinite(level.flat_best_s)], default=0.0)
-    finer, coarser = _places(fine, columns), _places(coarse, columns)
-    best = [_moments(surfaces, at, levels, ensemble.best_descent, 0, end, watch) for at in (finer, coarser)]
+    levels = levels_of(ensemble, region, columns)
+    end = LONGER * max([level.flat_best_s for level in levels if np.isfinite(level.flat_best_s)], default=0.0)
+    finer, coarser = places_of(fine, columns), places_of(coarse, columns)
+    best = [moments(surfaces, at, levels, ensemble.best_descent, 0, end, watch) for at in (finer, coarser)]
     runs = min(CELL_RUNS if cut is None else RUNS, len(ensemble.weights))
     chosen = np.arange(runs) * (len(ensemble.weights) // runs)
     down = ensemble.descent(ensemble.z[:, chosen])
     drawn = []
     for d, number in enumerate(chosen.tolist()):
         flat = [float(level.flat_s[number]) for level in levels]
-        last = _LONGER * max([time for time in flat if np.isfinite(time)], default=0.0)
-        drawn.append(_moments(surfaces, coarser, levels, down, d, last))
+        last = LONGER * max([time for time in flat if np.isfinite(time)], default=0.0)
+        drawn.append(moments(surfaces, coarser, levels, down, d, last))
         if watch:
             watch.done((d + 1) / len(chosen))
     carried = _carried(ensemble, region, levels, columns, best, drawn, chosen)
-    area = ensemble.inputs.job.column_map.regions[region].area
-    missing = 1.0 - float(area[np.unique(fine.region_column)].sum()) if cut is None else 0.0
+    missing = unresolved(ensemble, region, fine) if cut is None else 0.0
     layer, upper, spoilt = _sorted(levels, carried)
     return SurfaceTimes(region, cut, fine.which.shape[1], runs, frozenset(columns), missing, layer, upper, spoilt)
 
 
-def _layouts(surfaces: Surfaces) -> tuple[Layout, Layout]:
+def unresolved(ensemble: Ensemble, region: int, laid: Layout) -> float:
+    """The share of a region's area in columns that have no point on a grid."""
+    area = ensemble.inputs.job.column_map.regions[region].area
+    return 1.0 - float(area[np.unique(laid.region_column)].sum())
+
+
+def layouts(surfaces: Surfaces) -> tuple[Layout, Layout]:
+    """The finer grid, for best values, and the coarser one, for draws."""
     region, cell = surfaces.job.column_map.regions[surfaces.region], surfaces.job.column_map.cell
 
     def grid(points: int | None) -> Grid:
@@ -163,7 +169,7 @@ def _inside_nm(points: Mask, step_nm: tuple[float, float]) -> Array:
 
 def spoken_for(ensemble: Ensemble, region: int, cut: Cut | None) -> tuple[int, ...]:
     """The columns a surface can speak for: those it cuts about as wide as they are."""
-    return _represented(ensemble, region, _layouts(Surfaces(ensemble, region, cut))[0])
+    return _represented(ensemble, region, layouts(Surfaces(ensemble, region, cut))[0])
 
 
 def _represented(ensemble: Ensemble, region: int, laid: Layout) -> tuple[int, ...]:
@@ -178,30 +184,30 @@ def _represented(ensemble: Ensemble, region: int, laid: Layout) -> tuple[int, ..
     return tuple(found)
 
 
-def _levels(ensemble: Ensemble, region: int, columns: Sequence[int]) -> list[_Level]:
+def levels_of(ensemble: Ensemble, region: int, columns: Sequence[int]) -> list[Level]:
     """Every level of these columns that is asked for: layers' tops, then the goal's and the keeps' levels."""
     job, outcome, best = ensemble.inputs.job, ensemble.outcome, ensemble.best_outcome
     layers = len(job.column_map.layers)
     last = layers if job.goal is None else min(job.column_map.layers.index(job.goal.layer) + 2, layers)
     found = [
-        _Level("layer", c, k, k, float(best.reached_s(region, c, k)[0]), outcome.reached_s(region, c, k))
+        Level("layer", c, k, k, float(best.reached_s(region, c, k)[0]), outcome.reached_s(region, c, k))
         for c in columns
         for k in range(last)
     ]
     goal = 0 if job.goal is None else job.column_map.layers.index(job.goal.layer)
     for row, (r, c) in enumerate(outcome.wanted):
         if r == region and c in columns:
-            found.append(_Level("upper", c, row, goal, float(best.upper_s[row, 0]), outcome.upper_s[row]))
+            found.append(Level("upper", c, row, goal, float(best.upper_s[row, 0]), outcome.upper_s[row]))
     for row, spoil in enumerate(outcome.spoilt):
         if spoil.region == region and spoil.column in columns:
             layer = goal if spoil.keep < 0 else job.column_map.layers.index(job.keeps[spoil.keep].layer)
             times = float(best.spoilt_s[row, 0]), outcome.spoilt_s[row]
-            found.append(_Level("spoilt", spoil.column, row, min(layer + 1, layers - 1), *times))
+            found.append(Level("spoilt", spoil.column, row, min(layer + 1, layers - 1), *times))
     return found
 
 
 @frozen
-class _Places:
+class Places:
     """A grid with the points (ny, nx) of each column that is asked for, and which of those (P,) are its centre."""
 
     laid: Layout
@@ -209,16 +215,17 @@ class _Places:
     centre: dict[int, Mask]
 
 
-def _places(laid: Layout, columns: Sequence[int]) -> _Places:
+def places_of(laid: Layout, columns: Sequence[int]) -> Places:
+    """Where the points of some columns lie on a grid."""
     points = {c: _points(laid, c) for c in columns}
     far = {c: _inside_nm(points[c], laid.step_nm)[points[c]] for c in columns}
-    return _Places(laid, points, {c: far[c] >= far[c].max() - 1e-9 for c in columns})
+    return Places(laid, points, {c: far[c] >= far[c].max() - 1e-9 for c in columns})
 
 
-def _moments(
+def moments(
     surfaces: Surfaces,
-    places: _Places,
-    levels: Sequence[_Level],
+    places: Places,
+    levels: Sequence[Level],
     down: Descent,
     draw: int,
     end_s: float,
@@ -247,7 +254,7 @@ def _moments(
 def _carried(
     ensemble: Ensemble,
     region: int,
-    levels: Sequence[_Level],
+    levels: Sequence[Level],
     columns: Sequence[int],
     best: Sequence[Sequence[Array]],
     drawn: Sequence[Sequence[Array]],
@@ -310,7 +317,7 @@ _Told = dict[int, Carried]
 
 
 def _sorted(
-    levels: Sequence[_Level], carried: Sequence[Carried | None]
+    levels: Sequence[Level], carried: Sequence[Carried | None]
 ) -> tuple[dict[tuple[int, int], Carried], _Told, _Told]:
     """The levels that were carried: layers' tops, upper levels and places to spoil."""
     layer: dict[tuple[int, int], Carried] = {}

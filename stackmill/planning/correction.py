@@ -20,6 +20,7 @@ from stackmill.jobs import Job
 from stackmill.planning.carrying import PARTS, SHARES, Carried, SurfaceTimes, spoken_for, surface_times
 from stackmill.planning.surfaces import along_the_beam
 from stackmill.planning.windows import Window, find_window
+from stackmill.planning.witness import by_the_cell, wants_the_cell
 from stackmill.relief.gridding import Cut, columns_along
 from stackmill.relief.watch import Watch
 from stackmill.timing.fall import area_quantile
@@ -78,6 +79,15 @@ def correct(
             best_outcome=_with(flat, flat.best_outcome, surfaces, best=True),
         )
         window = find_window(ensemble, confidence)
+    cells = [by_the_cell(flat, r, surfaces, watch) for r in _sectioned(surfaces) if wants_the_cell(flat, r)]
+    if cells:
+        surfaces += cells
+        ensemble = replace(
+            flat,
+            outcome=_with(flat, flat.outcome, surfaces, best=False),
+            best_outcome=_with(flat, flat.best_outcome, surfaces, best=True),
+        )
+        window = find_window(ensemble, confidence)
     still = doubtful(ensemble, window)
     left = dict.fromkeys(_open(flat, still, surfaces, unsaid), "too many columns decide in turn")
     return Correction(
@@ -87,6 +97,12 @@ def correct(
         tuple((where, why) for where, why in (unsaid | left).items() if where in still),
         _error_s(flat, window, surfaces),
     )
+
+
+def _sectioned(surfaces: Sequence[SurfaceTimes]) -> list[int]:
+    """The regions that only sections were run in."""
+    cells = {s.region for s in surfaces if s.cut is None}
+    return [r for r in dict.fromkeys(s.region for s in surfaces) if r not in cells]
 
 
 def _open(
@@ -190,11 +206,12 @@ def _with(flat: Ensemble, outcome: Outcome, surfaces: Sequence[SurfaceTimes], *,
     """An outcome with the surfaces' moments in place of the columns', each column in parts that come down in turn."""
     upper: dict[int, Carried] = {}
     spoilt: dict[int, Carried] = {}
-    for surface in surfaces:
+    by_cells = {row for surface in surfaces if surface.cut is None for row in surface.spoilt}
+    for surface in sorted(surfaces, key=lambda s: s.cut is not None):  # what a cell tells, no section tells better
         upper |= {row: one for row, one in surface.upper.items() if row not in upper}
         # Of what several lines tell of a loss, the earliest counts.
         for row, one in surface.spoilt.items():
-            if row not in spoilt or one.best_s[0] < spoilt[row].best_s[0]:
+            if row not in spoilt or (row not in by_cells and one.best_s[0] < spoilt[row].best_s[0]):
                 spoilt[row] = one
 
     def moments(one: Carried) -> Array:

@@ -43,7 +43,7 @@ def surface_in_words(table: StopTable, window: Window) -> list[str]:
     if table.correction.surfaces:
         run = ", ".join(map(_one_surface(table), table.correction.surfaces))
         lines.append(f"  {_moved(table, window)} BY THE SURFACE: {run}.")
-        runs = min(surface.runs for surface in table.correction.surfaces)
+        runs = max(surface.runs for surface in table.correction.surfaces)
         lines.append(
             f"  The surface's times at best values are carried to all draws by {runs} draws run on it, good to ±"
             f" {format_time(table.correction.error_s)} (1 sd, held in the chances)."
@@ -63,11 +63,13 @@ def _caveats(table: StopTable, surfaces: Sequence[SurfaceTimes]) -> list[str]:
 
     job = table.ensemble.inputs.job
     lines = []
-    walls = [s for s in surfaces if s.cut is not None and crosses_a_via(job, s.region, s.cut)]
+    cells = {s.region for s in surfaces if s.cut is None}
+    lines_only = [s for s in surfaces if s.cut is not None and s.region not in cells]
+    walls = [s for s in lines_only if s.cut is not None and crosses_a_via(job, s.region, s.cut)]
     tilted = any(isinstance(step, Beam) and step.incidence > 0.0 for step in job.recipe.steps)
     if walls and tilted:
         lines.append("  A section takes a via for a wall, whose shadow is longer: --cell takes it as it is.")
-    if any(s.cut is not None for s in surfaces) and job.goal and job.goal.clear < 1.0:
+    if lines_only and job.goal and job.goal.clear < 1.0:
         lines.append("  A section speaks for the area by one line across it: --cell weighs all of it.")
     for surface in surfaces:
         if surface.unresolved > _UNRESOLVED:
@@ -104,7 +106,8 @@ def _one_surface(table: StopTable) -> Callable[[SurfaceTimes], str]:
     def words(surface: SurfaceTimes) -> str:
         name = regions[surface.region].name
         if surface.cut is None:
-            return f"the cell of {name}, {surface.points} points along x"
+            once = ", at best values" if surface.runs == 1 else ""
+            return f"the cell of {name}, {surface.points} points along x{once}"
         return f"section {surface.cut} of {name}, {surface.points} points"
 
     return words

@@ -13,8 +13,8 @@ from stackmill.planning.correction import crosses_a_via
 from stackmill.planning.stops import stop_table
 from stackmill.planning.surfaces import Surfaces
 from stackmill.rates.yields import angular_shape
-from stackmill.relief.evolve import evolve
-from stackmill.relief.gridding import Cut, section_grid
+from stackmill.relief.evolve import Reaching, evolve, reached_s
+from stackmill.relief.gridding import Cut, cell_grid, section_grid
 from stackmill.relief.watch import Watch
 from stackmill.report.window_words import window_in_words
 
@@ -169,8 +169,33 @@ def test_an_interrupt_while_surfaces_run_is_no_answer(calls):
         stop_table(job(), watch=Interrupting())
 
 
-def test_lines_keep_clear_of_vias_where_they_can_and_say_so_where_not():
+def test_the_first_line_keeps_clear_of_vias_and_another_goes_through_one():
     two = stop_table(load_job("stacks/two-metal/job.yaml"))
-    assert not any(crosses_a_via(two.ensemble.inputs.job, s.region, s.cut) for s in two.correction.surfaces) or any(
-        "takes a via for a wall" in line for line in window_in_words(two, two.window)
-    )
+    lines = [s for s in two.correction.surfaces if s.cut is not None]
+    through = [crosses_a_via(two.ensemble.inputs.job, s.region, s.cut) for s in lines]
+    assert through == [False, True]
+    assert "the cell of array, 224 points along x, at best values" in " ".join(window_in_words(two, two.window))
+
+
+@pytest.mark.independent
+def test_the_cell_at_best_values_tells_what_vias_do_to_the_goals_area():
+    """Held against the shares of a finer cell's points; by columns alone the loss comes a quarter later."""
+    two = load_job("stacks/two-metal/job.yaml")
+    table, flat = stop_table(two), stop_table(two, flat=True)
+    assert any(s.cut is None and s.runs == 1 for s in table.correction.surfaces)
+    surfaces = Surfaces(flat.ensemble, 0, None)
+    grid = cell_grid(two.column_map.regions[0], two.column_map.cell, 300)
+    terrain = surfaces.terrain(surfaces.layout(grid), flat.ensemble.best_descent)
+    run_down = evolve(terrain, surfaces.stages(terrain, flat.ensemble.best_descent), end_s=2500.0, undercuts=False)
+
+    def moment(spots, share):
+        above = np.full(len(two.column_map.regions[0].area), -1)
+        for spot in spots:
+            if spot.region == 0:
+                above[spot.column] = int(np.asarray(spot.above).flat[0])
+        return reached_s(terrain, run_down.passed_s, Reaching(above[terrain.region_column], share))
+
+    where, best = flat.ensemble.best_ground, table.ensemble.best_outcome
+    assert float(best.exposed_s[0]) == pytest.approx(moment(where.goal_upper, 0.95), rel=0.03)
+    assert float(best.lost_s[0]) == pytest.approx(moment(where.goal_lower, 0.01), rel=0.05)
+    assert float(flat.ensemble.best_outcome.lost_s[0]) > 1.15 * float(best.lost_s[0])
