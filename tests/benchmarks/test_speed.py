@@ -45,8 +45,8 @@ def python(*arguments: str):
 @pytest.mark.parametrize(("what", "program"), [("only imports", IMPORTS), ("uses one of each", ONE_OF_EACH)])
 def test_stops_cold_against_imports(against, what, program):
     against(
-        f"stops, cold, on the four-metal demo, against a process that {what} of numpy, yaml, pydantic, typer",
-        python("-m", "stackmill", "stops", "stacks/four-metal/look.yaml"),
+        f"stops --flat, cold, on the four-metal demo, against a process that {what} of numpy, yaml, pydantic, typer",
+        python("-m", "stackmill", "stops", "stacks/four-metal/look.yaml", "--flat"),
         python("-c", program),
         target=1.6,
         rounds=11,
