@@ -181,6 +181,13 @@ def _moments(job: Job, when: When | None, how: How, seed: int, watch: Watch | No
         table = stop_table(job, seed=seed, cell=how.cell, watch=watch)
         window = table.window
         assert window is not None
+        if window.stop_s is None:
+            warnings.warn(
+                f"no stop is safe at {100 * window.confidence:.3g} %: what is shown is the best one, whose chance is"
+                f" {window.best_stop_chance:.2f}",
+                StackmillWarning,
+                stacklevel=2,
+            )
         at.append(window.best_stop_s if window.stop_s is None else window.stop_s)
         return table.ensemble, at
     ensemble = run_ensemble(job, draws=DRAWS if job.goal else 1, seed=seed)

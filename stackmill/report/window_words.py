@@ -36,7 +36,7 @@ def surface_in_words(table: StopTable, window: Window) -> list[str]:
         if not table.provisional:
             return []
         return [
-            "  PROVISIONAL: a facet or a shadow gets to the centre of a deciding column before; see *. Leave out --flat"
+            "  PROVISIONAL: facets or shadows reach into a column that decides before it does. Leave out --flat"
             " to have a surface put it right."
         ]
     lines = []

@@ -170,7 +170,7 @@ def test_records_made_in_python_keep_the_same_limits() -> None:
 def test_records_are_frozen() -> None:
     mill = read_mill(DEFAULT_MILL).model
     with pytest.raises(ValidationError, match="frozen"):
-        mill.gas = "neon"  # type: ignore[misc]
+        mill.gas = "neon"  # type: ignore[misc]  # that it is frozen is the test
 
 
 @pytest.mark.parametrize("model", [Stack, Mill, Recipe, JobFile])

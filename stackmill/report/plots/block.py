@@ -50,8 +50,8 @@ def _axes(
     figure: Figure, box: tuple[float, float, float, float], extent: tuple[float, float, float, float], times: float
 ) -> Any:
     """Axes in which a block of this extent (width, depth, lowest, highest; nm) fills the box."""
-    from mpl_toolkits.mplot3d import proj3d  # type: ignore[import-untyped]
-    from mpl_toolkits.mplot3d.axes3d import Axes3D  # type: ignore[import-untyped]
+    from mpl_toolkits.mplot3d import proj3d  # type: ignore[import-untyped]  # no types
+    from mpl_toolkits.mplot3d.axes3d import Axes3D  # type: ignore[import-untyped]  # no types
 
     (left, upper, width, height), (wide, deep, low, top) = box, extent
     across, up = figure.get_size_inches() * DPI
@@ -91,7 +91,7 @@ def _exaggeration(relief_nm: float, across_nm: float) -> float:
 
 def _surface(axes: Any, relief: Relief, at: Frame, times: float, look: Mapping[str, Style]) -> set[int]:
     """The surface in the colours of its materials, shaded by its slope; gives the materials."""
-    from mpl_toolkits.mplot3d.art3d import Poly3DCollection  # type: ignore[import-untyped]
+    from mpl_toolkits.mplot3d.art3d import Poly3DCollection  # type: ignore[import-untyped]  # no types
 
     terrain, names = relief.run.terrain, relief.job.column_map.materials
     every = max(1, -(-max(terrain.column.shape) // _FACES))

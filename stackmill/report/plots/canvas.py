@@ -90,7 +90,7 @@ def text_px(text: str, size: float, bold: bool = False) -> tuple[float, float]:
     from matplotlib.backends.backend_agg import RendererAgg
     from matplotlib.font_manager import FontProperties
 
-    renderer: Any = RendererAgg(8, 8, DPI)  # type: ignore[no-untyped-call]
+    renderer: Any = RendererAgg(8, 8, DPI)  # type: ignore[no-untyped-call]  # matplotlib has no types here
     font = FontProperties(family="DejaVu Sans", size=size, weight="bold" if bold else "normal")
     lines = text.split("\n")
     wide = max(renderer.get_text_width_height_descent(line, font, ismath=False)[0] for line in lines)

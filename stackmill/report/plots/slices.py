@@ -138,7 +138,7 @@ def terrain_slices(region: RegionColumns, terrain: Terrain, *, row: int | None =
         s = np.concatenate([[a], np.arange(a, b) + 0.5, [b]]) * step
         tables = (region.material, region.layer, region.feature, region.part)
         keys = [tuple(int(table[c, owner[k]]) for table in tables) for k in last]
-        found.append(Slice(s, levels, tuple(keys), c))  # type: ignore[arg-type]
+        found.append(Slice(s, levels, tuple(keys), c))  # type: ignore[arg-type]  # likewise
     return found
 
 
